@@ -1,0 +1,101 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+//
+// What travels between a cache and the bus, and the interfaces of the two sides. The payload is not the
+// generic payload: a coherent transaction carries mandatory meaning, so it has a protocol type of its own
+// (IEEE 1666-2011, 14.2.2: mandatory extensions require new protocol traits), and binding a cache to
+// something that is no snooping bus does not compile.
+#pragma once
+
+#include <cstdint>
+#include <tlm>
+
+#include "earshot/bus/address_map.h"
+#include "earshot/protocol/events.h"
+#include "earshot/timing/latency.h"
+
+namespace earshot {
+
+enum class Supplier : std::uint8_t { none, memory, owner, sharer };
+
+// One coherent bus transaction. The requester owns it and every buffer it points to, for the call only.
+struct BusTransaction {
+  // Set by the requester.
+  BusKind kind = BusKind::read;    // not io_read or io_write
+  int requester = 0;               // the port given by SnoopInterface::attached()
+  std::uint64_t line = 0;          // the line's address
+  std::uint8_t* line_data = nullptr;   // read, read_exclusive: receives the line; write_back: is the line
+  std::uint32_t offset = 0;        // update, write_through: the written bytes are [offset, offset + length) of the line
+  std::uint32_t length = 0;
+  const std::uint8_t* word = nullptr;          // those bytes
+  const std::uint8_t* byte_enable = nullptr;   // null, or one flag a byte: TLM_BYTE_ENABLED or not
+  bool behind_fill = false;        // write_back: makes room for a fetch that is asked for next and goes first
+
+  // Set by the bus.
+  bool shared = false;             // another cache still holds the line
+  Supplier supplier = Supplier::none;
+  tlm::tlm_response_status status = tlm::TLM_INCOMPLETE_RESPONSE;
+  LatencyParts parts;              // what the transaction's time was spent on
+};
+
+// A cache's answer to the question what it would do about a transaction. Nothing changes by asking.
+struct SnoopAnswer {
+  bool survives = false;           // it will still hold the line: it raises the shared line
+  bool owner = false;
+  bool supplies = false;
+  bool write_memory = false;       // memory takes the supplied line in the same transaction
+  const std::uint8_t* line_data = nullptr;  // the copy; valid until the cache changes
+};
+
+struct SnoopingBusTypes {  // the traits of the cache-to-bus sockets
+  using tlm_payload_type = BusTransaction;
+  using tlm_phase_type = tlm::tlm_phase;
+};
+
+// Forward, from a cache to the bus. Call from a simulation process; acquire() and transact() may wait() if
+// another process holds the bus or a target of the bus waits.
+class RequestInterface : public virtual sc_core::sc_interface {
+ public:
+  using protocol_types = SnoopingBusTypes;
+
+  // The grant: between acquire() and release() no other transaction takes effect, so what a cache decides
+  // there about its copy stays true. Adds the time waited to `delay`'s process only, by waiting.
+  virtual void acquire() = 0;
+  virtual void release() = 0;
+  // REQUIRES: the bus is held. Carries the transaction out, atomically unless a target waits; adds its time to
+  // `delay`. On a status other than TLM_OK_RESPONSE nothing has changed in any cache.
+  virtual void transact(BusTransaction& transaction, sc_core::sc_time& delay) = 0;
+  // An access to an uncached window: passed to the window's target as it is, address translated.
+  virtual void pass_through(tlm::tlm_generic_payload& payload, int requester, sc_core::sc_time& delay,
+                            LatencyParts& parts) = 0;
+  // The cache dropped its copy without a transaction (host bookkeeping; no modelled signal).
+  virtual void dropped(int requester, std::uint64_t line) = 0;
+  // Coherent debug access, no time, no state change: the owner's bytes, else memory's; writes reach every copy
+  // and memory. Returns the number of bytes done.
+  virtual unsigned debug(tlm::tlm_generic_payload& payload) = 0;
+  // Granted for uncached windows whose target grants it.
+  virtual bool direct_memory(tlm::tlm_generic_payload& payload, tlm::tlm_dmi& dmi) = 0;
+};
+
+// Backward, from the bus to a cache. Never waits.
+class SnoopInterface : public virtual sc_core::sc_interface {
+ public:
+  using protocol_types = SnoopingBusTypes;
+
+  // Once, at the bus's end of elaboration. `map` lives as long as the bus. Returns the cache's line in bytes.
+  virtual unsigned attached(int port, const AddressMap& map) = 0;
+  virtual SnoopAnswer ask(const BusTransaction& transaction) = 0;
+  // Changes state as the protocol says and takes the broadcast bytes. Returns whether the copy survives.
+  virtual bool commit(const BusTransaction& transaction) = 0;
+  // The cache's copy of a line, or null; `owner` tells whether memory may be older. For debug access.
+  virtual std::uint8_t* copy_of(std::uint64_t line, bool& owner) = 0;
+  virtual void invalidate_direct_memory(std::uint64_t first, std::uint64_t last) = 0;
+};
+
+// The two sockets. One bind() joins both directions: cache.bus_socket.bind(bus.cache_socket).
+using BusInitiatorSocket = tlm::tlm_base_initiator_socket<32, RequestInterface, SnoopInterface>;
+// Any number of caches; the bus tells each its port, in binding order.
+using BusTargetSocket =
+    tlm::tlm_base_target_socket<32, RequestInterface, SnoopInterface, 0, sc_core::SC_ONE_OR_MORE_BOUND>;
+
+}  // namespace earshot

@@ -1,0 +1,150 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+//
+// A CoherentCache is a write-allocate cache between one TLM-2.0 initiator and a snooping bus, driven by a
+// protocol table. Users instantiate one of its two kinds: UpdatingCache or InvalidatingCache.
+//
+// CPU side, TLM-2.0 base protocol (IEEE 1666-2011, 11 to 14):
+//   b_transport     adds the access's latency to the delay it is given and returns at once; waits only if another
+//                   process holds the bus or a target of the bus waits. Safe under temporal decoupling.
+//   nb_transport_fw completes early: TLM_COMPLETED with the latency added to the time.
+//   transport_dbg   sees and writes the coherent value, takes no time, changes no state.
+//   DMI             is refused for cached windows, passed on for uncached ones.
+// An access that crosses lines is split; each part is coherent, the whole is not one atom. Byte enables and
+// streaming width are honoured. TLM_IGNORE_COMMAND succeeds and does nothing. Errors: an address in no window,
+// or an access that leaves its window, TLM_ADDRESS_ERROR_RESPONSE; no data, or a streaming width of 0,
+// TLM_BURST_ERROR_RESPONSE; what memory refuses is passed back as memory said it, with nothing cached for it.
+//
+// Ordering: accesses take effect one at a time, in the order the kernel runs the initiators; under temporal
+// decoupling that order, not the local times, is the memory order. It is sequentially consistent.
+//
+// Configuration errors are reported from the constructor (SC_REPORT_ERROR, id "/earshot/cache/config").
+#pragma once
+
+#include <memory>
+#include <string>
+#include <systemc>
+#include <tlm>
+
+#include "earshot/bus/transaction.h"
+#include "earshot/cache/geometry.h"
+#include "earshot/cache/line_store.h"
+#include "earshot/observe/histogram.h"
+#include "earshot/observe/observer.h"
+#include "earshot/protocol/table.h"
+#include "earshot/timing/latency.h"
+
+namespace earshot {
+
+struct CacheConfig {
+  // Behaviour.
+  Geometry geometry;
+  std::shared_ptr<const Table> table;              // the protocol; the same for every cache of a bus
+
+  // Timing.
+  sc_core::sc_time hit_time{1, sc_core::SC_NS};    // to look a line up; every access pays it once a line
+};
+
+// What the processor side of a cache saw. Counts are accesses, not lines: one that crosses lines counts once,
+// as a hit if every line it touched was there.
+struct CacheTotals {
+  std::uint64_t reads = 0;
+  std::uint64_t writes = 0;
+  std::uint64_t hits = 0;
+  std::uint64_t misses = 0;
+  std::uint64_t uncached = 0;    // reads and writes of uncached windows; neither hits nor misses
+  std::uint64_t errors = 0;      // accesses answered with an error; counted nowhere else
+  Histogram latency;             // of cached accesses, in picoseconds
+  LatencyParts parts;            // sums; their total is latency.sum()
+
+  void add(const CacheTotals& other);
+};
+
+class CoherentCache : public sc_core::sc_module,
+                      private tlm::tlm_fw_transport_if<>,
+                      private SnoopInterface {
+ public:
+  tlm::tlm_target_socket<> cpu_socket{"cpu_socket"};
+  BusInitiatorSocket bus_socket{"bus_socket"};
+
+  CacheTotals totals() const;
+  int port() const { return port_; }  // the bus port, from the bus's end of elaboration on
+  const Table& table() const { return *table_; }
+
+  // The name of the state the cache holds the line of `address` in; the absent state's if it holds none.
+  const std::string& state_of(std::uint64_t address) const;
+
+  // Gives up the line of `address` as a replacement would, written back if the cache owns it. From a
+  // simulation process, or after simulation if no target waits. Its time is added to nobody's delay.
+  tlm::tlm_response_status replace(std::uint64_t address, const sc_core::sc_time& delay);
+  // Writes back and gives up every line. Returns how many owned lines memory refused: those stay.
+  std::uint64_t flush();
+
+  // `observer` must outlive the simulation; null for none.
+  void set_observer(Observer* observer) { observer_ = observer; }
+
+ protected:
+  CoherentCache(sc_core::sc_module_name name, const CacheConfig& config, Family family);
+
+ private:
+  // tlm_fw_transport_if
+  void b_transport(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay) override;
+  tlm::tlm_sync_enum nb_transport_fw(tlm::tlm_generic_payload& payload, tlm::tlm_phase& phase,
+                                     sc_core::sc_time& time) override;
+  bool get_direct_mem_ptr(tlm::tlm_generic_payload& payload, tlm::tlm_dmi& dmi) override;
+  unsigned transport_dbg(tlm::tlm_generic_payload& payload) override;
+
+  // SnoopInterface
+  unsigned attached(int port, const AddressMap& map) override;
+  SnoopAnswer ask(const BusTransaction& transaction) override;
+  bool commit(const BusTransaction& transaction) override;
+  std::uint8_t* copy_of(std::uint64_t line, bool& owner) override;
+  void invalidate_direct_memory(std::uint64_t first, std::uint64_t last) override;
+
+  // A piece of an access that lies in one line, and how it fares.
+  struct Piece {
+    bool write = false;
+    std::uint64_t line = 0;
+    std::uint32_t offset = 0;
+    std::uint32_t length = 0;
+    std::uint8_t* data = nullptr;
+    const std::uint8_t* byte_enable = nullptr;  // null, or one flag a byte
+  };
+  struct Progress {
+    sc_core::sc_time delay;
+    LatencyParts parts;
+    bool hit = true;
+    tlm::tlm_response_status status = tlm::TLM_OK_RESPONSE;
+  };
+
+  void access(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay);
+  void access_cached(tlm::tlm_generic_payload& payload, Progress& progress);
+  void access_line(const Piece& piece, Progress& progress);
+  void judge(const Piece& piece, Progress& progress);
+  bool fetch(const Piece& piece, BusTransaction& transaction, Progress& progress, Slot*& slot);
+  tlm::tlm_response_status give_up(Slot& slot, const sc_core::sc_time& delay, bool behind_fill);
+  bool finish(const Piece& piece, Slot* slot);
+  void set_state(Slot& slot, std::uint64_t line, StateId next);
+  void no_row(StateId state, Event event, std::uint64_t line) const;
+  void tell_access(const Piece& piece, const std::uint8_t* line_bytes);
+
+  std::shared_ptr<const Table> table_;
+  Picoseconds hit_ps_;
+  sc_core::sc_time hit_time_;
+  LineStore store_;
+  Observer* observer_ = nullptr;
+  int port_ = -1;
+  const AddressMap* map_ = nullptr;
+
+  // A victim on its way to memory is out of the store but still seen by debug accesses.
+  std::uint64_t leaving_line_ = ~std::uint64_t{0};
+  std::vector<std::uint8_t> leaving_;
+  std::vector<std::uint8_t> incoming_;
+  std::vector<std::uint8_t> enables_;  // byte enables of the access at hand, one a byte
+
+  std::uint64_t fast_reads_ = 0;       // hits that took the short path: all cost hit_ps_
+  std::uint64_t fast_writes_ = 0;
+  CacheTotals totals_;                 // everything else
+};
+
+}  // namespace earshot

@@ -1,0 +1,19 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+//
+// An InvalidatingCache makes other caches drop their copies before it writes.
+#pragma once
+
+#include "earshot/cache/coherent_cache.h"
+
+namespace earshot {
+
+class InvalidatingCache : public CoherentCache {
+ public:
+  // REQUIRES: config.table is of the invalidate family; anything else is a configuration error.
+  InvalidatingCache(sc_core::sc_module_name name, const CacheConfig& config)
+      : CoherentCache(name, config, Family::invalidate) {}
+  const char* kind() const override { return "earshot::InvalidatingCache"; }
+};
+
+}  // namespace earshot
