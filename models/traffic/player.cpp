@@ -1,0 +1,169 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+#define SC_INCLUDE_DYNAMIC_PROCESSES
+#include "earshot/traffic/player.h"
+
+#include <cstring>
+#include <sstream>
+
+namespace earshot {
+namespace {
+
+constexpr std::uint64_t page_bytes = 4096;
+
+std::string text_of(const Access& access) {
+  std::ostringstream out;
+  out << "initiator " << access.initiator << ", " << name_of(access.op) << " of " << access.size << " bytes at 0x"
+      << std::hex << access.address;
+  return out.str();
+}
+
+// Bytes for a write whose value was not recorded: different for every write, the same in every run.
+void invent(std::uint32_t initiator, std::uint64_t number, std::uint8_t* bytes, std::size_t length) {
+  for (std::size_t i = 0; i < length; ++i) {
+    const std::uint64_t mixed = (number * 0x9E3779B97F4A7C15u) ^ (initiator * 0xD1B54A32D192ED03u) ^ (i / 8);
+    bytes[i] = static_cast<std::uint8_t>((mixed * 0xBF58476D1CE4E5B9u) >> (i % 8 * 8));
+  }
+}
+
+}  // namespace
+
+Player::Player(sc_core::sc_module_name name, std::uint32_t initiator, sc_core::sc_time think, PlayerHooks hooks)
+    : sc_module(name), initiator_(initiator), think_(think), hooks_(std::move(hooks)), bytes_(largest_access) {
+  sc_core::sc_spawn([this] { play(); }, "play");
+}
+
+void Player::play() {
+  if (source_ == nullptr) return;
+  tlm_utils::tlm_quantumkeeper keeper;
+  keeper.reset();
+  try {
+    Access access;
+    while (source_->next(access)) {
+      sc_core::sc_time delay = keeper.get_local_time();
+      perform(access, delay);
+      keeper.set(delay);
+      if (keeper.need_sync()) keeper.sync();
+    }
+  } catch (const sc_core::sc_report&) {
+    throw;
+  } catch (const std::exception&) {
+    error_ = std::current_exception();
+    if (hooks_.failed) hooks_.failed();
+  }
+  keeper.sync();
+  finished_at_ = sc_core::sc_time_stamp();
+}
+
+void Player::perform(const Access& access, sc_core::sc_time& delay) {
+  ++performed_;
+  if (access.op == AccessOp::replace) {
+    if (hooks_.replace) hooks_.replace(initiator_, access.address, delay);
+    if (hooks_.done) hooks_.done();
+    return;
+  }
+  delay += think_;
+  const bool write = access.op == AccessOp::write;
+  if (write && access.has_value)
+    std::memcpy(bytes_.data(), &access.value, access.size);
+  else if (write)
+    invent(initiator_, performed_, bytes_.data(), access.size);
+
+  payload_.set_command(write ? tlm::TLM_WRITE_COMMAND : tlm::TLM_READ_COMMAND);
+  payload_.set_address(access.address);
+  payload_.set_data_ptr(bytes_.data());
+  payload_.set_data_length(access.size);
+  payload_.set_streaming_width(access.size);
+  payload_.set_byte_enable_ptr(nullptr);
+  payload_.set_dmi_allowed(false);
+  payload_.set_response_status(tlm::TLM_INCOMPLETE_RESPONSE);
+  initiator_socket->b_transport(payload_, delay);
+  if (payload_.is_response_error())
+    throw PlayError("access " + std::to_string(performed_) + " of its initiator (" + text_of(access) +
+                    ") was answered with " + payload_.get_response_string());
+  if (hooks_.done) hooks_.done();
+}
+
+void Player::preset(std::uint64_t address, const std::uint8_t* bytes, unsigned length) {
+  std::vector<std::uint8_t> copy(bytes, bytes + length);
+  tlm::tlm_generic_payload debug;
+  debug.set_command(tlm::TLM_WRITE_COMMAND);
+  debug.set_address(address);
+  debug.set_data_ptr(copy.data());
+  debug.set_data_length(length);
+  debug.set_streaming_width(length);
+  initiator_socket->transport_dbg(debug);
+}
+
+RecordedOrder::RecordedOrder(sc_core::sc_module_name name, std::vector<Player*> players,
+                             std::unique_ptr<AccessSource> source, bool check_values, PlayerHooks hooks)
+    : sc_module(name),
+      players_(std::move(players)),
+      source_(std::move(source)),
+      check_values_(check_values),
+      hooks_(std::move(hooks)) {
+  sc_core::sc_spawn([this] { play(); }, "play");
+}
+
+void RecordedOrder::play() {
+  tlm_utils::tlm_quantumkeeper keeper;
+  keeper.reset();
+  try {
+    Access access;
+    while (source_->next(access)) {
+      ++played_;
+      if (access.initiator >= players_.size())
+        throw PlayError("access " + std::to_string(played_) + " (" + text_of(access) + ") is for initiator " +
+                        std::to_string(access.initiator) + ", but there are only " + std::to_string(players_.size()) +
+                        " caches: set caches.count to " + std::to_string(access.initiator + 1) + " or more");
+      Player& player = *players_[access.initiator];
+      if (check_values_) learn(access);
+      sc_core::sc_time delay = keeper.get_local_time();
+      player.perform(access, delay);
+      if (check_values_) compare(access, player);
+      keeper.set(delay);
+      if (keeper.need_sync()) keeper.sync();
+    }
+  } catch (const sc_core::sc_report&) {
+    throw;
+  } catch (const std::exception&) {
+    error_ = std::current_exception();
+    if (hooks_.failed) hooks_.failed();
+  }
+  keeper.sync();
+  finished_at_ = sc_core::sc_time_stamp();
+}
+
+// Marks the access's bytes as touched. The bytes of a read that nobody touched before held their recorded value
+// all along: memory is given it.
+void RecordedOrder::learn(const Access& access) {
+  if (access.op == AccessOp::replace) return;
+  for (std::uint32_t i = 0; i < access.size; ++i) {
+    const std::uint64_t address = access.address + i;
+    if (address / page_bytes != page_number_) {
+      page_number_ = address / page_bytes;
+      page_ = &touched_[page_number_];
+      page_->resize(page_bytes);
+    }
+    if ((*page_)[address % page_bytes]) continue;
+    (*page_)[address % page_bytes] = true;
+    if (access.op != AccessOp::read || !access.has_value) continue;
+    const auto byte = static_cast<std::uint8_t>(access.value >> (8 * i));
+    players_[access.initiator]->preset(address, &byte, 1);
+  }
+}
+
+void RecordedOrder::compare(const Access& access, const Player& player) {
+  if (access.op != AccessOp::read || !access.has_value) return;
+  ++compared_;
+  if (std::memcmp(player.bytes(), &access.value, access.size) == 0) return;
+  if (different_++ > 0) return;
+  std::uint64_t got = 0;
+  std::memcpy(&got, player.bytes(), access.size);
+  std::ostringstream out;
+  out << "access " << played_ << " (" << text_of(access) << "): the recording has value 0x" << std::hex << access.value
+      << ", the platform returned 0x" << got;
+  first_difference_ = out.str();
+}
+
+}  // namespace earshot

@@ -1,0 +1,113 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+//
+// Players turn a stream of accesses into TLM-2.0 transactions. A Player is one initiator; it drives anything
+// that a TLM-2.0 processor model could drive. In concurrent order each Player replays a stream of its own, as
+// fast as the platform lets it; in recorded order a RecordedOrder plays one stream through several Players, one
+// access at a time.
+//
+// Both use b_transport with temporal decoupling: they run ahead of simulation time by up to the global quantum
+// (tlm_utils::tlm_quantumkeeper). With a quantum of 0 they synchronise after every access.
+#pragma once
+
+#include <cstdint>
+#include <exception>
+#include <functional>
+#include <memory>
+#include <systemc>
+#include <tlm>
+#include <tlm_utils/simple_initiator_socket.h>
+#include <tlm_utils/tlm_quantumkeeper.h>
+#include <unordered_map>
+#include <vector>
+
+#include "earshot/traffic/recording.h"
+
+namespace earshot {
+
+// What a player asks of the world around it that TLM-2.0 has no word for.
+struct PlayerHooks {
+  // Carries out AccessOp::replace for an initiator at the local time `delay` from now. Unset: a replace is skipped.
+  std::function<void(std::uint32_t initiator, std::uint64_t address, const sc_core::sc_time& delay)> replace;
+  // Called after every access, for progress. May be unset.
+  std::function<void()> done;
+  // Called when a player stops early because of an error(). May be unset; the runner's place to end the simulation.
+  std::function<void()> failed;
+};
+
+// An access the platform answered with an error, or a source that failed: what() names the access.
+class PlayError : public std::runtime_error {
+ public:
+  using std::runtime_error::runtime_error;
+};
+
+class Player : public sc_core::sc_module {
+ public:
+  tlm_utils::simple_initiator_socket<Player> initiator_socket{"initiator_socket"};
+
+  // Plays nothing of its own until given a source before simulation starts. `think` passes before every access.
+  Player(sc_core::sc_module_name name, std::uint32_t initiator, sc_core::sc_time think, PlayerHooks hooks);
+  const char* kind() const override { return "earshot::Player"; }
+
+  void set_source(std::unique_ptr<AccessSource> source) { source_ = std::move(source); }
+
+  // Performs one access at `delay` from now and adds what it takes. The bytes read are in bytes() afterwards.
+  // From a simulation process. Throws PlayError if the platform answers with an error.
+  void perform(const Access& access, sc_core::sc_time& delay);
+  const std::uint8_t* bytes() const { return bytes_.data(); }
+  // Writes bytes by debug access: what memory held before the recording began.
+  void preset(std::uint64_t address, const std::uint8_t* bytes, unsigned length);
+
+  sc_core::sc_time finished_at() const { return finished_at_; }
+  std::exception_ptr error() const { return error_; }  // why it stopped early; null if it did not
+
+ private:
+  void play();
+
+  std::uint32_t initiator_;
+  sc_core::sc_time think_;
+  PlayerHooks hooks_;
+  std::unique_ptr<AccessSource> source_;
+  tlm::tlm_generic_payload payload_;
+  std::vector<std::uint8_t> bytes_;
+  std::uint64_t performed_ = 0;
+  sc_core::sc_time finished_at_;
+  std::exception_ptr error_;
+};
+
+// Plays one stream through several players, one access at a time, in the stream's order.
+class RecordedOrder : public sc_core::sc_module {
+ public:
+  // `players` are indexed by initiator and must outlive this. With `check_values`, a read's recorded value is
+  // compared with what the platform returned; bytes no access has touched before take their recorded value.
+  RecordedOrder(sc_core::sc_module_name name, std::vector<Player*> players, std::unique_ptr<AccessSource> source,
+                bool check_values, PlayerHooks hooks);
+  const char* kind() const override { return "earshot::RecordedOrder"; }
+
+  sc_core::sc_time finished_at() const { return finished_at_; }
+  std::exception_ptr error() const { return error_; }
+  std::uint64_t reads_compared() const { return compared_; }
+  std::uint64_t reads_that_differ() const { return different_; }
+  const std::string& first_difference() const { return first_difference_; }
+
+ private:
+  void play();
+  void learn(const Access& access);
+  void compare(const Access& access, const Player& player);
+
+  std::vector<Player*> players_;
+  std::unique_ptr<AccessSource> source_;
+  bool check_values_;
+  PlayerHooks hooks_;
+  std::unordered_map<std::uint64_t, std::vector<bool>> touched_;  // bytes accessed so far, by page
+  std::uint64_t page_number_ = ~std::uint64_t{0};                 // the page looked up last
+  std::vector<bool>* page_ = nullptr;
+  std::uint64_t played_ = 0;
+  std::uint64_t compared_ = 0;
+  std::uint64_t different_ = 0;
+  std::string first_difference_;
+  sc_core::sc_time finished_at_;
+  std::exception_ptr error_;
+};
+
+}  // namespace earshot

@@ -1,0 +1,27 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+//
+// The table of configuration keys: one entry a key with its default, its help, and how its text becomes a
+// setting. Everything that lists keys walks this table.
+#pragma once
+
+#include <functional>
+#include <string>
+#include <vector>
+
+#include "settings.h"
+
+namespace earshot {
+
+struct Key {
+  const char* name;          // "section.key", or "key" at top level
+  const char* default_text;
+  const char* help;
+  // Stores `text` in the settings. Returns what was expected instead, or an empty string.
+  std::function<std::string(const std::string& text, Settings& settings)> apply;
+};
+
+// In the order in which they are applied and listed: bus.clock first, since times may be given in its cycles.
+const std::vector<Key>& keys();
+
+}  // namespace earshot

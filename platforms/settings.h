@@ -1,0 +1,75 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+//
+// Settings are everything a run needs to know, read from an INI file and the command line, which take the same
+// keys; the command line wins. Every problem is found before anything is built and reported at once.
+#pragma once
+
+#include <stdexcept>
+#include <string>
+#include <utility>
+#include <vector>
+
+#include "earshot/bus/address_map.h"
+#include "earshot/cache/geometry.h"
+#include "earshot/timing/picoseconds.h"
+#include "earshot/traffic/pattern.h"
+
+namespace earshot {
+
+// Unusable input: exit status 2. what() may have several lines, one a problem.
+class UsageError : public std::runtime_error {
+ public:
+  using std::runtime_error::runtime_error;
+};
+
+enum class Order { recorded, concurrent };
+enum class Watch { where_recorded, always, never };  // the coherence monitor
+
+struct Settings {
+  // bus
+  Picoseconds bus_clock = 0;
+  unsigned bus_width = 0;
+  unsigned arbitration_cycles = 0, address_cycles = 0, snoop_cycles = 0, supply_cycles = 0;
+  std::vector<Window> windows;
+
+  // caches
+  unsigned caches = 0;
+  std::string protocol;           // a built-in table's name, or the path of a table file
+  int update_limit = 0;           // 0: as the table says
+  Geometry geometry;
+  Picoseconds hit_time = 0;
+
+  // memory
+  Picoseconds read_latency = 0, write_latency = 0, beat_time = 0;
+  unsigned beat_bytes = 0;
+
+  // workload
+  std::string recording;          // path; empty for a pattern
+  bool uses_pattern = false;
+  PatternConfig pattern;
+  Order order = Order::recorded;
+  Picoseconds think = 0;
+  Picoseconds quantum = 0;
+
+  // the run
+  Watch monitor = Watch::where_recorded;
+  bool flush_at_end = true;
+  bool baseline = true;
+
+  // Every key with the text it ended up with, in the order of the help text.
+  std::vector<std::pair<std::string, std::string>> resolved;
+
+  bool watched() const {
+    return monitor == Watch::always || (monitor == Watch::where_recorded && order == Order::recorded);
+  }
+};
+
+// `arguments`: "--section.key=value" or "--section.key value", and nothing else. `config_path` may be empty.
+// Throws UsageError.
+Settings read_settings(const std::string& config_path, const std::vector<std::string>& arguments);
+
+// One line a key: name, what it is, its default.
+std::string settings_help();
+
+}  // namespace earshot
