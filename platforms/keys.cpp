@@ -121,31 +121,19 @@ std::string apply_order(const std::string& text, Settings& settings) {
 
 std::string apply_pattern(const std::string& text, Settings& settings) {
   settings.uses_pattern = !text.empty();
-  if (text.empty() || pattern_from(text, settings.pattern.kind)) return {};
-  return "private, read-shared, producer-consumer, migratory, false-sharing or uniform";
+  if (!text.empty()) settings.pattern.kind = text;
+  return {};  // make_pattern() knows the kinds, and what goes together
 }
 
-std::string apply_accesses(const std::string& text, Settings& settings) {
-  return parse_number(text, settings.pattern.accesses) && settings.pattern.accesses > 0 ? ""
-                                                                                         : "a whole number from 1 on";
-}
-
-std::string apply_pattern_seed(const std::string& text, Settings& settings) {
-  return parse_number(text, settings.pattern.seed) ? "" : "a whole number";
-}
-
-std::string apply_footprint(const std::string& text, Settings& settings) {
-  std::uint64_t value = 0;
-  if (!parse_size(text, value) || value == 0) return "a size in bytes: 4096, 64KiB";
-  settings.pattern.footprint_bytes = value;
-  return {};
-}
-
-std::string apply_write_percent(const std::string& text, Settings& settings) {
-  std::uint64_t value = 0;
-  if (!parse_number(text, value) || value > 100) return "a whole number from 0 to 100";
-  settings.pattern.write_percent = static_cast<unsigned>(value);
-  return {};
+template <typename Number>
+Apply pattern_number(Number PatternConfig::*member, std::uint64_t least, std::uint64_t most) {
+  return [=](const std::string& text, Settings& settings) -> std::string {
+    std::uint64_t value = 0;
+    if (!parse_number(text, value) || value < least || value > most)
+      return "a whole number from " + std::to_string(least) + " to " + std::to_string(most);
+    settings.pattern.*member = static_cast<Number>(value);
+    return {};
+  };
 }
 
 std::string apply_monitor(const std::string& text, Settings& settings) {
@@ -205,12 +193,16 @@ const std::vector<Key>& keys() {
       {"workload.order", "recorded", "recorded: one access at a time; concurrent: each initiator on its own",
        apply_order},
       {"workload.think", "0ns", "passes in an initiator before each access", time(&Settings::think, 0)},
-      {"workload.pattern", "", "instead of a recording: private, read-shared, producer-consumer, migratory, "
-       "false-sharing, uniform", apply_pattern},
-      {"workload.accesses", "100000", "of each initiator, for a pattern", apply_accesses},
-      {"workload.footprint", "64KiB", "bytes a pattern touches", apply_footprint},
-      {"workload.write-percent", "30", "share of writes, for patterns that choose", apply_write_percent},
-      {"workload.seed", "1", "for a pattern", apply_pattern_seed},
+      {"workload.pattern", "",
+       "instead of a recording: private, read-shared, producer-consumer, migratory, false-sharing, uniform",
+       apply_pattern},
+      {"workload.accesses", "100000", "of each initiator, for a pattern",
+       pattern_number(&PatternConfig::accesses, 1, std::uint64_t{1} << 40)},
+      {"workload.lines", "64", "lines a pattern touches", pattern_number(&PatternConfig::lines, 1, 1u << 20)},
+      {"workload.word", "4", "bytes in each of a pattern's accesses", pattern_number(&PatternConfig::word_bytes, 1, 8)},
+      {"workload.write-percent", "30", "share of writes, for patterns that choose",
+       pattern_number(&PatternConfig::write_percent, 0, 100)},
+      {"workload.seed", "1", "for a pattern", pattern_number(&PatternConfig::seed, 0, ~std::uint64_t{0})},
   };
   return table;
 }

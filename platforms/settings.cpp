@@ -151,9 +151,14 @@ void check_together(const Settings& settings, Collector& collector) {
   if (!settings.recording.empty() && settings.uses_pattern)
     collector.problem(where("workload.pattern") +
                       "workload.pattern: a recording is given too; keep one of workload.recording, workload.pattern");
-  if (settings.uses_pattern)
-    for (const std::string& problem : problems_of(settings.pattern))
-      collector.problem(where("workload.pattern") + "workload.pattern: " + problem);
+  if (!settings.uses_pattern) return;
+  try {
+    make_pattern(settings.pattern);
+  } catch (const PatternError& error) {
+    std::istringstream lines(error.what());
+    for (std::string line; std::getline(lines, line);)
+      collector.problem(where("workload.pattern") + "workload.pattern: " + line);
+  }
 }
 
 }  // namespace
