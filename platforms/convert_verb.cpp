@@ -2,7 +2,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #include <cstdio>
 
-#include "earshot/traffic/convert.h"
+#include "earshot/traffic/recording.h"
 #include "quantities.h"
 #include "settings.h"
 #include "verbs.h"

@@ -107,8 +107,9 @@ Json collect_results(const Settings& settings, const Table& table, Platform& pla
 
   std::uint64_t dirty = 0;
   try {
+    sc_core::sc_time delay = from_ps(elapsed) - sc_core::sc_time_stamp();
     if (settings.flush_at_end)
-      for (const auto& cache : platform.caches()) cache->flush();
+      for (const auto& cache : platform.caches()) cache->flush(delay);
     for (const auto& cache : platform.caches()) dirty += cache->owned_lines();
     if (platform.monitor() != nullptr) platform.monitor()->check_memory();
   } catch (const CoherenceViolation& violation) {

@@ -2,6 +2,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "settings.h"
 
+#include <algorithm>
 #include <boost/program_options.hpp>
 #include <filesystem>
 #include <fstream>
@@ -47,6 +48,10 @@ std::map<std::string, std::vector<int>> lines_of_keys(std::istream& file) {
       lines[section + trimmed(line.substr(0, equals))].push_back(number);
   }
   return lines;
+}
+
+bool is_key(const std::string& name) {
+  return std::any_of(keys().begin(), keys().end(), [&](const Key& key) { return key.name == name; });
 }
 
 std::string unknown_key(const std::string& where, const std::string& key) {
@@ -98,12 +103,22 @@ void Collector::read_file(const std::string& path) {
 }
 
 void Collector::read_arguments(const std::vector<std::string>& arguments) {
+  // "--key=" empties a key; Boost.Program_options would refuse it.
+  std::vector<std::string> with_values, emptied;
+  for (const std::string& argument : arguments) {
+    const bool empties = argument.rfind("--", 0) == 0 && argument.back() == '=';
+    if (empties)
+      emptied.push_back(argument.substr(2, argument.size() - 3));
+    else
+      with_values.push_back(argument);
+  }
   const po::options_description description = described_keys();
   try {
     const int style = po::command_line_style::allow_long | po::command_line_style::long_allow_adjacent |
                       po::command_line_style::long_allow_next;
-    const po::parsed_options parsed =
-        po::command_line_parser(arguments).options(description).style(style).allow_unregistered().run();
+    po::parsed_options parsed =
+        po::command_line_parser(with_values).options(description).style(style).allow_unregistered().run();
+    for (const std::string& key : emptied) parsed.options.emplace_back(key, std::vector<std::string>{""});
     for (const std::string& stray : po::collect_unrecognized(parsed.options, po::include_positional))
       if (stray.rfind("--", 0) != 0) problem("command line: '" + stray + "' is not a --key=value");
     take(parsed, false, [](const std::string&, std::size_t) { return std::string("command line"); });
@@ -119,7 +134,7 @@ void Collector::take(const po::parsed_options& parsed, bool in_file,
     if (option.position_key >= 0 || option.string_key.empty()) continue;
     const std::size_t occurrence = occurrences[option.string_key]++;
     const std::string place = where(option.string_key, occurrence);
-    if (option.unregistered)
+    if (option.unregistered || !is_key(option.string_key))
       problem(unknown_key(place, option.string_key));
     else if (occurrence > 0)
       problem(place + ": key '" + option.string_key + "' is given twice, first at " + where(option.string_key, 0) +

@@ -13,6 +13,7 @@
 #include <systemc>
 #include <tlm>
 #include <tlm_utils/simple_initiator_socket.h>
+#include <tlm_utils/simple_target_socket.h>
 #include <vector>
 
 #include "earshot/bus/snooping_bus.h"

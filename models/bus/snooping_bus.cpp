@@ -130,13 +130,11 @@ void SnoopingBus::release() {
 
 void SnoopingBus::transact(BusTransaction& transaction, sc_core::sc_time& delay) {
   const Picoseconds base = now_ps();
-  const Picoseconds start = base + to_ps(delay);
+  const Picoseconds requested = base + to_ps(delay);
   address_bus_.forget_before(base);
   data_bus_.forget_before(base);
 
-  // A victim's write-back makes room first but is granted behind the fetch it makes room for.
-  Picoseconds time = transaction.behind_fill ? start + unloaded_fetch_time() : start;
-  const Picoseconds requested = time;
+  Picoseconds time = requested;
   address_phase(transaction.kind, time, transaction.parts);
 
   Snoop snoop;
@@ -328,13 +326,6 @@ void SnoopingBus::pass_through(tlm::tlm_generic_payload& payload, int, sc_core::
   totals.wait += parts[LatencyPart::wait_for_grant] - waited_before;
   const Picoseconds now = now_ps();
   delay = from_ps(time > now ? time - now : 0);
-}
-
-// What a fetch from memory costs when nothing competes, without the memory's own time.
-Picoseconds SnoopingBus::unloaded_fetch_time() const {
-  return (config_.arbitration_cycles + config_.address_cycles + config_.snoop_cycles +
-          cycles_for(line_bytes_, config_.width_bytes)) *
-         period_;
 }
 
 unsigned SnoopingBus::debug(tlm::tlm_generic_payload& payload) {

@@ -17,6 +17,7 @@
 // message), a cache whose line differs or a wrong time resolution at end of elaboration.
 #pragma once
 
+#include <algorithm>
 #include <array>
 #include <memory>
 #include <string>
@@ -78,6 +79,8 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface {
 
   const AddressMap& address_map() const { return map_; }
   SnoopingBusTotals totals() const;
+  // The end of the latest booking of either bus, in simulation time.
+  Picoseconds busy_until() const { return std::max(address_bus_.last_end(), data_bus_.last_end()); }
   int ports() const { return static_cast<int>(caches_.size()); }
 
  private:
@@ -111,7 +114,6 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface {
   void access_memory(tlm::tlm_command command, std::uint64_t address, std::uint8_t* data, unsigned length,
                      const std::uint8_t* byte_enable, Picoseconds& time, LatencyParts& parts,
                      tlm::tlm_response_status& status);
-  Picoseconds unloaded_fetch_time() const;
 
   SnoopingBusConfig config_;
   Picoseconds period_;

@@ -29,7 +29,6 @@ struct BusTransaction {
   std::uint32_t length = 0;
   const std::uint8_t* word = nullptr;          // those bytes
   const std::uint8_t* byte_enable = nullptr;   // null, or one flag a byte: TLM_BYTE_ENABLED or not
-  bool behind_fill = false;        // write_back: makes room for a fetch that is asked for next and goes first
 
   // Set by the bus.
   bool shared = false;             // another cache still holds the line

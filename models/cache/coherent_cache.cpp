@@ -11,6 +11,7 @@ namespace {
 
 constexpr const char* config_id = "/earshot/cache/config";
 constexpr const char* protocol_id = "/earshot/cache/protocol";
+constexpr const char* memory_id = "/earshot/cache/memory";
 
 // A geometry to build the store with while problems are being reported.
 Geometry checked(const sc_core::sc_object& module, const CacheConfig& config, Family family) {
@@ -241,7 +242,7 @@ void CoherentCache::judge(const Piece& piece, Progress& progress) {
     transaction.requester = port_;
     transaction.line = piece.line;
     if (row.bus == BusKind::read || row.bus == BusKind::read_exclusive) {
-      if (!fetch(piece, transaction, progress, slot)) return;
+      fetch(piece, transaction, progress, slot);
     } else {
       transaction.offset = piece.offset;
       transaction.length = piece.length;
@@ -266,73 +267,112 @@ void CoherentCache::judge(const Piece& piece, Progress& progress) {
   if (observer_ != nullptr) tell_access(piece, bytes);
 }
 
-// Makes room, fetches the line and places it, not yet in any state. False: the access failed, nothing is cached.
-bool CoherentCache::fetch(const Piece& piece, BusTransaction& transaction, Progress& progress, Slot*& slot) {
-  Slot* const place = slot != nullptr ? slot : &store_.victim(piece.line);
-  if (slot == nullptr && place->state != absent) {
-    progress.status = give_up(*place, progress.delay, true);
-    if (progress.status != tlm::TLM_OK_RESPONSE) return false;
-  }
+// Fetches the line and places it, not yet in any state. The victim's write-back is asked for behind the fetch, and
+// the access does not wait for it. If either is refused, nothing is cached and an owned victim is back in its place.
+void CoherentCache::fetch(const Piece& piece, BusTransaction& transaction, Progress& progress, Slot*& slot) {
+  Slot& place = slot != nullptr ? *slot : store_.victim(piece.line);
+  const Slot victim = place;
+  const bool owed = slot == nullptr && victim.state != absent && leave(place);
+
+  const Picoseconds requested = now_ps() + to_ps(progress.delay);
   transaction.line_data = incoming_.data();
   bus_socket->transact(transaction, progress.delay);
-  if (transaction.status != tlm::TLM_OK_RESPONSE) return true;  // judge() passes it on
-  if (slot == nullptr) store_.fill(*place, piece.line);
-  slot = place;
-  std::memcpy(store_.bytes(*slot), incoming_.data(), incoming_.size());
-  return true;
+
+  if (owed && transaction.status == tlm::TLM_OK_RESPONSE) {
+    const Picoseconds now = now_ps();
+    sc_core::sc_time unattended = from_ps(requested > now ? requested - now : 0);
+    transaction.status = write_back(victim.line, leaving_, unattended);
+    if (transaction.status != tlm::TLM_OK_RESPONSE) surrender(piece, transaction, unattended);
+  }
+  if (transaction.status != tlm::TLM_OK_RESPONSE) {
+    if (owed) come_back(place, victim);
+    return;
+  }
+  if (slot == nullptr) store_.fill(place, piece.line);
+  slot = &place;
+  std::memcpy(store_.bytes(place), incoming_.data(), incoming_.size());
+}
+
+// The line just fetched cannot be placed: it goes as a replacement would take it.
+void CoherentCache::surrender(const Piece& piece, const BusTransaction& transaction, sc_core::sc_time& delay) {
+  const StateId held = table_->row(absent, piece.write ? Event::write : Event::read, transaction.shared).next;
+  bus_socket->dropped(port_, piece.line);
+  if (table_->state(held).owner && write_back(piece.line, incoming_, delay) != tlm::TLM_OK_RESPONSE)
+    SC_REPORT_ERROR(memory_id, (std::string(name()) + ": memory refuses write-backs of lines it let be read").c_str());
 }
 
 // ---- Replacement
 
-tlm::tlm_response_status CoherentCache::give_up(Slot& slot, const sc_core::sc_time& delay, bool behind_fill) {
+// Takes an occupied slot's line out of the store. True: it is owned, stands in the write-back slot, and memory is
+// still owed it. False: it is gone.
+bool CoherentCache::leave(Slot& slot) {
   const Slot before = slot;
   const Row& row = table_->row(before.state, Event::replace, false);
   if (!row.defined) no_row(before.state, Event::replace, before.line);
-  if (!row.uses_bus) {
-    set_state(slot, before.line, absent);
-    bus_socket->dropped(port_, before.line);
-    if (observer_ != nullptr) observer_->settled(before.line);
-    return tlm::TLM_OK_RESPONSE;
+  if (row.uses_bus) {
+    leaving_line_ = before.line;
+    std::memcpy(leaving_.data(), store_.bytes(slot), leaving_.size());
   }
-
-  leaving_line_ = before.line;
-  std::memcpy(leaving_.data(), store_.bytes(slot), leaving_.size());
   set_state(slot, before.line, absent);
-
-  BusTransaction transaction;
-  transaction.kind = row.bus;
-  transaction.requester = port_;
-  transaction.line = before.line;
-  transaction.line_data = leaving_.data();
-  transaction.behind_fill = behind_fill;
-  sc_core::sc_time unattended = delay;
-  bus_socket->transact(transaction, unattended);
-
-  leaving_line_ = ~std::uint64_t{0};
-  if (transaction.status != tlm::TLM_OK_RESPONSE) {  // memory refused: the line stays where it was
-    slot = before;
-    slot.state = absent;
-    std::memcpy(store_.bytes(slot), leaving_.data(), leaving_.size());
-    set_state(slot, before.line, before.state);
-  }
+  if (row.uses_bus) return true;
+  bus_socket->dropped(port_, before.line);
   if (observer_ != nullptr) observer_->settled(before.line);
-  return transaction.status;
+  return false;
+}
+
+// Undoes leave() for an owned line.
+void CoherentCache::come_back(Slot& slot, const Slot& before) {
+  slot = before;
+  slot.state = absent;
+  std::memcpy(store_.bytes(slot), leaving_.data(), leaving_.size());
+  set_state(slot, before.line, before.state);
+  leaving_line_ = ~std::uint64_t{0};
+}
+
+tlm::tlm_response_status CoherentCache::write_back(std::uint64_t line, std::vector<std::uint8_t>& bytes,
+                                                   sc_core::sc_time& delay) {
+  BusTransaction transaction;
+  transaction.kind = BusKind::write_back;
+  transaction.requester = port_;
+  transaction.line = line;
+  transaction.line_data = bytes.data();
+  bus_socket->transact(transaction, delay);
+  if (transaction.status != tlm::TLM_OK_RESPONSE) return transaction.status;
+  leaving_line_ = ~std::uint64_t{0};
+  if (observer_ != nullptr) observer_->settled(line);
+  return tlm::TLM_OK_RESPONSE;
+}
+
+// Writes an occupied slot's line back if it is owned, else drops it. If memory refuses, it stays.
+tlm::tlm_response_status CoherentCache::give_up(Slot& slot, sc_core::sc_time& delay) {
+  const Slot before = slot;
+  if (!leave(slot)) return tlm::TLM_OK_RESPONSE;
+  const tlm::tlm_response_status status = write_back(before.line, leaving_, delay);
+  if (status != tlm::TLM_OK_RESPONSE) come_back(slot, before);
+  return status;
 }
 
 tlm::tlm_response_status CoherentCache::replace(std::uint64_t address, const sc_core::sc_time& delay) {
   Grant grant(*bus_socket.operator->());
   Slot* const slot = store_.find(store_.line_of(address));
-  return slot == nullptr ? tlm::TLM_OK_RESPONSE : give_up(*slot, delay, false);
+  sc_core::sc_time unattended = delay;
+  return slot == nullptr ? tlm::TLM_OK_RESPONSE : give_up(*slot, unattended);
 }
 
-std::uint64_t CoherentCache::flush() {
+std::uint64_t CoherentCache::flush(sc_core::sc_time& delay) {
   std::uint64_t refused = 0;
   Grant grant(*bus_socket.operator->());
   for (Slot& slot : store_.slots()) {
     if (slot.state == absent) continue;
-    if (give_up(slot, sc_core::SC_ZERO_TIME, false) != tlm::TLM_OK_RESPONSE) ++refused;
+    if (give_up(slot, delay) != tlm::TLM_OK_RESPONSE) ++refused;
   }
   return refused;
+}
+
+std::uint64_t CoherentCache::owned_lines() const {
+  return static_cast<std::uint64_t>(std::count_if(store_.slots().begin(), store_.slots().end(), [&](const Slot& slot) {
+    return table_->state(slot.state).owner;
+  }));
 }
 
 // ---- Bus side

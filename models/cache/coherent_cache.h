@@ -77,8 +77,11 @@ class CoherentCache : public sc_core::sc_module,
   // Gives up the line of `address` as a replacement would, written back if the cache owns it. From a
   // simulation process, or after simulation if no target waits. Its time is added to nobody's delay.
   tlm::tlm_response_status replace(std::uint64_t address, const sc_core::sc_time& delay);
-  // Writes back and gives up every line. Returns how many owned lines memory refused: those stay.
-  std::uint64_t flush();
+  // Writes back and gives up every line, one after another from `delay` on, to which it adds the time that takes.
+  // Returns how many owned lines memory refused: those stay.
+  std::uint64_t flush(sc_core::sc_time& delay);
+  // The number of lines this cache owns, that is, which memory may not have.
+  std::uint64_t owned_lines() const;
 
   // `observer` must outlive the simulation; null for none.
   void set_observer(Observer* observer) { observer_ = observer; }
@@ -121,9 +124,12 @@ class CoherentCache : public sc_core::sc_module,
   void access_cached(tlm::tlm_generic_payload& payload, Progress& progress);
   void access_line(const Piece& piece, Progress& progress);
   void judge(const Piece& piece, Progress& progress);
-  bool fetch(const Piece& piece, BusTransaction& transaction, Progress& progress, Slot*& slot);
-  tlm::tlm_response_status give_up(Slot& slot, const sc_core::sc_time& delay, bool behind_fill);
-  bool finish(const Piece& piece, Slot* slot);
+  void fetch(const Piece& piece, BusTransaction& transaction, Progress& progress, Slot*& slot);
+  void surrender(const Piece& piece, const BusTransaction& transaction, sc_core::sc_time& delay);
+  tlm::tlm_response_status give_up(Slot& slot, sc_core::sc_time& delay);
+  bool leave(Slot& slot);
+  void come_back(Slot& slot, const Slot& before);
+  tlm::tlm_response_status write_back(std::uint64_t line, std::vector<std::uint8_t>& bytes, sc_core::sc_time& delay);
   void set_state(Slot& slot, std::uint64_t line, StateId next);
   void no_row(StateId state, Event event, std::uint64_t line) const;
   void tell_access(const Piece& piece, const std::uint8_t* line_bytes);
@@ -136,10 +142,10 @@ class CoherentCache : public sc_core::sc_module,
   int port_ = -1;
   const AddressMap* map_ = nullptr;
 
-  // A victim on its way to memory is out of the store but still seen by debug accesses.
+  // The write-back slot: a victim on its way to memory is out of the store but still seen by debug accesses.
   std::uint64_t leaving_line_ = ~std::uint64_t{0};
   std::vector<std::uint8_t> leaving_;
-  std::vector<std::uint8_t> incoming_;
+  std::vector<std::uint8_t> incoming_;  // a line being fetched
   std::vector<std::uint8_t> enables_;  // byte enables of the access at hand, one a byte
 
   std::uint64_t fast_reads_ = 0;       // hits that took the short path: all cost hit_ps_

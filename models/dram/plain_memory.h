@@ -37,6 +37,10 @@ class PlainMemory : public sc_core::sc_module, private tlm::tlm_fw_transport_if<
   Picoseconds busy_time() const { return calendar_.busy_time(); }
   Picoseconds queue_time() const { return queue_time_; }  // waiting, the sum over all accesses
   std::uint64_t accesses() const { return accesses_; }
+  Picoseconds busy_until() const { return calendar_.last_end(); }
+
+  // Copies bytes out, without time or side effect. REQUIRES: address + length does not pass the end of the space.
+  void peek(std::uint64_t address, std::uint8_t* to, std::size_t length) const { bytes_.read(address, to, length); }
 
  private:
   void b_transport(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay) override;

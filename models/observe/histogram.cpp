@@ -18,21 +18,14 @@ std::size_t bucket_of(std::uint64_t value) {
   return static_cast<std::size_t>(shift * per_octave + (value >> shift));
 }
 
-// The largest value that falls into a bucket.
-std::uint64_t upper_edge(std::size_t bucket) {
-  if (bucket < 2 * per_octave) return bucket;
-  const unsigned shift = static_cast<unsigned>(bucket / per_octave - 1);
-  const std::uint64_t top = bucket - shift * per_octave;
-  return ((top + 1) << shift) - 1;
-}
-
 }  // namespace
 
 void Histogram::add(std::uint64_t value, std::uint64_t times) {
   if (times == 0) return;
   const std::size_t bucket = bucket_of(value);
   if (bucket >= buckets_.size()) buckets_.resize(bucket + 1);
-  buckets_[bucket] += times;
+  buckets_[bucket].count += times;
+  buckets_[bucket].largest = std::max(buckets_[bucket].largest, value);
   count_ += times;
   sum_ += value * times;
   max_ = std::max(max_, value);
@@ -40,7 +33,10 @@ void Histogram::add(std::uint64_t value, std::uint64_t times) {
 
 void Histogram::add(const Histogram& other) {
   if (other.buckets_.size() > buckets_.size()) buckets_.resize(other.buckets_.size());
-  for (std::size_t i = 0; i < other.buckets_.size(); ++i) buckets_[i] += other.buckets_[i];
+  for (std::size_t i = 0; i < other.buckets_.size(); ++i) {
+    buckets_[i].count += other.buckets_[i].count;
+    buckets_[i].largest = std::max(buckets_[i].largest, other.buckets_[i].largest);
+  }
   count_ += other.count_;
   sum_ += other.sum_;
   max_ = std::max(max_, other.max_);
@@ -49,9 +45,9 @@ void Histogram::add(const Histogram& other) {
 std::uint64_t Histogram::percentile(unsigned per_cent) const {
   const std::uint64_t rank = count_ / 100 * per_cent + (count_ % 100 * per_cent + 99) / 100;
   std::uint64_t seen = 0;
-  for (std::size_t bucket = 0; bucket < buckets_.size(); ++bucket) {
-    seen += buckets_[bucket];
-    if (seen >= rank && seen > 0) return std::min(upper_edge(bucket), max_);
+  for (const Bucket& bucket : buckets_) {
+    seen += bucket.count;
+    if (seen >= rank && seen > 0) return bucket.largest;
   }
   return max_;
 }

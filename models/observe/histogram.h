@@ -2,8 +2,8 @@
 // SPDX-License-Identifier: Apache-2.0
 //
 // A Histogram counts values in buckets whose width grows with the value: 128 buckets an octave, so that a
-// percentile is never off by more than 1/128 of itself, in bounded memory, whatever the values. Values below
-// 256 are kept exactly. Sum, count and maximum are exact. Kernel-free.
+// percentile is never off by more than 1/128 of itself, in bounded memory, whatever the values. It is exact where
+// a bucket saw one value only, as for values below 256. Sum, count and maximum are exact. Kernel-free.
 #pragma once
 
 #include <cstdint>
@@ -21,12 +21,16 @@ class Histogram {
   std::uint64_t max() const { return max_; }
   double mean() const { return count_ == 0 ? 0.0 : static_cast<double>(sum_) / static_cast<double>(count_); }
 
-  // The nearest-rank percentile: the smallest bucket edge that at least `per_cent` of the values do not exceed.
-  // 0 if nothing was added. REQUIRES: 1 <= per_cent <= 100.
+  // The nearest-rank percentile, rounded up to the largest value seen in its bucket. 0 if nothing was added.
+  // REQUIRES: 1 <= per_cent <= 100.
   std::uint64_t percentile(unsigned per_cent) const;
 
  private:
-  std::vector<std::uint64_t> buckets_;
+  struct Bucket {
+    std::uint64_t count = 0;
+    std::uint64_t largest = 0;
+  };
+  std::vector<Bucket> buckets_;
   std::uint64_t count_ = 0;
   std::uint64_t sum_ = 0;
   std::uint64_t max_ = 0;

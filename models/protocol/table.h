@@ -73,7 +73,9 @@ class Table {
     return rows_[(std::size_t{state} * events + static_cast<std::size_t>(event)) * 2 + (shared ? 1 : 0)];
   }
 
-  // Test and mutation door: a copy of this table with one row replaced.
+  // Test and mutation door: a copy of this table with one row replaced, unchecked. The row of the other answer is
+  // replaced with it if the two were one row or `replacement` uses no bus; else it keeps its effect but issues the
+  // replacement's transaction, because both answers to one transaction issue the same.
   Table with_row(StateId state, Event event, bool shared, const Row& replacement) const;
 
   // The compiled rows, one a line, in a stable form that tests compare.

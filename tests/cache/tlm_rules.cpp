@@ -212,7 +212,8 @@ TEST_CASE("a write-back that memory refuses fails the access that caused it, and
     CHECK(system.cache.state_of(0x40) == "D");
     CHECK(system.cache.state_of(0x80) == "I");
     CHECK(system.cpu.read(0x40) == 0x5eed);
-    CHECK(system.cache.flush() == 1);
+    sc_core::sc_time delay;
+    CHECK(system.cache.flush(delay) == 1);
     system.memory.refuse_writes = false;
     CHECK(system.cpu.read(0x80) == 0);
     CHECK(system.cpu.read(0x40) == 0x5eed);

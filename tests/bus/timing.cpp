@@ -1,0 +1,128 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+//
+// What a transaction costs, from the configuration alone: common practice, no source; the sums are worked out here.
+// Clock 5 ns; arbitration 1, address 1, snoop 1, supply 2 cycles; 8 bytes a beat; hit 1 ns; memory 40 ns + 5 ns a beat.
+#include <catch2/catch.hpp>
+
+#include "simulated.h"
+
+using namespace earshot;
+using namespace earshot::test;
+
+namespace {
+
+double ns(const sc_core::sc_time& time) { return time.to_seconds() * 1e9; }
+
+}  // namespace
+
+TEST_CASE("a miss in memory costs address, snoop, memory and four beats, a hit the lookup", "[bus]") {
+  System system(load_table("dirty-owner-update"));
+  simulate([&] {
+    system.cpu(0).read(0x40);
+    // 1 lookup, wait 4 for the clock edge, 2 x 5 address, 5 snoop, 40 + 4 x 5 memory, 4 x 5 data
+    CHECK(ns(system.cpu(0).delay) == Approx(1 + 4 + 10 + 5 + 60 + 20));
+    system.cpu(0).read(0x44);
+    CHECK(ns(system.cpu(0).delay) == Approx(1));
+    const CacheTotals totals = system.cache(0).totals();
+    CHECK(totals.parts.total() == totals.latency.sum());
+    CHECK(totals.parts[LatencyPart::hit] == 2000);
+    CHECK(totals.parts[LatencyPart::wait_for_grant] == 4000);
+    CHECK(totals.parts[LatencyPart::transfer] == 30000);
+    CHECK(totals.parts[LatencyPart::snoop] == 5000);
+    CHECK(totals.parts[LatencyPart::memory_array] == 60000);
+  });
+}
+
+TEST_CASE("an owner's supply replaces the memory's time", "[bus]") {
+  System system(load_table("dirty-owner-update"));
+  simulate([&] {
+    system.cpu(0).write(0x40, 1);
+    sc_core::wait(1, sc_core::SC_US);
+    system.cpu(1).read(0x40);
+    CHECK(ns(system.cpu(1).delay) == Approx(1 + 4 + 10 + 5 + 2 * 5 + 20));
+    CHECK(system.cache(1).totals().parts[LatencyPart::owner_supply] == 10000);
+  });
+}
+
+TEST_CASE("an update costs address, snoop and the beats of its word", "[bus]") {
+  System system(load_table("dirty-owner-update"));
+  simulate([&] {
+    system.cpu(0).read(0x40);
+    sc_core::wait(1, sc_core::SC_US);
+    system.cpu(0).write(0x40, 1);
+    CHECK(ns(system.cpu(0).delay) == Approx(1 + 4 + 10 + 5 + 5));
+  });
+}
+
+TEST_CASE("a second request waits for the first one's address phase, not for its data", "[bus]") {
+  System system(load_table("dirty-owner-update"));
+  simulate([&] {
+    system.cpu(0).read(0x40);
+    system.cpu(1).read(0x80);
+    // the address bus is free at 15 ns; the memory serves the first until 80 ns, the second from then on
+    CHECK(ns(system.cpu(1).delay) == Approx(80 + 60 + 20));
+    const CacheTotals totals = system.cache(1).totals();
+    CHECK(totals.parts[LatencyPart::wait_for_grant] == 14000);
+    CHECK(totals.parts[LatencyPart::memory_queue] == 50000);
+    CHECK(totals.parts.total() == totals.latency.sum());
+  });
+}
+
+TEST_CASE("a victim's write-back does not delay the fetch it makes room for", "[bus]") {
+  System system(load_table("dirty-owner-update"), {1, {32, 1, 32, Replacement::lru, 1}});
+  simulate([&] {
+    system.cpu(0).write(0x40, 1);
+    sc_core::wait(1, sc_core::SC_US);
+    system.cpu(0).read(0x80);
+    CHECK(ns(system.cpu(0).delay) == Approx(1 + 4 + 10 + 5 + 60 + 20));
+    CHECK(system.bus->totals().block_writes == 1);
+  });
+}
+
+TEST_CASE("an initiator ahead in local time leaves the earlier gap to one behind", "[bus]") {
+  System system(load_table("dirty-owner-update"), {2, {1024, 2, 32, Replacement::lru, 1}, {{"memory", 0, 0, true, 0}}, false});
+  simulate([&] {
+    std::uint32_t value = 0;
+    tlm::tlm_generic_payload payload;
+    payload.set_command(tlm::TLM_READ_COMMAND);
+    payload.set_address(0x40);
+    payload.set_data_ptr(reinterpret_cast<std::uint8_t*>(&value));
+    payload.set_data_length(4);
+    payload.set_streaming_width(4);
+    sc_core::sc_time ahead(900, sc_core::SC_NS);
+    system.cpu(0).socket->b_transport(payload, ahead);
+    payload.set_address(0x80);
+    sc_core::sc_time behind(0, sc_core::SC_NS);
+    system.cpu(1).socket->b_transport(payload, behind);
+    CHECK(ns(behind) == Approx(100));
+  });
+}
+
+TEST_CASE("busy times are the cycles the totals count", "[bus]") {
+  System system(load_table("dragon"), {4, {256, 2, 32, Replacement::lru, 1}});
+  simulate([&] {
+    for (std::uint32_t i = 0; i < 500; ++i) {
+      const int cpu = static_cast<int>(i * 7 % 4);
+      const std::uint64_t address = i * 13 % 32 * 16;
+      if (i % 3 == 0)
+        system.cpu(cpu).write(address, i);
+      else
+        system.cpu(cpu).read(address);
+      sc_core::wait(system.cpu(cpu).delay);
+    }
+    const SnoopingBusTotals totals = system.bus->totals();
+    std::uint64_t address_cycles = 0, data_cycles = 0;
+    for (const BusKindTotals& kind : totals.kind) {
+      address_cycles += kind.address_cycles;
+      data_cycles += kind.data_cycles;
+    }
+    CHECK(totals.address_busy == address_cycles * 5000);
+    CHECK(totals.data_busy == data_cycles * 5000);
+    CHECK(totals.supplied_by_memory + totals.supplied_by_owner + totals.supplied_by_sharer ==
+          system.count(BusKind::read) + system.count(BusKind::read_exclusive));
+    CHECK(totals.block_reads == totals.supplied_by_memory);
+    for (int i = 0; i < 4; ++i)
+      CHECK(system.cache(i).totals().parts.total() == system.cache(i).totals().latency.sum());
+  });
+}
