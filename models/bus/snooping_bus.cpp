@@ -114,13 +114,15 @@ SnoopingBusTotals SnoopingBus::totals() const {
   return totals;
 }
 
-void SnoopingBus::acquire() {
+bool SnoopingBus::acquire() {
+  const bool waits = held_;
   while (held_) {
     ++waiting_;
     sc_core::wait(released_);
     --waiting_;
   }
   held_ = true;
+  return waits;
 }
 
 void SnoopingBus::release() {

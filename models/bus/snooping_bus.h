@@ -90,7 +90,7 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface {
   void end_of_elaboration() override;
 
   // RequestInterface
-  void acquire() override;
+  bool acquire() override;
   void release() override;
   void transact(BusTransaction& transaction, sc_core::sc_time& delay) override;
   void pass_through(tlm::tlm_generic_payload& payload, int requester, sc_core::sc_time& delay,

@@ -58,8 +58,8 @@ class RequestInterface : public virtual sc_core::sc_interface {
   using protocol_types = SnoopingBusTypes;
 
   // The grant: between acquire() and release() no other transaction takes effect, so what a cache decides
-  // there about its copy stays true. Adds the time waited to `delay`'s process only, by waiting.
-  virtual void acquire() = 0;
+  // there about its copy stays true. Returns whether it had to wait().
+  virtual bool acquire() = 0;
   virtual void release() = 0;
   // REQUIRES: the bus is held. Carries the transaction out, atomically unless a target waits; adds its time to
   // `delay`. On a status other than TLM_OK_RESPONSE nothing has changed in any cache.

@@ -32,13 +32,15 @@ Geometry checked(const sc_core::sc_object& module, const CacheConfig& config, Fa
 // Holds the bus for as long as one line's access takes effect.
 class Grant {
  public:
-  explicit Grant(RequestInterface& bus) : bus_(bus) { bus_.acquire(); }
+  explicit Grant(RequestInterface& bus) : bus_(bus), waited_(bus_.acquire()) {}
   ~Grant() { bus_.release(); }
   Grant(const Grant&) = delete;
   Grant& operator=(const Grant&) = delete;
+  bool waited() const { return waited_; }
 
  private:
   RequestInterface& bus_;
+  bool waited_;
 };
 
 void copy_enabled(std::uint8_t* to, const std::uint8_t* from, std::size_t length, const std::uint8_t* enable) {
@@ -210,14 +212,12 @@ void CoherentCache::access_line(const Piece& piece, Progress& progress) {
   progress.delay += hit_time_;
   progress.parts[LatencyPart::hit] += hit_ps_;
 
-  const Picoseconds local = now_ps() + to_ps(progress.delay);
+  const sc_core::sc_time before = sc_core::sc_time_stamp();
   Grant grant(*bus_socket.operator->());
-  const Picoseconds now = now_ps();
-  if (now > local) {  // somebody else held the bus past our local time
-    progress.parts[LatencyPart::wait_for_grant] += now - local;
-    progress.delay = sc_core::SC_ZERO_TIME;
-  } else {
-    progress.delay = from_ps(local - now);
+  if (grant.waited()) {  // somebody else held the bus, perhaps past our local time
+    const sc_core::sc_time passed = sc_core::sc_time_stamp() - before;
+    if (passed > progress.delay) progress.parts[LatencyPart::wait_for_grant] += to_ps(passed - progress.delay);
+    progress.delay = passed > progress.delay ? sc_core::SC_ZERO_TIME : progress.delay - passed;
   }
   judge(piece, progress);
   if (observer_ != nullptr) observer_->settled(piece.line);

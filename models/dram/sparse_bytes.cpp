@@ -8,12 +8,12 @@
 namespace earshot {
 
 SparseBytes::Page* SparseBytes::find(std::uint64_t number) const {
-  if (number == last_number_) return last_page_;
+  Recent& recent = recent_[number % recent_.size()];
+  if (recent.number == number) return recent.page;
   const auto found = pages_.find(number);
   if (found == pages_.end()) return nullptr;
-  last_number_ = number;
-  last_page_ = found->second.get();
-  return last_page_;
+  recent = {number, found->second.get()};
+  return recent.page;
 }
 
 std::uint8_t* SparseBytes::page(std::uint64_t address) {

@@ -29,8 +29,12 @@ class SparseBytes {
   Page* find(std::uint64_t number) const;
 
   std::unordered_map<std::uint64_t, std::unique_ptr<Page>> pages_;
-  mutable std::uint64_t last_number_ = ~std::uint64_t{0};  // the page found last, which is most often the next
-  mutable Page* last_page_ = nullptr;
+  // Pages found lately, one for each value of the number's low bits: most lookups end here.
+  struct Recent {
+    std::uint64_t number = ~std::uint64_t{0};
+    Page* page = nullptr;
+  };
+  mutable std::array<Recent, 256> recent_;
 };
 
 }  // namespace earshot

@@ -7,7 +7,7 @@
 namespace earshot {
 namespace {
 
-constexpr unsigned octave_bits = 7;
+constexpr unsigned octave_bits = 5;
 constexpr std::uint64_t per_octave = 1u << octave_bits;
 
 unsigned highest_bit(std::uint64_t value) { return 63u - static_cast<unsigned>(__builtin_clzll(value)); }

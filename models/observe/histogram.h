@@ -1,9 +1,9 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// A Histogram counts values in buckets whose width grows with the value: 128 buckets an octave, so that a
-// percentile is never off by more than 1/128 of itself, in bounded memory, whatever the values. It is exact where
-// a bucket saw one value only, as for values below 256. Sum, count and maximum are exact. Kernel-free.
+// A Histogram counts values in buckets whose width grows with the value: 32 buckets an octave, so that a
+// percentile is never off by more than 1/32 of itself, in bounded memory, whatever the values. It is exact where
+// a bucket saw one value only, as for values below 64. Sum, count and maximum are exact. Kernel-free.
 #pragma once
 
 #include <cstdint>
