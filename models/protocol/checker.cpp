@@ -115,8 +115,9 @@ class Checker {
     if (row.uses_bus && !is_fetch(row)) {
       problems_.add(row.line, "a read fetches the line, expected bus read or bus read-exclusive");
     }
-    if (next(row).absent)
+    if (next(row).absent) {
       problems_.add(row.line, "a read must end in a readable state, " + next(row).name + " is not");
+    }
   }
 
   void check_write(const RowText& row) {

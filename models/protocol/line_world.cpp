@@ -2,8 +2,6 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "earshot/protocol/line_world.h"
 
-#include "earshot/protocol/table_text.h"
-
 namespace earshot {
 namespace {
 
@@ -55,8 +53,9 @@ class Step {
     }
     const Row& row = table_.row(own().state, event, answer.shared);
     if (!row.defined) return missing(cache_, event);
-    if (row.uses_bus && is_fetch(row.bus))
+    if (row.uses_bus && is_fetch(row.bus)) {
       own().fresh = answer.supplied ? answer.supplied_fresh : world_.memory_fresh;
+    }
     if (event == Event::write && !row.again) write(row);
     move(own(), row.next);
     note_states();
@@ -114,8 +113,9 @@ class Step {
     if (event == Event::read && !held) {
       wrong_ = name() + "'s read ends without a copy, in " + state_name(own().state);
     }
-    if (event == Event::replace && held)
+    if (event == Event::replace && held) {
       wrong_ = name() + "'s replace keeps the copy, in " + state_name(own().state);
+    }
   }
 
   // The rules in the order of prover.h; the rule about missing rows is kept by act() and broadcast().

@@ -59,8 +59,9 @@ std::string join(const Words& words, const char* separator) {
 // A word of the user's as it can stand in a message: whatever bytes the file holds, one printable line.
 std::string quoted(const std::string& word) {
   std::string printable = "'";
-  for (const char c : word.substr(0, 40))
+  for (const char c : word.substr(0, 40)) {
     printable += std::isprint(static_cast<unsigned char>(c)) != 0 ? c : '?';
+  }
   return printable + (word.size() > 40 ? "...'" : "'");
 }
 
@@ -267,15 +268,17 @@ class Parser {
       return refuse(row.line,
                     unknown("action", words[0], {"bus", "again", "supply", "write-memory", "take", "count"}));
     }
-    if (words.size() > 1)
+    if (words.size() > 1) {
       return refuse(row.line, "expected a comma between actions, before " + quoted(words[1]));
+    }
     if (*flag) return refuse(row.line, "action " + words[0] + " is named twice");
     return *flag = true;
   }
 
   bool take_bus(RowText& row, const Words& words) {
-    if (words.size() != 2)
+    if (words.size() != 2) {
       return refuse(row.line, "expected one kind of transaction: bus " + join(names_of(table_kinds), "|"));
+    }
     if (row.uses_bus) return refuse(row.line, "a row issues at most one bus transaction");
     const std::optional<BusKind> kind = find_named(table_kinds, words[1]);
     if (!kind) return refuse(row.line, unknown("bus transaction", words[1], names_of(table_kinds)));

@@ -163,8 +163,9 @@ class Search {
   // Plays the way to the violation again with caches that keep their names.
   void retell(const Move& last) {
     std::deque<Move> moves{last};
-    for (Move back = reached_.at(last.from); !back.first; back = reached_.at(back.from))
+    for (Move back = reached_.at(last.from); !back.first; back = reached_.at(back.from)) {
       moves.push_front(back);
+    }
     LineWorld world;
     world.caches = proof_.caches;
     for (const Move& move : moves) {

@@ -88,34 +88,33 @@ void check_local(const FlynnView& view, const std::vector<LocalRow>& rows) {
 
 }  // namespace
 
-// clang-format off: the cases are tables
 TEST_CASE("Dragon does what Flynn's table F.11 says", "[outside][protocol]") {
   const FlynnView dragon("dragon", {{"I", "I"}, {"VE", "E"}, {"SC", "Sc"}, {"SD", "Sm"}, {"D", "M"}});
-  check_local(dragon,
-              {
-                  // row I: bus read; shared -> SC else VE. Write miss: shared -> SD and bus write, else D.
-                  {"I", Event::read, true, "read -> SC"},
-                  {"I", Event::read, false, "read -> VE"},
-                  {"I", Event::write, true, "read update -> SD"},
-                  {"I", Event::write, false, "read -> D"},
-                  // read hits change nothing
-                  {"VE", Event::read, false, "-> VE"},
-                  {"SC", Event::read, true, "-> SC"},
-                  {"SD", Event::read, true, "-> SD"},
-                  {"D", Event::read, false, "-> D"},
-                  // write hits: VE and D locally; SC and SD by a bus write, shared -> SD else D
-                  {"VE", Event::write, false, "-> D"},
-                  {"SC", Event::write, true, "update -> SD"},
-                  {"SC", Event::write, false, "update -> D"},
-                  {"SD", Event::write, true, "update -> SD"},
-                  {"SD", Event::write, false, "update -> D"},
-                  {"D", Event::write, false, "-> D"},
-                  // misses of a valid row: "victim written to memory" in SD and D only
-                  {"VE", Event::replace, false, "-> I"},
-                  {"SC", Event::replace, false, "-> I"},
-                  {"SD", Event::replace, false, "write-back -> I"},
-                  {"D", Event::replace, false, "write-back -> I"},
-              });
+  const std::vector<LocalRow> rows = {
+      // row I: bus read; shared -> SC else VE. Write miss: shared -> SD and bus write, else D.
+      {"I", Event::read, true, "read -> SC"},
+      {"I", Event::read, false, "read -> VE"},
+      {"I", Event::write, true, "read update -> SD"},
+      {"I", Event::write, false, "read -> D"},
+      // read hits change nothing
+      {"VE", Event::read, false, "-> VE"},
+      {"SC", Event::read, true, "-> SC"},
+      {"SD", Event::read, true, "-> SD"},
+      {"D", Event::read, false, "-> D"},
+      // write hits: VE and D locally; SC and SD by a bus write, shared -> SD else D
+      {"VE", Event::write, false, "-> D"},
+      {"SC", Event::write, true, "update -> SD"},
+      {"SC", Event::write, false, "update -> D"},
+      {"SD", Event::write, true, "update -> SD"},
+      {"SD", Event::write, false, "update -> D"},
+      {"D", Event::write, false, "-> D"},
+      // misses of a valid row: "victim written to memory" in SD and D only
+      {"VE", Event::replace, false, "-> I"},
+      {"SC", Event::replace, false, "-> I"},
+      {"SD", Event::replace, false, "write-back -> I"},
+      {"D", Event::replace, false, "write-back -> I"},
+  };
+  check_local(dragon, rows);
   // Section 8, figure 8.24: on a read miss holders in Read Private (VE) or Shared Clean become Shared Clean;
   // on a write miss served by caches all holders become Shared Clean.
   CHECK(dragon.snooped("VE", Event::snoop_read) == "-> SC");
@@ -126,26 +125,25 @@ TEST_CASE("Dragon does what Flynn's table F.11 says", "[outside][protocol]") {
 
 TEST_CASE("Firefly does what Flynn's table F.9 says", "[outside][protocol]") {
   const FlynnView firefly("firefly", {{"I", "I"}, {"VE", "VE"}, {"S", "S"}, {"D", "D"}});
-  check_local(
-      firefly,
-      {
-          // row I: read miss from memory -> VE, else -> S; write miss: data from memory -> D, else -> S and
-          // write to
-          // memory and sharers
-          {"I", Event::read, false, "read -> VE"},
-          {"I", Event::read, true, "read -> S"},
-          {"I", Event::write, false, "read -> D"},
-          {"I", Event::write, true, "read write-through -> S"},
-          // write hits: VE and D locally; S writes to memory and the other caches, no sharer left -> VE
-          {"VE", Event::write, false, "-> D"},
-          {"S", Event::write, true, "write-through -> S"},
-          {"S", Event::write, false, "write-through -> VE"},
-          {"D", Event::write, false, "-> D"},
-          // misses of a valid row: victim to memory in D only
-          {"VE", Event::replace, false, "-> I"},
-          {"S", Event::replace, false, "-> I"},
-          {"D", Event::replace, false, "write-back -> I"},
-      });
+  const std::vector<LocalRow> rows = {
+      // row I: read miss from memory -> VE, else -> S; write miss: data from memory -> D, else -> S and
+      // write to memory
+      // and sharers
+      {"I", Event::read, false, "read -> VE"},
+      {"I", Event::read, true, "read -> S"},
+      {"I", Event::write, false, "read -> D"},
+      {"I", Event::write, true, "read write-through -> S"},
+      // write hits: VE and D locally; S writes to memory and the other caches, no sharer left -> VE
+      {"VE", Event::write, false, "-> D"},
+      {"S", Event::write, true, "write-through -> S"},
+      {"S", Event::write, false, "write-through -> VE"},
+      {"D", Event::write, false, "-> D"},
+      // misses of a valid row: victim to memory in D only
+      {"VE", Event::replace, false, "-> I"},
+      {"S", Event::replace, false, "-> I"},
+      {"D", Event::replace, false, "write-back -> I"},
+  };
+  check_local(firefly, rows);
 }
 
 TEST_CASE("Firefly does what Flynn's table F.10 says", "[outside][protocol]") {
@@ -168,22 +166,23 @@ TEST_CASE("Firefly does what Flynn's table F.10 says", "[outside][protocol]") {
 
 TEST_CASE("MESI does what Flynn's table F.5 says of Illinois", "[outside][protocol]") {
   const FlynnView illinois("mesi", {{"I", "I"}, {"VE", "E"}, {"S", "S"}, {"D", "M"}});
-  check_local(illinois, {
-                            // row I: read miss from memory -> VE else S; write miss -> D
-                            {"I", Event::read, false, "read -> VE"},
-                            {"I", Event::read, true, "read -> S"},
-                            {"I", Event::write, false, "read-exclusive -> D"},
-                            {"I", Event::write, true, "read-exclusive -> D"},
-                            // write hits: VE and D locally; S by a bus invalidation
-                            {"VE", Event::write, false, "-> D"},
-                            {"S", Event::write, true, "upgrade -> D"},
-                            {"S", Event::write, false, "upgrade -> D"},
-                            {"D", Event::write, false, "-> D"},
-                            // misses of a valid row: victim to memory in D only
-                            {"VE", Event::replace, false, "-> I"},
-                            {"S", Event::replace, false, "-> I"},
-                            {"D", Event::replace, false, "write-back -> I"},
-                        });
+  const std::vector<LocalRow> rows = {
+      // row I: read miss from memory -> VE else S; write miss -> D
+      {"I", Event::read, false, "read -> VE"},
+      {"I", Event::read, true, "read -> S"},
+      {"I", Event::write, false, "read-exclusive -> D"},
+      {"I", Event::write, true, "read-exclusive -> D"},
+      // write hits: VE and D locally; S by a bus invalidation
+      {"VE", Event::write, false, "-> D"},
+      {"S", Event::write, true, "upgrade -> D"},
+      {"S", Event::write, false, "upgrade -> D"},
+      {"D", Event::write, false, "-> D"},
+      // misses of a valid row: victim to memory in D only
+      {"VE", Event::replace, false, "-> I"},
+      {"S", Event::replace, false, "-> I"},
+      {"D", Event::replace, false, "write-back -> I"},
+  };
+  check_local(illinois, rows);
   // Section 8: a miss served by another cache leaves the holders Read Shared; on a write miss they
   // invalidate.
   for (const char* holder : {"VE", "S", "D"}) {
@@ -194,5 +193,4 @@ TEST_CASE("MESI does what Flynn's table F.5 says of Illinois", "[outside][protoc
   }
 }
 
-// clang-format on
 }  // namespace earshot

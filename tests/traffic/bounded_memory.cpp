@@ -4,6 +4,7 @@
 #include <sys/wait.h>
 #include <unistd.h>
 
+#include <algorithm>
 #include <catch2/catch.hpp>
 
 #include "earshot/traffic/pattern.h"
@@ -20,25 +21,28 @@ long most_memory_so_far() {
   return usage.ru_maxrss;
 }
 
-// Reads the whole recording in a process of its own, which remembers its peak alone. Returns by how much the
-// memory it used grew between the first and the last access, in MiB rounded up; fails unless it read
-// `expected` accesses.
+// Reads a recording to its end, or to the first error if `expected` is 0, in a process of its own, which
+// remembers its peak alone. Returns by how much the memory it used grew after the first access, in MiB
+// rounded up; fails unless it read `expected` accesses.
 int growth_while_reading(const std::string& path, std::uint64_t expected) {
   const pid_t child = ::fork();
   REQUIRE(child >= 0);
   if (child == 0) {
-    int result = 255;
+    std::uint64_t count = 0;
+    long at_first = most_memory_so_far();
+    bool failed = false;
     try {
       const auto reader = open_recording(path);
       Access access;
-      std::uint64_t count = reader->next(access) ? 1 : 0;
-      const long at_first = most_memory_so_far();
-      while (reader->next(access)) ++count;
-      const long growth = (most_memory_so_far() - at_first + mebibyte - 1) / mebibyte;
-      if (count == expected) result = static_cast<int>(std::min(growth, 254L));
+      while (reader->next(access)) {
+        if (++count == 1) at_first = most_memory_so_far();
+      }
     } catch (const RecordingError&) {
+      failed = true;
     }
-    ::_exit(result);
+    const long growth = (most_memory_so_far() - at_first + mebibyte - 1) / mebibyte;
+    const bool as_expected = count == expected && failed == (expected == 0);
+    ::_exit(as_expected ? static_cast<int>(std::min(growth, 254L)) : 255);
   }
   int status = 0;
   REQUIRE(::waitpid(child, &status, 0) == child);
@@ -82,6 +86,15 @@ TEST_CASE("a compressed recording of 100 MB of text needs no more memory than it
     write_file(folder.file("r"), file);
     CHECK(growth_while_reading(folder.file("r"), pieces * rows_in_piece) <= allowed_growth);
   }
+}
+
+TEST_CASE("a compressed line of 100 MB is refused without being held in memory", "[traffic]") {
+  TemporaryFolder folder;
+  const std::string megabyte = zstd_compressed(std::string(1'000'000, ' '));
+  std::string file = zstd_compressed(header);
+  for (int i = 0; i < 100; ++i) file += megabyte;
+  write_file(folder.file("r"), file);
+  CHECK(growth_while_reading(folder.file("r"), 0) <= allowed_growth);
 }
 
 TEST_CASE("a binary recording of 40 blocks needs no more memory than its first block", "[traffic]") {

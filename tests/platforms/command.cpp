@@ -1,0 +1,366 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+//
+// The command as a user sees it: exit statuses, messages and results of build/earshot itself.
+#include <catch2/catch.hpp>
+#include <sys/wait.h>
+
+#include <array>
+#include <cstdio>
+#include <filesystem>
+#include <fstream>
+#include <nlohmann/json.hpp>
+#include <regex>
+
+namespace {
+
+using Json = nlohmann::json;
+namespace fs = std::filesystem;
+
+struct Outcome {
+  int status;
+  std::string out;  // standard output and error together
+};
+
+// A folder of its own for each test, gone afterwards.
+class Folder {
+ public:
+  Folder() {
+    std::string pattern = (fs::temp_directory_path() / "earshot-test-XXXXXX").string();
+    REQUIRE(mkdtemp(pattern.data()) != nullptr);
+    path_ = pattern;
+  }
+  ~Folder() {
+    std::error_code ignored;
+    fs::remove_all(path_, ignored);
+  }
+  std::string operator/(const std::string& name) const { return (path_ / name).string(); }
+  std::string write(const std::string& name, const std::string& text) const {
+    std::ofstream(path_ / name) << text;
+    return *this / name;
+  }
+  std::size_t files() const {
+    return static_cast<std::size_t>(std::distance(fs::directory_iterator(path_), fs::directory_iterator{}));
+  }
+  // `text` with this folder's name taken out, so that messages can be compared whole.
+  std::string cleaned(std::string text) const {
+    const std::string folder = path_.string() + "/";
+    for (std::size_t at; (at = text.find(folder)) != std::string::npos;) text.erase(at, folder.size());
+    return text;
+  }
+
+ private:
+  fs::path path_;
+};
+
+Outcome earshot(const std::string& arguments) {
+  const std::string command = std::string(EARSHOT_COMMAND) + " " + arguments + " 2>&1";
+  std::FILE* pipe = popen(command.c_str(), "r");
+  REQUIRE(pipe != nullptr);
+  Outcome outcome;
+  std::array<char, 4096> buffer;
+  for (std::size_t n; (n = fread(buffer.data(), 1, buffer.size(), pipe)) > 0;) outcome.out.append(buffer.data(), n);
+  const int status = pclose(pipe);
+  outcome.status = WIFEXITED(status) ? WEXITSTATUS(status) : -1;
+  return outcome;
+}
+
+std::string file_text(const std::string& path) {
+  std::ifstream file(path, std::ios::binary);
+  return {std::istreambuf_iterator<char>(file), {}};
+}
+
+constexpr const char* two_writers =
+    "initiator,op,address,size,value\n"
+    "0,write,0x40,4,1\n"
+    "1,write,0x40,4,2\n"
+    "0,read,0x40,4,2\n"
+    "1,write,0x40,4,3\n"
+    "0,replace,0x40,4\n"
+    "1,replace,0x40,4\n"
+    "0,read,0x40,4,3\n";
+
+const std::string small = "--caches.count=2 --caches.size=1KiB ";
+
+}  // namespace
+
+TEST_CASE("a small recording gives exact counts under the dirty owner and its baseline", "[command]") {
+  const Folder folder;
+  const std::string recording = folder.write("two.csv", two_writers);
+  const Outcome outcome =
+      earshot("simulate " + small + "--workload.recording=" + recording + " --json " + (folder / "out.json"));
+  INFO(outcome.out);
+  REQUIRE(outcome.status == 0);
+  const Json json = Json::parse(file_text(folder / "out.json"));
+  CHECK(json["schema"] == 1);
+  CHECK(json["accesses"] == Json::parse(R"({"reads":2,"writes":3,"hits":2,"misses":3,"uncached":0})"));
+  CHECK(json["bus"]["transactions"]["read"] == 3);
+  CHECK(json["bus"]["transactions"]["update"] == 3);
+  CHECK(json["bus"]["transactions"]["write-back"] == 1);
+  CHECK(json["supplies"] == Json::parse(R"({"owner":1,"sharer":0,"memory":2})"));
+  CHECK(json["memory"]["block-writes"] == 1);
+  CHECK(json["memory"]["block-writes-at-end"] == 0);
+  CHECK(json["memory"]["word-writes"] == 0);
+  CHECK(json["baseline"]["memory"]["word-writes"] == 3);
+  CHECK(json["baseline"]["memory"]["block-writes"] == 0);
+  CHECK(json["checks"]["accesses-checked"] == 5);
+  CHECK(json["checks"]["reads-compared-with-recording"] == 2);
+  CHECK(outcome.out.find("under write-through-update") != std::string::npos);
+  CHECK(outcome.out.find("3.00 times fewer writes.") != std::string::npos);
+}
+
+TEST_CASE("the document has every field of the contract", "[command]") {
+  const Folder folder;
+  const std::string recording = folder.write("two.csv", two_writers);
+  REQUIRE(earshot("simulate " + small + "--quiet --workload.recording=" + recording + " --json " + (folder / "o.json"))
+              .status == 0);
+  const Json json = Json::parse(file_text(folder / "o.json"));
+  for (const char* pointer :
+       {"/schema", "/configuration/timing", "/configuration/caches/count", "/configuration/caches/protocol",
+        "/configuration/caches/size", "/configuration/caches/ways", "/configuration/caches/line",
+        "/configuration/caches/replacement", "/configuration/bus/kind", "/configuration/bus/arbitration",
+        "/configuration/bus/clock", "/configuration/bus/width", "/configuration/memory/kind",
+        "/configuration/workload/recording", "/configuration/workload/order", "/accesses/reads", "/accesses/writes",
+        "/accesses/hits", "/accesses/misses", "/bus/transactions/read", "/bus/transactions/read-exclusive",
+        "/bus/transactions/upgrade", "/bus/transactions/update", "/bus/transactions/write-through",
+        "/bus/transactions/write-back", "/bus/transactions/io-read", "/bus/transactions/io-write", "/bus/utilisation",
+        "/bus/wait-ns", "/supplies/owner", "/supplies/sharer", "/supplies/memory", "/memory/block-reads",
+        "/memory/block-writes", "/memory/word-writes", "/latency/mean-ns", "/latency/p50-ns", "/latency/p95-ns",
+        "/latency/p99-ns", "/latency/max-ns", "/latency/parts-ns/hit", "/latency/parts-ns/wait-for-grant",
+        "/latency/parts-ns/snoop", "/latency/parts-ns/owner-supply", "/latency/parts-ns/memory-queue",
+        "/latency/parts-ns/memory-array", "/latency/parts-ns/transfer", "/initiators/1/accesses/hits",
+        "/initiators/1/latency/p99-ns", "/caution"}) {
+    INFO(pointer);
+    CHECK(json.contains(Json::json_pointer(pointer)));
+  }
+  double parts = 0;
+  for (const auto& [name, part] : json["latency"]["parts-ns"].items()) parts += part.get<double>();
+  CHECK(parts == Approx(json["latency"]["mean-ns"].get<double>()));
+}
+
+TEST_CASE("the same input gives the same bytes, in both orders", "[command]") {
+  const Folder folder;
+  for (const std::string order : {"recorded", "concurrent"}) {
+    const std::string run = "simulate --workload.pattern=uniform --workload.accesses=3000 --workload.order=" + order +
+                            " --caches.size=1KiB --caches.replacement=random --json ";
+    const Outcome first = earshot(run + (folder / "a.json"));
+    const Outcome second = earshot(run + (folder / "b.json"));
+    INFO(first.out);
+    CHECK(first.status == 0);
+    CHECK(first.out == second.out);
+    CHECK(file_text(folder / "a.json") == file_text(folder / "b.json"));
+    CHECK(file_text(folder / "a.json").size() > 1000);
+  }
+}
+
+TEST_CASE("the text answer fits 80 columns, decides first and ends with the caution", "[command]") {
+  const Outcome outcome = earshot("simulate --workload.pattern=migratory --workload.accesses=2000");
+  REQUIRE(outcome.status == 0);
+  std::istringstream lines(outcome.out);
+  for (std::string line; std::getline(lines, line);) {
+    INFO(line);
+    CHECK(line.size() <= 80);
+  }
+  const std::size_t memory = outcome.out.find("Memory is written"), saturation = outcome.out.find("First to saturate"),
+                    latency = outcome.out.find("An access takes"), caution = outcome.out.find("Cycle-approximate");
+  CHECK(memory < saturation);
+  CHECK(saturation < latency);
+  CHECK(latency < caution);
+  CHECK(caution != std::string::npos);
+}
+
+TEST_CASE("every protocol plays every pattern in both orders without a violation", "[command]") {
+  for (const std::string protocol : {"write-through-update", "dirty-owner-update", "dragon", "firefly",
+                                     "competitive-update", "msi", "mesi", "moesi", "berkeley", "write-once"})
+    for (const std::string pattern :
+         {"private", "read-shared", "producer-consumer", "migratory", "false-sharing", "uniform"})
+      for (const std::string order : {"recorded", "concurrent"}) {
+        const Outcome outcome =
+            earshot("simulate --monitor=on --baseline=off --quiet --caches.size=512 --caches.ways=2 "
+                    "--workload.accesses=1500 --caches.protocol=" +
+                    protocol + " --workload.pattern=" + pattern + " --workload.order=" + order);
+        INFO(protocol << " " << pattern << " " << order << "\n" << outcome.out);
+        CHECK(outcome.status == 0);
+      }
+}
+
+TEST_CASE("dirty lines are reported when they are not flushed", "[command]") {
+  const Folder folder;
+  const std::string recording = folder.write("w.csv", "initiator,op,address,size,value\n0,write,0x40,4,1\n");
+  const Outcome kept = earshot("simulate --flush-at-end=off --workload.recording=" + recording);
+  CHECK(kept.status == 0);
+  CHECK(kept.out.find("1 lines are still dirty in caches") != std::string::npos);
+  const Outcome flushed = earshot("simulate --workload.recording=" + recording);
+  CHECK(flushed.out.find("1 dirty lines were written") != std::string::npos);
+}
+
+TEST_CASE("a protocol table of the user's own is proved and runs", "[command]") {
+  const Folder folder;
+  const std::string table = folder.write("mine.table", file_text(EARSHOT_SOURCE "/models/protocol/tables/mesi.table"));
+  const Outcome outcome = earshot("simulate --workload.pattern=uniform --workload.accesses=500 --caches.protocol=" + table);
+  INFO(outcome.out);
+  CHECK(outcome.status == 0);
+}
+
+TEST_CASE("a table that fails its proof is not run: its counterexample is shown", "[command]") {
+  const Folder folder;
+  std::string text = file_text(EARSHOT_SOURCE "/models/protocol/tables/msi.table");
+  // A modified copy forgets to supply: memory's stale line is read.
+  text = std::regex_replace(text, std::regex("supply"), "      ");
+  text = std::regex_replace(text, std::regex(",? *write-memory"), "");
+  const std::string table = folder.write("broken.table", text);
+  const Outcome outcome = earshot("simulate --workload.pattern=uniform --caches.protocol=" + table);
+  INFO(outcome.out);
+  CHECK(outcome.status == 2);
+  CHECK(outcome.out.find("the protocol is not sound, so it is not run") != std::string::npos);
+  CHECK(earshot("prove " + table).status == 1);
+}
+
+TEST_CASE("prove says how many states it reached", "[command]") {
+  const Outcome outcome = earshot("prove dragon --caches 2");
+  INFO(outcome.out);
+  CHECK(outcome.status == 0);
+  CHECK(outcome.out.find("dragon") != std::string::npos);
+}
+
+TEST_CASE("convert keeps a recording's accesses", "[command]") {
+  const Folder folder;
+  const std::string text = folder.write("a.csv", two_writers);
+  CHECK(earshot("convert " + text + " " + (folder / "b.esr.zst")).status == 0);
+  const Outcome back = earshot("convert " + (folder / "b.esr.zst") + " " + (folder / "c.csv"));
+  CHECK(folder.cleaned(back.out) == "7 accesses: c.csv\n");
+  CHECK(earshot("simulate --quiet --workload.recording=" + (folder / "b.esr.zst")).status == 0);
+}
+
+TEST_CASE("version and help are answered with status 0", "[command]") {
+  CHECK(earshot("--version").out == "earshot 0.1.0\n");
+  CHECK(earshot("--help").status == 0);
+  for (const std::string verb : {"simulate", "prove", "record", "convert"}) CHECK(earshot(verb + " --help").status == 0);
+  CHECK(earshot("simulate --help").out.find("caches.protocol") != std::string::npos);
+}
+
+// ---- Unusable input: status 2, a message that says where, what, and what was expected; nothing left behind.
+
+namespace {
+
+void refuses(const Folder& folder, const std::string& arguments, const std::string& message) {
+  const std::size_t files = folder.files();
+  const Outcome outcome = earshot(arguments);
+  INFO(arguments);
+  CHECK(outcome.status == 2);
+  CHECK(folder.cleaned(outcome.out) == "earshot: " + message + "\n");
+  CHECK(folder.files() == files);
+}
+
+}  // namespace
+
+TEST_CASE("unusable configurations are refused with file, line and key", "[command]") {
+  const Folder folder;
+  const std::string playing = "[workload]\npattern = uniform\n";
+  const auto refuse = [&](const std::string& ini, const std::string& message) {
+    refuses(folder, "simulate " + folder.write("p.ini", ini), message);
+  };
+  refuse("[caches]\nsise = 4KiB\n" + playing, "p.ini:2: unknown key 'caches.sise'; did you mean 'caches.size'?");
+  refuse("[caches]\nsize = 4KiB\nsize = 8KiB\n" + playing,
+         "p.ini:3: key 'caches.size' is given twice, first at p.ini:2; keep one");
+  refuse("# a comment\n[bus]\nclock = 5\n" + playing,
+         "p.ini:3: bus.clock = '5'; expected a time above 0, of at most 1000 ms in whole picoseconds, with a unit: 5ns, "
+         "1.25ns, 800ps, 1us, 3 bus-cycles");
+  refuse("[bus]\nclock = 5 MHz\n" + playing,
+         "p.ini:2: bus.clock = '5 MHz'; expected a time above 0, of at most 1000 ms in whole picoseconds, with a unit: "
+         "5ns, 1.25ns, 800ps, 1us, 3 bus-cycles");
+  refuse("[caches]\nline = 48\n" + playing,
+         "default: caches.line: 48 bytes; expected a power of two from 8 to 256");
+  refuse("[caches]\nsize = 10KB\n" + playing,
+         "p.ini:2: caches.size = '10KB'; expected a size in bytes: 16384, 16KiB, 1MiB");
+  refuse("[caches]\nsize = 16KiB\nways = 3\n" + playing,
+         "p.ini:2: caches.size: 16384 bytes in 3 ways of 32-byte lines does not divide: the size must be a multiple of 96");
+  refuse("[caches]\nreplacement = oldest\n" + playing,
+         "p.ini:2: caches.replacement = 'oldest'; expected lru, tree-plru, fifo or random");
+  refuse("[caches]\ncount = 65\n" + playing, "p.ini:2: caches.count = '65'; expected a whole number from 1 to 64");
+  refuse("[bus]\nwindows = ram 0x0..0xffff cached, rom 0x8000..0x1ffff uncached\n" + playing,
+         "p.ini:2: bus.windows: window 'rom' [0x8000, 0x1ffff] overlaps window 'ram' [0x0, 0xffff]: windows must be "
+         "disjoint");
+  refuse("[caches]\ncount = none\nsize = big\n" + playing,
+         "p.ini:2: caches.count = 'none'; expected a whole number from 1 to 64\n"
+         "p.ini:3: caches.size = 'big'; expected a size in bytes: 16384, 16KiB, 1MiB");
+  refuse("[caches\ncount = 4\n", "p.ini:1: '[caches' is neither a [section] nor key = value");
+  refuse("[caches]\ncount = 4\n",
+         "configuration: nothing to play; give workload.recording or workload.pattern");
+  refuse("[workload]\npattern = zigzag\n",
+         "p.ini:2: workload.pattern: kind 'zigzag', expected private, read-shared, producer-consumer, migratory, "
+         "false-sharing or uniform");
+}
+
+TEST_CASE("unusable command lines are refused", "[command]") {
+  const Folder folder;
+  refuses(folder, "simulat x.ini", "'simulat' is no verb; did you mean 'simulate'?");
+  refuses(folder, "simulate " + (folder / "no.ini"), "no.ini: cannot be read; expected a configuration file");
+  refuses(folder, "simulate", "simulate: no configuration; expected the path of an INI file");
+  refuses(folder, "simulate --workload.pattern=uniform --caches.way=4",
+          "command line: unknown key 'caches.way'; did you mean 'caches.ways'?");
+  refuses(folder, "simulate --workload.pattern=uniform --caches.ways=4 --caches.ways=2",
+          "command line: key 'caches.ways' is given twice, first at command line; keep one");
+  refuses(folder, "simulate --workload.pattern=uniform --caches.protocol=mersi",
+          "'mersi' is neither a built-in protocol nor the path of a table file; did you mean 'mesi'?");
+  refuses(folder, "simulate --workload.pattern=uniform --caches.protocol=mesi --caches.update-limit=3",
+          "caches.update-limit = 3: protocol 'mesi' does not count updates; leave the key out");
+  refuses(folder, "simulate --workload.pattern=uniform --json " + (folder / "no/such/folder.json"),
+          "no/such/folder.json: cannot be written: No such file or directory");
+  refuses(folder, "simulate --workload.pattern=uniform --json", "command line: --json needs the name of a file");
+  refuses(folder, "prove dragon --caches 9", "prove: --caches '9'; expected a whole number from 1 to 8");
+  refuses(folder, "convert " + (folder / "a.csv"), "convert: expected FROM TO, two paths of recordings");
+  refuses(folder, "record --into " + (folder / "a.csv"), "record: no program is named; expected -- PROGRAM ARGS");
+}
+
+TEST_CASE("unusable recordings are refused and name the place", "[command]") {
+  const Folder folder;
+  const auto refuse = [&](const std::string& name, const std::string& content, const std::string& start) {
+    const Outcome outcome = earshot("simulate --workload.recording=" + folder.write(name, content));
+    INFO(outcome.out);
+    CHECK(outcome.status == 2);
+    CHECK(folder.cleaned(outcome.out).rfind("earshot: " + start, 0) == 0);
+  };
+  const std::string header = "initiator,op,address,size,value\n";
+  refuse("a.csv", header + "0,read,0x40,4\n0,raed,0x40,4\n", "a.csv:3: ");
+  refuse("a.csv", header + "0,read,0x40,0\n", "a.csv:2: ");
+  refuse("a.csv", header + "0,read,0x40,4097\n", "a.csv:2: ");
+  refuse("a.csv", header + "64,read,0x40,4\n", "a.csv:2: ");
+  refuse("a.csv", header + "0,read,0x40\n", "a.csv:2: ");
+  refuse("a.csv", header + "7,read,0x40,4\n",
+         "a.csv: access 1 (initiator 7, read of 4 bytes at 0x40) is for initiator 7, but there are only 4 caches: set "
+         "caches.count to 8 or more");
+  refuse("a.csv.gz", std::string("\x1f\x8b\x08", 3) + std::string(20, '\x7f'), "a.csv.gz: ");
+  refuse("a.esr", "", "a.esr");
+  const Outcome missing = earshot("simulate --workload.recording=" + (folder / "none.csv"));
+  CHECK(missing.status == 2);
+  CHECK(folder.cleaned(missing.out).find("none.csv") != std::string::npos);
+  // Cut a good binary file short.
+  const std::string good = folder / "good.esr";
+  REQUIRE(earshot("convert " + folder.write("t.csv", two_writers) + " " + good).status == 0);
+  const std::string bytes = file_text(good);
+  refuse("cut.esr", bytes.substr(0, bytes.size() - 3), "cut.esr: ");
+}
+
+TEST_CASE("an access outside every window is unusable input, named", "[command]") {
+  const Folder folder;
+  const std::string recording = folder.write("r.csv", "initiator,op,address,size\n0,read,0x20000,4\n");
+  refuses(folder, "simulate --baseline=off \"--bus.windows=ram 0x0..0xffff cached\" --workload.recording=" + recording,
+          "r.csv: access 1 of its initiator (initiator 0, read of 4 bytes at 0x20000) was answered with "
+          "TLM_ADDRESS_ERROR_RESPONSE");
+}
+
+TEST_CASE("a recording whose values contradict its order is a finding", "[command]") {
+  const Folder folder;
+  const std::string recording = folder.write(
+      "r.csv", "initiator,op,address,size,value\n0,write,0x40,4,1\n1,read,0x40,4,2\n");
+  const Outcome outcome = earshot("simulate --workload.recording=" + recording);
+  CHECK(outcome.status == 1);
+  CHECK(outcome.out.find("1 of 1 reads returned another value than the recording has.") != std::string::npos);
+  CHECK(outcome.out.find("the recording has value 0x2, the platform returned 0x1") != std::string::npos);
+  const Outcome approximate = earshot(
+      "simulate --workload.recording=" +
+      folder.write("f.csv", "# order: approximate\ninitiator,op,address,size,value\n0,write,0x40,4,1\n1,read,0x40,4,2\n"));
+  INFO(approximate.out);
+  CHECK(approximate.status == 0);
+}
