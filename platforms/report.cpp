@@ -134,11 +134,11 @@ std::string latency_table(const Json& results) {
 
 std::string bus_table(const Json& results) {
   const Json& bus = results.at("bus");
-  std::string out = "  Bus transaction        count   mean ns   waiting   address cycles   data cycles\n";
+  std::string out = "  Bus transaction       count    mean ns    waiting  address cycles  data cycles\n";
   for (const auto& [kind, number] : bus.at("transactions").items()) {
     const Json& cost = bus.at("costs").at(kind);
     if (number.get<std::uint64_t>() == 0) continue;
-    out += format("    %-16s %11s %9.2f %9.2f %16s %13s\n", kind.c_str(),
+    out += format("    %-14s %10s %10.2f %10.2f %15s %12s\n", kind.c_str(),
                   with_commas(number.get<std::uint64_t>()).c_str(), real(cost, "mean-ns"), real(cost, "wait-ns"),
                   counted(cost, "address-cycles").c_str(), counted(cost, "data-cycles").c_str());
   }
@@ -146,11 +146,11 @@ std::string bus_table(const Json& results) {
 }
 
 std::string initiator_table(const Json& results) {
-  std::string out = "  Initiator        reads      writes    hits %     mean ns      p99 ns      max ns\n";
+  std::string out = "  Initiator       reads      writes    hits %    mean ns     p99 ns     max ns\n";
   for (const Json& one : results.at("initiators")) {
     const Json& accesses = one.at("accesses");
     const double all = static_cast<double>(count(accesses, "reads") + count(accesses, "writes"));
-    out += format("    %-7llu %11s %11s %9.2f %11.3f %11.1f %11.1f\n",
+    out += format("    %-7llu %11s %11s %9.2f %10.3f %10.1f %10.1f\n",
                   static_cast<unsigned long long>(count(one, "initiator")), counted(accesses, "reads").c_str(),
                   counted(accesses, "writes").c_str(),
                   all > 0 ? 100 * static_cast<double>(count(accesses, "hits")) / all : 0.0,

@@ -157,8 +157,9 @@ void check_together(const Settings& settings, Collector& collector) {
     const auto found = collector.given.find(key);
     return (found == collector.given.end() ? std::string("default") : found->second.where) + ": ";
   };
-  for (const std::string& problem : settings.geometry.problems())
-    collector.problem(where("caches.size") + "caches." + problem);
+  const std::vector<std::string> misshapen = settings.geometry.problems();
+  for (const std::string& problem : misshapen)  // each begins with the key's name
+    collector.problem(where(("caches." + problem.substr(0, problem.find(':'))).c_str()) + "caches." + problem);
   for (const std::string& problem : AddressMap(settings.windows).problems(settings.geometry.line_bytes))
     collector.problem(where("bus.windows") + "bus.windows: " + problem);
   if (settings.recording.empty() && !settings.uses_pattern)
@@ -166,7 +167,7 @@ void check_together(const Settings& settings, Collector& collector) {
   if (!settings.recording.empty() && settings.uses_pattern)
     collector.problem(where("workload.pattern") +
                       "workload.pattern: a recording is given too; keep one of workload.recording, workload.pattern");
-  if (!settings.uses_pattern) return;
+  if (!settings.uses_pattern || !misshapen.empty()) return;
   try {
     make_pattern(settings.pattern);
   } catch (const PatternError& error) {

@@ -71,6 +71,8 @@ Json run(const Settings& settings, bool progress) {
   hooks.failed = [] { sc_core::sc_stop(); };
 
   tlm::tlm_global_quantum::instance().set(from_ps(settings.quantum));
+  sc_core::sc_report_handler::set_actions("/OSCI/SystemC", sc_core::SC_INFO, sc_core::SC_DO_NOTHING);
+  sc_core::sc_set_stop_mode(sc_core::SC_STOP_IMMEDIATE);
   Platform platform(settings, table, hooks);
   sc_core::sc_start();
   return collect_results(settings, *table, platform);
