@@ -2,16 +2,15 @@
 // SPDX-License-Identifier: Apache-2.0
 //
 // The demonstration program: the listening side of a sonar buoy, in fixed point. Four threads pass blocks
-// through rings, one to the next, and all keep a shared status block up to date:
+// through rings, one to the next, and all keep a shared status up to date:
 //
 //   capture -> filter bank -> detector -> logger (the main thread)
 //
 // Four hydrophones hear noise, the tone of a distant ship, and the echoes of a ping. The filter bank points
-// two beams and splits each into eight bands; the detector compares the bands with their background and looks
-// for the ping in the envelope; the logger packs what was found into a log in memory. The gain goes back from
-// detector to capture. The sea is the same every time, and no block is ever dropped, so the log is, too.
+// two beams and splits each into eight bands; the detector compares each band with its background and looks
+// for the ping; the logger packs what was found into packets in memory. The sea is the same every time, and
+// no block is ever dropped, so the log is, too.
 #include <algorithm>
-#include <array>
 #include <atomic>
 #include <cstdint>
 #include <cstdio>
@@ -26,48 +25,39 @@ constexpr int hydrophones = 4;
 constexpr int frames = 64;  // samples of each hydrophone in a block
 constexpr int beams = 2;
 constexpr int bands = 8;
-constexpr int envelope_step = 4;
-constexpr int longest_delay = 8;
-constexpr int background_blocks = 16;
-constexpr int track_count = 16;
+constexpr int longest_delay = 8;     // of a hydrophone in a beam, in frames
+constexpr int background_size = 64;  // blocks before, of a band
+constexpr int background_step = 4;   // only every so many are looked at
+constexpr int ping_size = 24;        // frames
+constexpr int log_size = 8192;
 
-struct SampleBlock {
-  std::int32_t number;
+struct Sound {  // what was heard
   std::int16_t samples[hydrophones][frames];
 };
-
-struct BandBlock {
-  std::int32_t number;
+struct Spectrum {  // what it consists of
   std::int32_t energy[beams][bands];
-  std::int16_t envelope[beams][frames / envelope_step];
+  std::int16_t beam[beams][frames];
 };
-
-struct Report {
-  std::int32_t number;
-  std::int32_t loudest_match;
-  std::uint16_t contacts;  // a bit for each beam and band
+struct Report {  // what that means
+  std::int32_t ping_match;
   std::uint8_t level[beams][bands];
+  bool contact[beams][bands];
 };
 
-// One producer, one consumer; both look at both counters.
+// One thread fills the slots, one empties them, both watch both counters.
 template <typename T, unsigned size>
 class Ring {
  public:
   T& slot_to_fill() {
-    while (filled_.load(std::memory_order_relaxed) - emptied_.load(std::memory_order_acquire) == size) {
-      std::this_thread::yield();
-    }
-    return slots_[filled_.load(std::memory_order_relaxed) % size];
+    while (filled_.load() - emptied_.load() == size) std::this_thread::yield();
+    return slots_[filled_.load() % size];
   }
-  void pass_on() { filled_.fetch_add(1, std::memory_order_release); }
-
+  void pass_on() { ++filled_; }
   const T& slot_to_empty() {
-    while (filled_.load(std::memory_order_acquire) == emptied_.load(std::memory_order_relaxed)) {
-      std::this_thread::yield();
-    }
-    return slots_[emptied_.load(std::memory_order_relaxed) % size];
+    while (filled_.load() == emptied_.load()) std::this_thread::yield();
+    return slots_[emptied_.load() % size];
   }
-  void give_back() { emptied_.fetch_add(1, std::memory_order_release); }
+  void give_back() { ++emptied_; }
 
  private:
   std::atomic<std::uint32_t> filled_{0};
@@ -75,309 +65,186 @@ class Ring {
   T slots_[size];
 };
 
-enum Stage { capturing, filtering, detecting, logging, stages };
-
-// What the buoy would send when asked how it is. Every thread writes to it, all on one or two lines.
+// What the buoy would send when asked how it is. Every thread writes to it, many times a block.
 struct Status {
-  std::atomic<std::int32_t> blocks[stages];
-  std::atomic<std::int32_t> heartbeat;
-  std::atomic<std::int32_t> gain_shift;  // set by the detector, used by capture
-  std::atomic<std::int32_t> loudest;
-  std::atomic<std::int32_t> contacts;
-  std::atomic<std::int32_t> log_bytes;
-
-  void finished_block(Stage stage) {
-    blocks[stage].fetch_add(1, std::memory_order_relaxed);
-    heartbeat.fetch_add(1, std::memory_order_relaxed);
-  }
+  std::atomic<std::int32_t> captured, filtered, detected, logged;  // blocks
+  std::atomic<std::int32_t> heartbeat, loudest, contacts, log_bytes;
 };
 
-// A contact that lasts. Kept by the detector, read by the logger, who may see one change: it shows, no more.
-struct Track {
-  std::atomic<std::int32_t> hits;
-  std::atomic<std::int32_t> last_block;
-  std::atomic<std::int32_t> level;
-};
-
-Ring<SampleBlock, 6> captured;
-Ring<BandBlock, 8> filtered;
-Ring<Report, 16> reports;
 alignas(64) Status status;
-alignas(64) std::array<Track, track_count> tracks;
+alignas(64) Ring<Sound, 24> sounds;
+alignas(64) Ring<Spectrum, 16> spectra;
+alignas(64) Ring<Report, 32> reports;
 
-// sine(i) = 4095 sin(2 pi i / 256), by Bhaskara's approximation: the same integers on every machine.
+// 4095 sin(2 pi i / 256), by Bhaskara's approximation: the same integers on every machine.
 struct SineTable {
   std::int16_t value[256];
   SineTable() {
     for (int i = 0; i < 256; ++i) {
-      const int half = i % 128;
-      const int p = half * (128 - half);
+      const int p = i % 128 * (128 - i % 128);
       const int s = 4095 * 16 * p / (5 * 128 * 128 - 4 * p);
       value[i] = static_cast<std::int16_t>(i < 128 ? s : -s);
     }
   }
 };
-const SineTable sine;
+SineTable sine;
 
-// Sound as the hydrophones hear it: frame by frame, each a little later than its neighbour.
 void capture() {
-  static std::uint32_t noise = 2026;
+  std::uint32_t noise = 2026;
   for (int number = 0; number < blocks_to_process; ++number) {
-    SampleBlock& block = captured.slot_to_fill();
-    block.number = number;
+    Sound& sound = sounds.slot_to_fill();
     for (int h = 0; h < hydrophones; ++h) {
-      const int gain_shift = status.gain_shift.load(std::memory_order_relaxed);
       for (int f = 0; f < frames; ++f) {
         const int time = number * frames + f;
         noise = noise * 1664525 + 1013904223;
-        int sound = static_cast<int>(noise >> 29) - 4;
-        sound += sine.value[(time - h) * 24 & 255] >> 6;
+        int level = static_cast<int>(noise >> 29) - 4 + (sine.value[(time - h) * 24 & 255] >> 6);
         const int into_echo = time % 1536 - 900 - 2 * h;
-        if (into_echo >= 0 && into_echo < frames) sound += sine.value[into_echo * 40 & 255] >> 3;
-        block.samples[h][f] = static_cast<std::int16_t>(sound * 8 >> gain_shift);
+        if (into_echo >= 0 && into_echo < ping_size) level += sine.value[into_echo * 40 & 255] >> 3;
+        sound.samples[h][f] = static_cast<std::int16_t>(level * 8);
       }
+      ++status.heartbeat;
     }
-    captured.pass_on();
-    status.finished_block(capturing);
+    sounds.pass_on();
+    ++status.captured;
   }
 }
-
-// A second-order resonator: y = x + a y' - b y''. Coefficients in Q12.
-struct Resonator {
-  std::int32_t a, b;
-  std::int32_t before, long_before;
-};
 
 class FilterBank {
  public:
   FilterBank() {
-    for (int beam = 0; beam < beams; ++beam) {
-      for (int band = 0; band < bands; ++band) {
-        const int cosine = sine.value[(64 + 8 * (band + 1)) & 255];
-        resonators_[beam][band] = {2 * cosine * 15 / 16, 4096 * 225 / 256, 0, 0};
-      }
-    }
+    for (int band = 0; band < bands; ++band)
+      feedback_[band] = sine.value[(64 + 8 * (band + 1)) & 255] * 15 / 8;
   }
 
-  void process(const SampleBlock& in, BandBlock& out) {
+  void process(const Sound& sound, Spectrum& spectrum) {
     for (int h = 0; h < hydrophones; ++h) {
       std::memcpy(&heard_[h][0], &heard_[h][frames], longest_delay * sizeof heard_[h][0]);
-      std::memcpy(&heard_[h][longest_delay], &in.samples[h][0], sizeof in.samples[h]);
+      std::memcpy(&heard_[h][longest_delay], &sound.samples[h][0], sizeof sound.samples[h]);
     }
-    out.number = in.number;
-    for (int beam = 0; beam < beams; ++beam) {
-      point(beam, out.envelope[beam]);
-      for (int band = 0; band < bands; ++band) out.energy[beam][band] = energy_of(resonators_[beam][band]);
+    for (int b = 0; b < beams; ++b) {
+      point(b + 1, spectrum.beam[b]);
+      for (int band = 0; band < bands; ++band) {
+        spectrum.energy[b][band] = filter(feedback_[band], state_[b][band], spectrum.beam[b]);
+      }
+      ++status.heartbeat;
     }
   }
 
  private:
-  // Sums the hydrophones with the delays of this beam's direction.
-  void point(int beam, std::int16_t* envelope) {
-    int level = 0;
+  // The mean of the hydrophones, each `delay` frames later than its neighbour.
+  void point(int delay, std::int16_t* beam) const {
     for (int f = 0; f < frames; ++f) {
       int sum = 0;
       for (int h = 0; h < hydrophones; ++h)
-        sum += heard_[h][f + longest_delay - (hydrophones - 1 - h) * (beam + 1)];
-      sum_[f] = static_cast<std::int16_t>(sum / hydrophones);
-      level += std::abs(sum);
-      if (f % envelope_step == envelope_step - 1) {
-        envelope[f / envelope_step] = static_cast<std::int16_t>(level / (hydrophones * envelope_step));
-        level = 0;
-      }
+        sum += heard_[h][f + longest_delay - (hydrophones - 1 - h) * delay];
+      beam[f] = static_cast<std::int16_t>(sum / hydrophones);
     }
   }
 
-  std::int32_t energy_of(Resonator& r) {
-    std::int32_t before = r.before;
-    std::int32_t long_before = r.long_before;
+  // A second-order resonator, y = x + a y' - (15/16)^2 y'', with a in Q12; returns the energy of its output.
+  static std::int32_t filter(std::int32_t a, std::int32_t (&state)[2], const std::int16_t* beam) {
+    std::int64_t y1 = state[0];
+    std::int64_t y2 = state[1];
     std::int64_t energy = 0;
     for (int f = 0; f < frames; ++f) {
-      const auto now = static_cast<std::int32_t>(
-          sum_[f] + ((std::int64_t{r.a} * before - std::int64_t{r.b} * long_before) >> 12));
-      long_before = before;
-      before = now;
-      energy += std::int64_t{now} * now;
+      const std::int64_t y = beam[f] + ((a * y1 - 3600 * y2) >> 12);
+      y2 = y1;
+      y1 = y;
+      energy += y * y;
     }
-    r.before = before;
-    r.long_before = long_before;
+    state[0] = static_cast<std::int32_t>(y1);
+    state[1] = static_cast<std::int32_t>(y2);
     return static_cast<std::int32_t>(energy >> 10);
   }
 
   std::int16_t heard_[hydrophones][longest_delay + frames] = {};
-  std::int16_t sum_[frames] = {};
-  Resonator resonators_[beams][bands];
+  std::int32_t feedback_[bands];
+  std::int32_t state_[beams][bands][2] = {};
 };
 
 void filter() {
   static FilterBank bank;
   for (int number = 0; number < blocks_to_process; ++number) {
-    const SampleBlock& in = captured.slot_to_empty();
-    BandBlock& out = filtered.slot_to_fill();
-    bank.process(in, out);
-    captured.give_back();
-    filtered.pass_on();
-    status.finished_block(filtering);
+    const Sound& sound = sounds.slot_to_empty();
+    bank.process(sound, spectra.slot_to_fill());
+    sounds.give_back();
+    spectra.pass_on();
+    ++status.filtered;
   }
 }
 
-class Detector {
- public:
-  void process(const BandBlock& in, Report& report) {
-    report.number = in.number;
-    report.contacts = 0;
-    report.loudest_match = 0;
-    for (int beam = 0; beam < beams; ++beam) {
-      report.loudest_match = std::max(report.loudest_match, best_match(in.envelope[beam]));
-      for (int band = 0; band < bands; ++band) {
-        const std::int32_t energy = in.energy[beam][band];
-        report.level[beam][band] = level_of(energy);
-        if (stands_out(energy, beam, band, in.number)) {
-          report.contacts = static_cast<std::uint16_t>(report.contacts | 1 << (beam * bands + band));
-          follow(beam * bands + band, in.number, report.level[beam][band]);
-        }
-      }
-    }
-    status.loudest.store(report.loudest_match, std::memory_order_relaxed);
-    status.gain_shift.store(report.loudest_match > 20000 ? 1 : 0, std::memory_order_relaxed);
-  }
+std::int32_t background[beams][bands][background_size];  // the detector's own
+std::int32_t ping[ping_size];
 
- private:
-  // Twice the logarithm to base 2.
-  static std::uint8_t level_of(std::int32_t energy) {
-    int level = 0;
-    for (; energy > 1; energy >>= 1) level += 2;
-    return static_cast<std::uint8_t>(level);
-  }
-
-  // Whether the energy is far above its background: the mean of the blocks before.
-  bool stands_out(std::int32_t energy, int beam, int band, int number) {
-    std::int32_t* background = background_[beam][band];
-    std::int64_t sum = 0;
-    for (int i = 0; i < background_blocks; ++i) sum += background[i];
-    background[number % background_blocks] = energy;
-    return number >= background_blocks && energy > 4 * sum / background_blocks;
-  }
-
-  // The envelope against that of a ping, at every delay at which it fits.
-  std::int32_t best_match(const std::int16_t* envelope) const {
-    constexpr int points = frames / envelope_step;
-    std::int32_t best = 0;
-    for (int delay = 0; delay + ping_points <= points; ++delay) {
-      std::int32_t match = 0;
-      for (int i = 0; i < ping_points; ++i) match += ping_[i] * envelope[delay + i];
-      if (match > best) best = match;
-    }
-    return best;
-  }
-
-  static void follow(int index, int number, int level) {
-    Track& track = tracks[static_cast<std::size_t>(index)];
-    track.hits.fetch_add(1, std::memory_order_relaxed);
-    track.last_block.store(number, std::memory_order_relaxed);
-    track.level.store(level, std::memory_order_relaxed);
-    status.contacts.fetch_add(1, std::memory_order_relaxed);
-  }
-
-  static constexpr int ping_points = 12;
-  std::int32_t ping_[ping_points] = {2, 6, 10, 13, 15, 16, 16, 15, 13, 10, 6, 2};
-  std::int32_t background_[beams][bands][background_blocks] = {};
-};
+// Whether the energy is far above what the band had before, which it then is part of.
+bool stands_out(std::int32_t energy, std::int32_t (&before)[background_size], int number) {
+  std::int64_t sum = 0;
+  for (int i = number % background_step; i < background_size; i += background_step) sum += before[i];
+  before[number % background_size] = energy;
+  return number >= background_size / 2 && energy > 4 * sum * background_step / background_size;
+}
 
 void detect() {
-  static Detector detector;
+  for (int i = 0; i < ping_size; ++i) ping[i] = sine.value[i * 40 & 255] >> 6;
   for (int number = 0; number < blocks_to_process; ++number) {
-    const BandBlock& in = filtered.slot_to_empty();
+    const Spectrum& spectrum = spectra.slot_to_empty();
     Report& report = reports.slot_to_fill();
-    detector.process(in, report);
-    filtered.give_back();
+    report.ping_match = 0;
+    for (int b = 0; b < beams; ++b) {
+      for (int band = 0; band < bands; ++band) {
+        const std::int32_t energy = spectrum.energy[b][band];
+        int level = 0;
+        while (energy >> level > 1) ++level;
+        report.level[b][band] = static_cast<std::uint8_t>(level);
+        report.contact[b][band] = stands_out(energy, background[b][band], number);
+        if (report.contact[b][band]) ++status.contacts;
+      }
+      for (int start = 0; start + ping_size <= frames; start += 4) {
+        std::int32_t match = 0;
+        for (int i = 0; i < ping_size; ++i) match += ping[i] * spectrum.beam[b][start + i];
+        report.ping_match = std::max(report.ping_match, match);
+      }
+      ++status.heartbeat;
+    }
+    status.loudest = std::max(status.loudest.load(), report.ping_match);
+    spectra.give_back();
     reports.pass_on();
-    status.finished_block(detecting);
+    ++status.detected;
   }
 }
 
-// The log: packets of a length, contents, and a checksum (CRC-16, polynomial 0x1021) in a buffer that wraps
-// around.
-class Log {
- public:
-  Log() {
-    for (int i = 0; i < 256; ++i) {
-      unsigned crc = static_cast<unsigned>(i) << 8;
-      for (int bit = 0; bit < 8; ++bit) crc = (crc & 0x8000) != 0 ? crc << 1 ^ 0x1021 : crc << 1;
-      table_[i] = static_cast<std::uint16_t>(crc);
-    }
-  }
+std::uint8_t log_bytes[log_size];  // the logger's own
+int log_end = 0;
+void put(int byte) {
+  log_bytes[log_end++ % log_size] = static_cast<std::uint8_t>(byte);
+}
 
-  void add(const Report& report) {
-    begin();
-    put(report.number & 0xff);
-    put(report.contacts & 0xff);
-    put(report.contacts >> 8);
-    for (int beam = 0; beam < beams; ++beam) {
-      for (int band = 0; band < bands; ++band) {
-        put(report.level[beam][band] - last_level_[beam][band]);
-        last_level_[beam][band] = report.level[beam][band];
-      }
-    }
-    end();
-    if (report.number % 8 == 7) add_status();
-  }
-
-  unsigned checksum() const { return last_crc_; }
-  int bytes() const { return at_; }
-
- private:
-  void add_status() {
-    begin();
-    for (const auto& blocks : status.blocks) put(blocks.load(std::memory_order_relaxed) & 0xff);
-    for (const Track& track : tracks) {
-      put(track.hits.load(std::memory_order_relaxed));
-      put(track.last_block.load(std::memory_order_relaxed));
-      put(track.level.load(std::memory_order_relaxed));
-    }
-    end();
-  }
-
-  void begin() { start_ = at_++; }
-  void put(int byte) { bytes_[at_++ % size] = static_cast<std::uint8_t>(byte); }
-  void end() {
-    bytes_[start_ % size] = static_cast<std::uint8_t>(at_ - start_);
-    unsigned crc = 0xffff;
-    for (int i = start_; i < at_; ++i)
-      crc = (crc << 8 ^ table_[(crc >> 8 ^ bytes_[i % size]) & 0xff]) & 0xffff;
-    put(static_cast<int>(crc >> 8));
-    put(static_cast<int>(crc & 0xff));
-    last_crc_ = crc;
-    status.log_bytes.store(at_, std::memory_order_relaxed);
-  }
-
-  static constexpr int size = 4096;
-  std::uint8_t bytes_[size] = {};
-  std::uint16_t table_[256];
-  std::uint8_t last_level_[beams][bands] = {};
-  int start_ = 0;
-  int at_ = 0;
-  unsigned last_crc_ = 0;
-};
-
-void log_reports() {
-  static Log log;
+void write_logs() {
   for (int number = 0; number < blocks_to_process; ++number) {
-    log.add(reports.slot_to_empty());
+    const Report& report = reports.slot_to_empty();
+    const int start = log_end;
+    put(number);
+    for (int shift = 0; shift < 32; shift += 8) put(report.ping_match >> shift);
+    for (int b = 0; b < beams; ++b) {
+      for (int band = 0; band < bands; ++band) put(report.level[b][band] << 1 | report.contact[b][band]);
+      ++status.heartbeat;
+    }
     reports.give_back();
-    status.finished_block(logging);
+    for (auto* field : {&status.captured, &status.filtered, &status.detected, &status.contacts})
+      put(*field & 0xff);
+    int checksum = 0;
+    for (int i = start; i < log_end; ++i) checksum = (checksum * 31 + log_bytes[i % log_size]) & 0xff;
+    put(checksum);
+    status.log_bytes = log_end;
+    ++status.logged;
   }
 }
 
 }  // namespace
 
 int main() {
-  std::thread capture_thread(capture);
-  std::thread filter_thread(filter);
-  std::thread detector_thread(detect);
-  log_reports();
-  capture_thread.join();
-  filter_thread.join();
-  detector_thread.join();
-  std::printf("%d blocks, %d contacts\n", status.blocks[logging].load(), status.contacts.load());
+  std::thread stages[] = {std::thread(capture), std::thread(filter), std::thread(detect)};
+  write_logs();
+  for (std::thread& stage : stages) stage.join();
+  std::printf("%d blocks, %d contacts\n", status.logged.load(), status.contacts.load());
 }

@@ -229,10 +229,10 @@ TEST_CASE("prove says how many states it reached", "[command]") {
 TEST_CASE("convert keeps a recording's accesses", "[command]") {
   const Folder folder;
   const std::string text = folder.write("a.csv", two_writers);
-  CHECK(earshot("convert " + text + " " + (folder / "b.esr.zst")).status == 0);
-  const Outcome back = earshot("convert " + (folder / "b.esr.zst") + " " + (folder / "c.csv"));
+  CHECK(earshot("convert " + text + " " + (folder / "b.earshot.zst")).status == 0);
+  const Outcome back = earshot("convert " + (folder / "b.earshot.zst") + " " + (folder / "c.csv"));
   CHECK(folder.cleaned(back.out) == "7 accesses: c.csv\n");
-  CHECK(earshot("simulate --quiet --workload.recording=" + (folder / "b.esr.zst")).status == 0);
+  CHECK(earshot("simulate --quiet --workload.recording=" + (folder / "b.earshot.zst")).status == 0);
 }
 
 TEST_CASE("version and help are answered with status 0", "[command]") {
@@ -335,15 +335,15 @@ TEST_CASE("unusable recordings are refused and name the place", "[command]") {
          "a.csv: access 1 (initiator 7, read of 4 bytes at 0x40) is for initiator 7, but there are only 4 caches: set "
          "caches.count to 8 or more");
   refuse("a.csv.gz", std::string("\x1f\x8b\x08", 3) + std::string(20, '\x7f'), "a.csv.gz: ");
-  refuse("a.esr", "", "a.esr");
+  refuse("a.earshot", "", "a.earshot");
   const Outcome missing = earshot("simulate --workload.recording=" + (folder / "none.csv"));
   CHECK(missing.status == 2);
   CHECK(folder.cleaned(missing.out).find("none.csv") != std::string::npos);
   // Cut a good binary file short.
-  const std::string good = folder / "good.esr";
+  const std::string good = folder / "good.earshot";
   REQUIRE(earshot("convert " + folder.write("t.csv", two_writers) + " " + good).status == 0);
   const std::string bytes = file_text(good);
-  refuse("cut.esr", bytes.substr(0, bytes.size() - 3), "cut.esr: ");
+  refuse("cut.earshot", bytes.substr(0, bytes.size() - 3), "cut.earshot: ");
 }
 
 TEST_CASE("an access outside every window is unusable input, named", "[command]") {

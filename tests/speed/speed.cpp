@@ -167,8 +167,8 @@ double decode_seconds(const std::string& path, std::uint64_t& accesses) {
 
 // The demo recording in both orders against only decoding it. Before anything is elaborated: children simulate.
 void measure_replay() {
-  const std::string path = std::string("/tmp/earshot-speed-") + std::to_string(getpid()) + ".esr";
-  convert_recording(EARSHOT_SOURCE "/configs/recordings/sonar-buoy.esr.zst", path);
+  const std::string path = std::string("/tmp/earshot-speed-") + std::to_string(getpid()) + ".earshot";
+  convert_recording(EARSHOT_SOURCE "/configs/recordings/sonar-buoy.earshot.zst", path);
   std::uint64_t accesses = 0;
   double decode = 1e9, recorded = 1e9, concurrent = 1e9;
   for (int i = 0; i < 5; ++i) {
