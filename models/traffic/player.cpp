@@ -26,6 +26,28 @@ void invent(std::uint32_t initiator, std::uint64_t number, std::uint8_t* bytes, 
   }
 }
 
+// Calls `step(delay)` with the local time until it returns false, synchronising when the quantum is used up and at
+// the end. Returns what stopped it early, or null; kernel reports are not for us and pass through.
+template <typename Step>
+std::exception_ptr run_decoupled(const PlayerHooks& hooks, Step step) {
+  tlm_utils::tlm_quantumkeeper keeper;
+  keeper.reset();
+  std::exception_ptr error;
+  try {
+    for (sc_core::sc_time delay; step(delay); delay = keeper.get_local_time()) {
+      keeper.set(delay);
+      if (keeper.need_sync()) keeper.sync();
+    }
+  } catch (const sc_core::sc_report&) {
+    throw;
+  } catch (const std::exception&) {
+    error = std::current_exception();
+    if (hooks.failed) hooks.failed();
+  }
+  keeper.sync();
+  return error;
+}
+
 }  // namespace
 
 Player::Player(sc_core::sc_module_name name, std::uint32_t initiator, sc_core::sc_time think, PlayerHooks hooks)
@@ -35,23 +57,12 @@ Player::Player(sc_core::sc_module_name name, std::uint32_t initiator, sc_core::s
 
 void Player::play() {
   if (source_ == nullptr) return;
-  tlm_utils::tlm_quantumkeeper keeper;
-  keeper.reset();
-  try {
-    Access access;
-    while (source_->next(access)) {
-      sc_core::sc_time delay = keeper.get_local_time();
-      perform(access, delay);
-      keeper.set(delay);
-      if (keeper.need_sync()) keeper.sync();
-    }
-  } catch (const sc_core::sc_report&) {
-    throw;
-  } catch (const std::exception&) {
-    error_ = std::current_exception();
-    if (hooks_.failed) hooks_.failed();
-  }
-  keeper.sync();
+  Access access;
+  error_ = run_decoupled(hooks_, [&](sc_core::sc_time& delay) {
+    if (!source_->next(access)) return false;
+    perform(access, delay);
+    return true;
+  });
   finished_at_ = sc_core::sc_time_stamp();
 }
 
@@ -106,32 +117,25 @@ RecordedOrder::RecordedOrder(sc_core::sc_module_name name, std::vector<Player*> 
 }
 
 void RecordedOrder::play() {
-  tlm_utils::tlm_quantumkeeper keeper;
-  keeper.reset();
-  try {
-    Access access;
-    while (source_->next(access)) {
-      ++played_;
-      if (access.initiator >= players_.size())
-        throw PlayError("access " + std::to_string(played_) + " (" + text_of(access) + ") is for initiator " +
-                        std::to_string(access.initiator) + ", but there are only " + std::to_string(players_.size()) +
-                        " caches: set caches.count to " + std::to_string(access.initiator + 1) + " or more");
-      Player& player = *players_[access.initiator];
-      if (check_values_) learn(access);
-      sc_core::sc_time delay = keeper.get_local_time();
-      player.perform(access, delay);
-      if (check_values_) compare(access, player);
-      keeper.set(delay);
-      if (keeper.need_sync()) keeper.sync();
-    }
-  } catch (const sc_core::sc_report&) {
-    throw;
-  } catch (const std::exception&) {
-    error_ = std::current_exception();
-    if (hooks_.failed) hooks_.failed();
-  }
-  keeper.sync();
+  Access access;
+  error_ = run_decoupled(hooks_, [&](sc_core::sc_time& delay) {
+    if (!source_->next(access)) return false;
+    step(access, delay);
+    return true;
+  });
   finished_at_ = sc_core::sc_time_stamp();
+}
+
+void RecordedOrder::step(const Access& access, sc_core::sc_time& delay) {
+  ++played_;
+  if (access.initiator >= players_.size())
+    throw PlayError("access " + std::to_string(played_) + " (" + text_of(access) + ") is for initiator " +
+                    std::to_string(access.initiator) + ", but there are only " + std::to_string(players_.size()) +
+                    " caches: set caches.count to " + std::to_string(access.initiator + 1) + " or more");
+  Player& player = *players_[access.initiator];
+  if (check_values_) learn(access);
+  player.perform(access, delay);
+  if (check_values_) compare(access, player);
 }
 
 // Marks the access's bytes as touched. The bytes of a read that nobody touched before held their recorded value

@@ -92,6 +92,7 @@ class RecordedOrder : public sc_core::sc_module {
 
  private:
   void play();
+  void step(const Access& access, sc_core::sc_time& delay);
   void learn(const Access& access);
   void compare(const Access& access, const Player& player);
 
