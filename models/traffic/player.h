@@ -10,6 +10,7 @@
 // (tlm_utils::tlm_quantumkeeper). With a quantum of 0 they synchronise after every access.
 #pragma once
 
+#include <array>
 #include <cstdint>
 #include <exception>
 #include <functional>
@@ -100,9 +101,14 @@ class RecordedOrder : public sc_core::sc_module {
   std::unique_ptr<AccessSource> source_;
   bool check_values_;
   PlayerHooks hooks_;
-  std::unordered_map<std::uint64_t, std::vector<bool>> touched_;  // bytes accessed so far, by page
-  std::uint64_t page_number_ = ~std::uint64_t{0};                 // the page looked up last
-  std::vector<bool>* page_ = nullptr;
+  // One bit for each byte accessed so far, 64 bytes a word, 64 words a page.
+  using Touched = std::array<std::uint64_t, 64>;
+  std::unordered_map<std::uint64_t, Touched> touched_;
+  struct Recent {
+    std::uint64_t page = ~std::uint64_t{0};
+    Touched* touched = nullptr;
+  };
+  std::array<Recent, 64> recent_;  // pages looked up lately, one for each value of the number's low bits
   std::uint64_t played_ = 0;
   std::uint64_t compared_ = 0;
   std::uint64_t different_ = 0;
