@@ -126,8 +126,10 @@ std::string latency_table(const Json& results) {
                            real(latency, "max-ns"));
   for (const auto& [name, part] : latency.at("parts-ns").items()) {
     const double share = mean > 0 ? part.get<double>() / mean : 0;
-    out += format("    %-16s %10.3f ns %5.1f %%  ", name.c_str(), part.get<double>(), 100 * share) +
-           std::string(static_cast<std::size_t>(share * 36 + 0.5), '|') + "\n";
+    const std::string bar(static_cast<std::size_t>(share * 36 + 0.5), '|');
+    out += format("    %-16s %10.3f ns %5.1f %%%s", name.c_str(), part.get<double>(), 100 * share,
+                  bar.empty() ? "" : "  ") +
+           bar + "\n";
   }
   return out + format("    %-16s %10.3f ns\n", "together", mean);
 }

@@ -76,7 +76,7 @@ std::string quoted(std::string_view text) {
   constexpr std::size_t most = 40;
   std::string shown(text.substr(0, most));
   std::replace_if(shown.begin(), shown.end(), is_control, '?');
-  return "`" + shown + (text.size() > most ? "..." : "") + "`";
+  return "'" + shown + (text.size() > most ? "..." : "") + "'";
 }
 
 std::string did_you_mean(std::string_view word, const std::vector<std::string>& known) {
@@ -89,7 +89,7 @@ std::string did_you_mean(std::string_view word, const std::vector<std::string>& 
     fewest = changes;
     best = &name;
   }
-  return best == nullptr ? std::string() : ", did you mean `" + *best + "`?";
+  return best == nullptr ? std::string() : ", did you mean '" + *best + "'?";
 }
 
 }  // namespace earshot

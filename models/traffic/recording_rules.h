@@ -26,10 +26,10 @@ std::string problem_with(const Access& access);
 // The same for notes: at most most_note_bytes, and no control characters but newline and tab.
 std::string problem_with(const RecordingNotes& notes);
 
-// The name in backquotes, fit for a message: at most 40 characters, control characters replaced.
+// The name in quotes, fit for a message: at most 40 characters, control characters replaced.
 std::string quoted(std::string_view text);
 
-// ", did you mean `x`?" with the name of `known` that takes the fewest single-letter changes to reach from
+// ", did you mean 'x'?" with the name of `known` that takes the fewest single-letter changes to reach from
 // `word`; empty if that would be more than half of its letters.
 std::string did_you_mean(std::string_view word, const std::vector<std::string>& known);
 

@@ -179,8 +179,8 @@ class TextReader : public RecordingReader {
     }
     for (const Column column : {initiator_column, op_column, address_column, size_column}) {
       if (std::find(columns_.begin(), columns_.end(), column) != columns_.end()) continue;
-      fail("header " + quoted(header) + " without the column `" + std::string(column_names[column]) +
-           "`, expected " + whole_header);
+      fail("header " + quoted(header) + " without the column '" + std::string(column_names[column]) +
+           "', expected " + whole_header);
     }
     for (std::size_t i = 0; i < columns_.size(); ++i) {
       if (columns_[i] != extra_column && columns_[i] != value_column) fields_needed_ = i + 1;

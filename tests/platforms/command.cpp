@@ -291,7 +291,7 @@ TEST_CASE("unusable configurations are refused with file, line and key", "[comma
   refuse("[caches]\ncount = 4\n",
          "configuration: nothing to play; give workload.recording or workload.pattern");
   refuse("[workload]\npattern = zigzag\n",
-         "p.ini:2: workload.pattern: kind `zigzag`, expected one of private, read-shared, producer-consumer, migratory, "
+         "p.ini:2: workload.pattern: kind 'zigzag', expected one of private, read-shared, producer-consumer, migratory, "
          "false-sharing, uniform");
 }
 

@@ -10,7 +10,7 @@
 namespace earshot {
 namespace {
 
-// Decoded from what `bytes` say, whatever the error: accesses up to it, then its message.
+// Decoded from what 'bytes' say, whatever the error: accesses up to it, then its message.
 struct Outcome {
   std::vector<Access> accesses;
   RecordingNotes notes;

@@ -21,9 +21,9 @@ long most_memory_so_far() {
   return usage.ru_maxrss;
 }
 
-// Reads a recording to its end, or to the first error if `expected` is 0, in a process of its own, which
+// Reads a recording to its end, or to the first error if 'expected' is 0, in a process of its own, which
 // remembers its peak alone. Returns by how much the memory it used grew after the first access, in MiB
-// rounded up; fails unless it read `expected` accesses.
+// rounded up; fails unless it read 'expected' accesses.
 int growth_while_reading(const std::string& path, std::uint64_t expected) {
   const pid_t child = ::fork();
   REQUIRE(child >= 0);

@@ -97,7 +97,7 @@ TEST_CASE("a target that cannot be written is refused with the reason", "[traffi
         "/dev/null: cannot be created: is there and not a regular file; choose another name");
 }
 
-// While it lives, no file of this process grows beyond `bytes`: as on a file system that is full.
+// While it lives, no file of this process grows beyond 'bytes': as on a file system that is full.
 class FullDisk {
  public:
   explicit FullDisk(rlim_t bytes) : signal_(std::signal(SIGXFSZ, SIG_IGN)) {

@@ -217,9 +217,9 @@ TEST_CASE("all problems of a pattern's configuration are told at once", "[traffi
   config.line_bytes = 48;
   config.lines = 0;
   CHECK(error_of(config) ==
-        "kind `uniforn`, expected one of private, read-shared, producer-consumer, migratory, false-sharing, "
+        "kind 'uniforn', expected one of private, read-shared, producer-consumer, migratory, false-sharing, "
         "uniform, did "
-        "you mean `uniform`?\n"
+        "you mean 'uniform'?\n"
         "initiators 65, expected 1 to 64\n"
         "write_percent 101, expected 0 to 100\n"
         "word_bytes 3, expected 1, 2, 4 or 8\n"

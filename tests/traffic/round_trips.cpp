@@ -109,7 +109,7 @@ TEST_CASE("a conversion onto itself or of a broken recording leaves all files as
           std::string(name) + ": is the recording to convert, expected another name for the copy");
   }
   CHECK(message_of([&] { convert_recording(folder.file("r.csv"), folder.file("r.ear")); }) ==
-        "r.csv:3: size `0`, expected 1 to 4096");
+        "r.csv:3: size '0', expected 1 to 4096");
   CHECK(folder.names() == std::vector<std::string>{"r.csv", "r.ear", "same.csv"});
   CHECK(read_file(folder.file("r.csv")) == text);
   CHECK(read_file(folder.file("r.ear")) == "before");

@@ -76,34 +76,34 @@ TEST_CASE("a malformed row is refused with its line and what was expected", "[tr
   const std::pair<const char*, const char*> rows[] = {
       {"0,read,0", "r.csv:2: 3 columns, expected at least 4 as in the header"},
       {"0", "r.csv:2: 1 column, expected at least 4 as in the header"},
-      {"64,read,0,4", "r.csv:2: initiator `64`, expected 0 to 63"},
-      {"-1,read,0,4", "r.csv:2: initiator `-1`, expected a decimal or 0x-hex number"},
-      {"0,raed,0,4", "r.csv:2: op `raed`, expected read, write or replace, did you mean `read`?"},
-      {"0,Write,0,4", "r.csv:2: op `Write`, expected read, write or replace, did you mean `write`?"},
-      {"0,fetch,0,4", "r.csv:2: op `fetch`, expected read, write or replace"},
-      {"0,,0,4", "r.csv:2: op ``, expected read, write or replace"},
+      {"64,read,0,4", "r.csv:2: initiator '64', expected 0 to 63"},
+      {"-1,read,0,4", "r.csv:2: initiator '-1', expected a decimal or 0x-hex number"},
+      {"0,raed,0,4", "r.csv:2: op 'raed', expected read, write or replace, did you mean 'read'?"},
+      {"0,Write,0,4", "r.csv:2: op 'Write', expected read, write or replace, did you mean 'write'?"},
+      {"0,fetch,0,4", "r.csv:2: op 'fetch', expected read, write or replace"},
+      {"0,,0,4", "r.csv:2: op '', expected read, write or replace"},
       {"0,compare-and-swap,0,4",
-       "r.csv:2: op `compare-and-swap` is an atomic and not supported yet, expected read, write or replace"},
-      {"0,read,12z,4", "r.csv:2: address `12z`, expected a decimal or 0x-hex number"},
-      {"0,read,0x,4", "r.csv:2: address `0x`, expected a decimal or 0x-hex number"},
-      {"0,read,,4", "r.csv:2: address ``, expected a decimal or 0x-hex number"},
-      {"0,read,ff,4", "r.csv:2: address `ff`, expected a decimal or 0x-hex number"},
+       "r.csv:2: op 'compare-and-swap' is an atomic and not supported yet, expected read, write or replace"},
+      {"0,read,12z,4", "r.csv:2: address '12z', expected a decimal or 0x-hex number"},
+      {"0,read,0x,4", "r.csv:2: address '0x', expected a decimal or 0x-hex number"},
+      {"0,read,,4", "r.csv:2: address '', expected a decimal or 0x-hex number"},
+      {"0,read,ff,4", "r.csv:2: address 'ff', expected a decimal or 0x-hex number"},
       {"0,read,0x10000000000000000,4",
-       "r.csv:2: address `0x10000000000000000`, expected a number below 2^64"},
+       "r.csv:2: address '0x10000000000000000', expected a number below 2^64"},
       {"0,read,0xfffffffffffffffd,4",
        "r.csv:2: address 0xfffffffffffffffd with size 4 goes past the last byte of the address space, "
        "expected at most "
        "0xfffffffffffffffc"},
-      {"0,read,0,0", "r.csv:2: size `0`, expected 1 to 4096"},
-      {"0,read,0,4097", "r.csv:2: size `4097`, expected 1 to 4096"},
-      {"0,read,0,4294967297", "r.csv:2: size `4294967297`, expected 1 to 4096"},
-      {"0,write,0,4,1.5", "r.csv:2: value `1.5`, expected a decimal or 0x-hex number"},
+      {"0,read,0,0", "r.csv:2: size '0', expected 1 to 4096"},
+      {"0,read,0,4097", "r.csv:2: size '4097', expected 1 to 4096"},
+      {"0,read,0,4294967297", "r.csv:2: size '4294967297', expected 1 to 4096"},
+      {"0,write,0,4,1.5", "r.csv:2: value '1.5', expected a decimal or 0x-hex number"},
       {"0,write,0,16,1", "r.csv:2: a value with size 16, expected a value only with sizes up to 8"},
       {"0,write,0,1,256", "r.csv:2: value 0x100 with size 1, expected at most 0xff"},
       {"0,write,0,7,0x100000000000000",
        "r.csv:2: value 0x100000000000000 with size 7, expected at most 0xffffffffffffff"},
       {"0,\x01\x02 0123456789012345678901234567890123456789,0,4",
-       "r.csv:2: op `?? 0123456789012345678901234567890123456...`, expected read, write or replace"},
+       "r.csv:2: op '?? 0123456789012345678901234567890123456...', expected read, write or replace"},
   };
   for (const auto& [row, message] : rows) CHECK(error_in_row(row) == message);
 }
@@ -116,7 +116,7 @@ TEST_CASE("lines are counted with comments and blank ones, and the rows before a
   Access access;
   REQUIRE(reader->next(access));
   CHECK(access == access_of(0, AccessOp::read, 0, 4));
-  CHECK(message_of([&] { reader->next(access); }) == "r.csv:6: size `5000`, expected 1 to 4096");
+  CHECK(message_of([&] { reader->next(access); }) == "r.csv:6: size '5000', expected 1 to 4096");
   CHECK_FALSE(reader->next(access));
 }
 
@@ -126,13 +126,13 @@ TEST_CASE("a text without our header is refused", "[traffic]") {
       {"# nothing\n\n",
        "r.csv:2: no header before the end of the file, expected initiator,op,address,size,value"},
       {"0,read,0,4,1\n",
-       "r.csv:1: header `0,read,0,4,1` without the column `initiator`, expected "
+       "r.csv:1: header '0,read,0,4,1' without the column 'initiator', expected "
        "initiator,op,address,size,value"},
       {"initiator,op,address,value\n",
-       "r.csv:1: header `initiator,op,address,value` without the column `size`, expected "
+       "r.csv:1: header 'initiator,op,address,value' without the column 'size', expected "
        "initiator,op,address,size,value"},
       {"initiator,op,op,address,size\n",
-       "r.csv:1: column `op` twice, expected the header initiator,op,address,size,value"},
+       "r.csv:1: column 'op' twice, expected the header initiator,op,address,size,value"},
       {std::string("\x7f\x45LF\0\1\2\n", 8),
        "r.csv:1: neither text nor the binary form, expected a recording: text begins with the header "
        "initiator,op,address,size,value"},
@@ -161,7 +161,7 @@ TEST_CASE("a text recording's notes stand in its leading comments", "[traffic]")
   CHECK(notes.text == "one\n\n two ");
   CHECK(notes_in(header).exact_order);
   CHECK(notes_in("# order: exact\n" + header).text.empty());
-  CHECK(error_in("# order: roughly\n" + header) == "r.csv:1: order `roughly`, expected exact or approximate");
+  CHECK(error_in("# order: roughly\n" + header) == "r.csv:1: order 'roughly', expected exact or approximate");
   CHECK(error_in("# note: a\x1b[31m\n" + header) ==
         "r.csv:1: a note with a control character, expected none but newline and tab");
   CHECK(error_in("# note: a\n# note: " + std::string(32767, 'x') + "\n" + header) ==

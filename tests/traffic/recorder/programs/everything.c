@@ -49,7 +49,9 @@ static atomic_long total;
 static atomic_uchar small;
 static __thread int mine;
 
-static void initialise(void) { ++initialised; }
+static void initialise(void) {
+  ++initialised;
+}
 
 static void lists_and_structures(void) {
   for (int i = 0; i < 100; ++i) {
@@ -150,7 +152,8 @@ int main(void) {
   pthread_barrier_init(&barrier, NULL, 4);
   sem_init(&tokens, 0, 2);
   pthread_t threads[4];
-  for (int i = 0; i < 4; ++i) require(pthread_create(&threads[i], NULL, work, (void*)(intptr_t)i) == 0, "create");
+  for (int i = 0; i < 4; ++i)
+    require(pthread_create(&threads[i], NULL, work, (void*)(intptr_t)i) == 0, "create");
   for (int i = 0; i < 4; ++i) {
     void* result;
     require(pthread_join(threads[i], &result) == 0 && (intptr_t)result == i * 10, "join");
@@ -175,6 +178,8 @@ int main(void) {
   require(thrd_create(&thread, c11_work, &value) == thrd_success, "thrd_create");
   require(thrd_join(thread, &result) == thrd_success && result == 33 && value == 2, "thrd_join");
   timed();
-  puts("everything works");
+  FILE* nowhere = fopen("/dev/null", "w");
+  fprintf(nowhere, "everything works: %d\n", turn);
+  fclose(nowhere);
   return 0;
 }

@@ -97,7 +97,9 @@ void structures() {
   require(b[299] == 'q' && b[0] == 'q', "block copies");
 }
 
-int compare(const void* a, const void* b) { return *static_cast<const int*>(a) - *static_cast<const int*>(b); }
+int compare(const void* a, const void* b) {
+  return *static_cast<const int*>(a) - *static_cast<const int*>(b);
+}
 
 void library() {
   char text[100];
@@ -243,5 +245,7 @@ int main() {
   threads();
   spinning();
   futures();
-  std::puts("everything works");
+  std::FILE* nowhere = std::fopen("/dev/null", "w");
+  std::fprintf(nowhere, "everything works: %d\n", unshared_counter);
+  std::fclose(nowhere);
 }

@@ -1,0 +1,138 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+#include <algorithm>
+#include <catch2/catch.hpp>
+#include <csignal>
+#include <set>
+
+#include "recording_of.h"
+
+namespace earshot {
+namespace {
+
+Recorded ending(const std::string& how, const RecordOptions& options = {}) {
+  return recording_of({program_in("native-O2", "endings_c"), how}, options);
+}
+
+// The 1000 writes with which programs/endings.c begins.
+bool begins_with_the_writes(const std::vector<Access>& accesses) {
+  const auto first = std::find_if(accesses.begin(), accesses.end(), [](const Access& access) {
+    return access.op == AccessOp::write && access.size == 4 && access.value == 0;
+  });
+  if (accesses.end() - first < 1000) return false;
+  for (std::size_t i = 0; i < 1000; ++i) {
+    const Access& access = first[static_cast<std::ptrdiff_t>(i)];
+    if (access.op != AccessOp::write || access.address != first->address + 4 * i || access.value != i)
+      return false;
+  }
+  return true;
+}
+
+TEST_CASE("however a program ends, what it did before is recorded, and its end is passed on") {
+  struct Case {
+    const char* how;
+    int exit_status, signal, status_of_command;
+  };
+  for (const Case& c :
+       {Case{"return", 0, 0, 0}, Case{"status", 3, 0, 3}, Case{"_exit", 4, 0, 4},
+        Case{"abort", 0, SIGABRT, 134}, Case{"crash", 0, SIGSEGV, 139}, Case{"kill", 0, SIGKILL, 137},
+        Case{"never-joined", 0, 0, 0}, Case{"detached", 5, 0, 5}, Case{"main-leaves", 0, 0, 0},
+        Case{"cancel", 0, 0, 0}, Case{"fork", 0, 0, 0}, Case{"pipe", 0, 0, 0}, Case{"unmapped", 0, 0, 0}}) {
+    INFO(c.how);
+    const Recorded recorded = ending(c.how);
+    CHECK(begins_with_the_writes(recorded.accesses));
+    CHECK(recorded.result.exit_status == c.exit_status);
+    CHECK(recorded.result.signal == c.signal);
+    CHECK(recorded.result.deadlock.empty());
+    CHECK(exit_status_of(recorded.result) == c.status_of_command);
+    CHECK(wrong_reads(recorded.accesses) == 0);
+  }
+}
+
+TEST_CASE("the summary says how a program ended unless it ended well") {
+  const Recorded crashed = ending("crash");
+  CHECK(crashed.summary.find(
+            "endings_c was ended by signal 11 (Segmentation fault); what it did before is recorded\n") !=
+        std::string::npos);
+  CHECK(ending("status").summary.find("endings_c ended with exit status 3\n") != std::string::npos);
+}
+
+TEST_CASE("the summary gives threads, accesses, what was learned, order and seed") {
+  CHECK(ending("return").summary ==
+        "recording: 1,001 accesses (1 reads, 1,000 writes) of 1 thread\n"
+        "order and values exact; seed 1, 0 hand-overs\n"
+        "learned: 8 bytes held a value before the recording; 0 writes by code without hooks, put in before "
+        "their first "
+        "read\n");
+}
+
+TEST_CASE("a program that waits for ever is ended with a message saying who waits where") {
+  const Recorded recorded = ending("deadlock");
+  INFO(recorded.summary);
+  CHECK(begins_with_the_writes(recorded.accesses));
+  CHECK(exit_status_of(recorded.result) == 1);
+  const std::string& message = recorded.result.deadlock;
+  CHECK(message.find("the program waits for ever: every thread waits for another.\n  thread 0 in "
+                     "pthread_mutex_lock on 0x") == 0);
+  CHECK(message.find("\n  thread 1 in pthread_mutex_lock on 0x") != std::string::npos);
+}
+
+TEST_CASE("the limit ends the recording at exactly that many accesses, not the program") {
+  RecordOptions options;
+  options.limit = 500;
+  const Recorded recorded = ending("status", options);
+  CHECK(recorded.accesses.size() == 500);
+  CHECK(recorded.result.limit_reached);
+  CHECK(recorded.result.exit_status == 3);
+  const Recorded whole = ending("status");
+  CHECK(std::equal(recorded.accesses.begin(), recorded.accesses.end(), whole.accesses.begin()));
+  CHECK_FALSE(whole.result.limit_reached);
+}
+
+TEST_CASE("numbers of threads that have ended are used again") {
+  const Recorded recorded = ending("200-threads-in-turn");
+  CHECK(recorded.result.threads == 201);
+  CHECK(recorded.result.most_alive == 2);
+  std::set<std::uint32_t> initiators;
+  for (const Access& access : recorded.accesses) initiators.insert(access.initiator);
+  CHECK(*initiators.rbegin() <= 1);
+}
+
+TEST_CASE("a program that cannot be recorded is refused with the reason, and no file is left") {
+  const std::string ending_program = program_in("native-O2", "endings_c");
+  const std::string recorded = std::string(EARSHOT_RECORDED) + "/";
+  CHECK(record_error_of({ending_program, "64-threads"}) ==
+        "native-O2/endings_c: the program has more than 64 threads at once, and a recording holds 64 "
+        "initiators.");
+  CHECK(record_error_of({recorded + "recorder_absent"}) ==
+        "recorder_absent (exit status 0): nothing was recorded; the program has no recorder in it. Compile "
+        "it with "
+        "-fsanitize=thread and link it with earshot_recorder instead of that option: "
+        "earshot_recordable(TARGET) in "
+        "CMake, or pkg-config --variable=compile_flags and --variable=link_flags earshot-recorder");
+  CHECK(record_error_of({recorded + "recorder_without_hooks"}) ==
+        "recorder_without_hooks (exit status 0): nothing was recorded; the recorder is in the program, but "
+        "none of the "
+        "code that ran has hooks. Compile the program's own sources with -fsanitize=thread");
+  CHECK(record_error_of({recorded + "missing"}) == "missing: there is no such program");
+  CHECK(record_error_of({"no-program-of-this-name"}) ==
+        "no-program-of-this-name: there is no such program in PATH; for one in this directory say "
+        "./no-program-of-this-name");
+  CHECK(record_error_of({ending_program + ".o"}) ==
+        "native-O2/endings_c.o: is not a program that may be run");
+  CHECK(record_error_of({}) == "no program was named");
+  RecordOptions options;
+  options.hand_over = 0;
+  CHECK(record_error_of({ending_program}, options) == "hand-over after 0 accesses: expected 1 to 1000000");
+}
+
+TEST_CASE("a recording that cannot be written is an error before the program starts") {
+  RecordOptions options;
+  options.into = "/nonexistent/recording";
+  options.program = {program_in("native-O2", "endings_c"), "kill"};
+  CHECK_THROWS_WITH(record_program(options),
+                    "/nonexistent/recording: cannot be created: No such file or directory");
+}
+
+}  // namespace
+}  // namespace earshot
