@@ -2,6 +2,8 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "keys.h"
 
+#include <algorithm>
+#include <cctype>
 #include <sstream>
 
 #include "quantities.h"
@@ -22,12 +24,13 @@ Apply number(Number Settings::*member, std::uint64_t least, std::uint64_t most) 
   };
 }
 
+// At most 1 ms: with cycle counts up to 1000 that leaves room for 10^7 of the slowest transactions in 2^64 ps.
 Apply time(Picoseconds Settings::*member, Picoseconds least) {
   return [=](const std::string& text, Settings& settings) -> std::string {
     Picoseconds value = 0;
-    if (!parse_time(text, settings.bus_clock, value) || value < least || value > Picoseconds{1000000000000})
+    if (!parse_time(text, settings.bus_clock, value) || value < least || value > Picoseconds{1000000000})
       return std::string("a time ") + (least > 0 ? "above 0, " : "") +
-             "of at most 1000 ms in whole picoseconds, with a unit: 5ns, 1.25ns, 800ps, 1us, 3 bus-cycles";
+             "of at most 1 ms in whole picoseconds, with a unit: 5ns, 1.25ns, 800ps, 1us, 3 bus-cycles";
     settings.*member = value;
     return {};
   };
@@ -88,7 +91,8 @@ std::string apply_width(const std::string& text, Settings& settings) {
 
 // "ram 0x0..0x7fffffff cached, uart 0x80000000..0x80000fff uncached"
 std::string apply_windows(const std::string& text, Settings& settings) {
-  const std::string expected = "windows as NAME FIRST..LAST cached|uncached, separated by commas";
+  const std::string expected =
+      "windows as NAME FIRST..LAST cached|uncached, separated by commas, names of letters, digits and _";
   std::vector<Window> windows;
   std::istringstream all(text);
   for (std::string one; std::getline(all, one, ',');) {
@@ -98,7 +102,10 @@ std::string apply_windows(const std::string& text, Settings& settings) {
     std::uint64_t last = 0;
     words >> window.name >> range >> kind;
     const std::size_t dots = range.find("..");
-    if (words >> rest || (kind != "cached" && kind != "uncached") || dots == std::string::npos ||
+    const bool named = std::all_of(window.name.begin(), window.name.end(), [](unsigned char c) {
+      return std::isalnum(c) != 0 || c == '_';
+    });
+    if (!named || words >> rest || (kind != "cached" && kind != "uncached") || dots == std::string::npos ||
         !parse_number(range.substr(0, dots), window.base) || !parse_number(range.substr(dots + 2), last) ||
         last < window.base)
       return expected;
@@ -152,18 +159,12 @@ std::string apply_monitor(const std::string& text, Settings& settings) {
 
 const std::vector<Key>& keys() {
   static const std::vector<Key> table{
-      {"timing", "annotated", "how time passes: annotated (delays are computed, nothing blocks)", only("annotated")},
-      {"quantum", "1us", "how far an initiator may run ahead of the others; 0ns: not at all",
-       time(&Settings::quantum, 0)},
-      {"monitor", "auto", "check every access for coherence: on, off, auto (on in recorded order)", apply_monitor},
-      {"flush-at-end", "on", "write dirty lines back at the end and compare memory", yes_no(&Settings::flush_at_end)},
-      {"baseline", "on", "also run write-through-update on the same input", yes_no(&Settings::baseline)},
-
       {"bus.clock", "5ns", "period of the bus clock", time(&Settings::bus_clock, 1)},
       {"bus.kind", "split", "address and data bus are granted apart: split", only("split")},
       {"bus.arbitration", "first-come", "the earliest request gets the earliest gap: first-come", only("first-come")},
       {"bus.width", "8", "bytes the data bus moves in a cycle", apply_width<&Settings::bus_width>},
-      {"bus.arbitration-cycles", "1", "from request to grant, uncontended", number(&Settings::arbitration_cycles, 0, 1000)},
+      {"bus.arbitration-cycles", "1", "from request to grant, uncontended",
+       number(&Settings::arbitration_cycles, 0, 1000)},
       {"bus.address-cycles", "1", "an address on the address bus", number(&Settings::address_cycles, 1, 1000)},
       {"bus.snoop-cycles", "1", "the other caches look the line up", number(&Settings::snoop_cycles, 0, 1000)},
       {"bus.supply-cycles", "2", "a cache reads a line out for another", number(&Settings::supply_cycles, 0, 1000)},
@@ -203,6 +204,13 @@ const std::vector<Key>& keys() {
       {"workload.write-percent", "30", "share of writes, for patterns that choose",
        pattern_number(&PatternConfig::write_percent, 0, 100)},
       {"workload.seed", "1", "for a pattern", pattern_number(&PatternConfig::seed, 0, ~std::uint64_t{0})},
+
+      {"timing", "annotated", "how time passes: annotated (delays are computed, nothing blocks)", only("annotated")},
+      {"quantum", "1us", "how far an initiator may run ahead of the others; 0ns: not at all",
+       time(&Settings::quantum, 0)},
+      {"monitor", "auto", "check every access for coherence: on, off, auto (on in recorded order)", apply_monitor},
+      {"flush-at-end", "on", "write dirty lines back at the end and compare memory", yes_no(&Settings::flush_at_end)},
+      {"baseline", "on", "also run write-through-update on the same input", yes_no(&Settings::baseline)},
   };
   return table;
 }

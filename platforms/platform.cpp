@@ -16,10 +16,25 @@ std::unique_ptr<AccessSource> open_source(const Settings& settings, std::uint32_
   return open_recording(settings.recording, only);
 }
 
-// Values can be compared with the recording if it tells them in the order they came about.
-bool values_are_exact(const Settings& settings) {
-  return !settings.uses_pattern && open_recording(settings.recording)->notes().exact_order;
-}
+// The whole recording, refusing initiators without a cache, of which it passes on the first one's accesses. In
+// concurrent order every other player sees its own accesses only, so nobody else would notice.
+class FirstInitiator : public AccessSource {
+ public:
+  FirstInitiator(std::unique_ptr<AccessSource> source, unsigned caches) : source_(std::move(source)), caches_(caches) {}
+  bool next(Access& access) override {
+    while (source_->next(access)) {
+      ++played_;
+      if (access.initiator >= caches_) throw no_cache_for(access, played_, caches_);
+      if (access.initiator == 0) return true;
+    }
+    return false;
+  }
+
+ private:
+  std::unique_ptr<AccessSource> source_;
+  unsigned caches_;
+  std::uint64_t played_ = 0;
+};
 
 }  // namespace
 
@@ -53,7 +68,7 @@ void Platform::build_memories(const Settings& settings) {
   config.beat_time = from_ps(settings.beat_time);
   config.beat_bytes = settings.beat_bytes;
   for (const Window& window : settings.windows) {
-    memories_.push_back(std::make_unique<PlainMemory>(window.name.c_str(), config));
+    memories_.push_back(std::make_unique<PlainMemory>(("memory_" + window.name).c_str(), config));
     bus_->window_socket(window.name).bind(memories_.back()->target_socket);
     if (window.cached) cached_memories_.push_back(memories_.back().get());
   }
@@ -88,11 +103,25 @@ void Platform::build_players(const Settings& settings, PlayerHooks hooks) {
                                                 hooks));
     players_.back()->initiator_socket.bind(caches_[i]->cpu_socket);
     players.push_back(players_.back().get());
-    if (settings.order == Order::concurrent) players_.back()->set_source(open_source(settings, i));
+    if (settings.order == Order::recorded) continue;
+    if (i == 0 && !settings.uses_pattern)
+      players_.back()->set_source(
+          std::make_unique<FirstInitiator>(open_recording(settings.recording), settings.caches));
+    else
+      players_.back()->set_source(open_source(settings, i));
   }
-  if (settings.order == Order::recorded)
-    recorded_order_ = std::make_unique<RecordedOrder>("recorded_order", players, open_source(settings, every_initiator),
-                                                      values_are_exact(settings), hooks);
+  if (settings.order == Order::concurrent) return;
+  std::unique_ptr<AccessSource> source;
+  bool exact_values = false;  // and told in the order they came about
+  if (settings.uses_pattern) {
+    source = make_pattern(settings.pattern);
+  } else {
+    auto recording = open_recording(settings.recording);
+    exact_values = recording->notes().exact_order;
+    source = std::move(recording);
+  }
+  recorded_order_ =
+      std::make_unique<RecordedOrder>("recorded_order", players, std::move(source), exact_values, hooks);
 }
 
 Picoseconds Platform::finished_at() const {

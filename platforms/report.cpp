@@ -78,14 +78,18 @@ std::string decision(const Json& results) {
   const Json& baseline = results.at("baseline");
   const std::uint64_t before = memory_writes(baseline);
   const std::string name = baseline.at("protocol").get<std::string>();
-  if (results.at("protocol").get<std::string>() == name) return wrapped(text + "; this is the baseline.", 2);
+  if (setting(results, "caches", "protocol") == name) return wrapped(text + "; this is the baseline.", 2);
   text += ", under " + name + " " + with_commas(before) + " times (" + writes_in_words(baseline) + "): ";
-  if (now == 0)
-    text += before == 0 ? "no difference." : "every write to memory is avoided.";
-  else if (now <= before)
+  if (now == before)
+    text += "no difference.";
+  else if (now == 0)
+    text += "every write to memory is avoided.";
+  else if (before == 0)
+    text += "MORE writes, where the baseline has none.";
+  else if (now < before)
     text += format("%.2f times fewer writes.", static_cast<double>(before) / static_cast<double>(now));
   else
-    text += format("%.2f times MORE writes.", static_cast<double>(now) / static_cast<double>(before == 0 ? 1 : before));
+    text += format("%.2f times MORE writes.", static_cast<double>(now) / static_cast<double>(before));
   return wrapped(text, 2);
 }
 
@@ -165,14 +169,15 @@ std::string initiator_table(const Json& results) {
 std::string checks(const Json& results) {
   const Json& done = results.at("checks");
   std::string text = done.at("monitored").get<bool>()
-                         ? "Coherence: " + counted(done, "accesses-checked") + " accesses checked, no violation"
+                         ? "Coherence: " + counted(done, "line-accesses-checked") + " accesses of lines checked, no violation"
                          : "Coherence was not monitored (monitor = on does)";
   if (count(done, "reads-compared-with-recording") > 0)
     text += "; " + counted(done, "reads-compared-with-recording") + " reads returned the recorded value";
   const std::uint64_t dirty = count(done, "dirty-lines-left");
   const std::uint64_t at_end = count(results.at("memory"), "block-writes-at-end");
   if (at_end > 0) text += "; " + with_commas(at_end) + " dirty lines were written back at the end (counted above)";
-  if (dirty > 0) text += "; " + with_commas(dirty) + " lines are still dirty in caches";
+  if (dirty > 0)
+    text += "; " + with_commas(dirty) + " lines are still dirty in caches";
   return wrapped(text + ".", 2);
 }
 
@@ -184,6 +189,7 @@ std::string text_answer(const Json& results) {
          checks(results) + "\n" + wrapped(results.at("caution").get<std::string>(), 2);
 }
 
-std::string json_text(const Json& results) { return results.dump(2) + "\n"; }
+// A path need not be UTF-8; JSON must.
+std::string json_text(const Json& results) { return results.dump(2, ' ', false, Json::error_handler_t::replace) + "\n"; }
 
 }  // namespace earshot

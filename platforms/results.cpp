@@ -32,14 +32,15 @@ Json configuration(const Settings& settings) {
 
 Json accesses(const CacheTotals& totals) {
   return {{"reads", totals.reads},   {"writes", totals.writes},     {"hits", totals.hits},
-          {"misses", totals.misses}, {"uncached", totals.uncached}};
+          {"misses", totals.misses}, {"uncached", totals.uncached}, {"errors", totals.errors}};
 }
 
 Json latency(const CacheTotals& totals) {
-  Json parts;
+  Json parts, sums;
   for (int i = 0; i < latency_parts; ++i) {
     const auto part = static_cast<LatencyPart>(i);
     parts[name_of(part)] = mean_ns(totals.parts[part], totals.latency.count());
+    sums[name_of(part)] = totals.parts[part];
   }
   return {{"mean-ns", mean_ns(totals.latency.sum(), totals.latency.count())},
           {"p50-ns", ns(totals.latency.percentile(50))},
@@ -47,42 +48,48 @@ Json latency(const CacheTotals& totals) {
           {"p99-ns", ns(totals.latency.percentile(99))},
           {"max-ns", ns(totals.latency.max())},
           {"total-ps", totals.latency.sum()},
-          {"parts-ns", parts}};
+          {"parts-ns", parts},
+          {"total-parts-ps", sums}};
 }
 
-Json bus(const SnoopingBusTotals& totals, Picoseconds address_busy, Picoseconds data_busy, Picoseconds elapsed) {
+// Counts are of the whole run; times and utilisations of what came before the flush, which no initiator waits for.
+Json bus(const SnoopingBusTotals& totals, const SnoopingBusTotals& before_flush, Picoseconds elapsed) {
   Json counts, costs;
   Picoseconds wait = 0;
   for (int i = 0; i < bus_kinds; ++i) {
-    const BusKindTotals& kind = totals.kind[static_cast<std::size_t>(i)];
+    const BusKindTotals& kind = before_flush.kind[static_cast<std::size_t>(i)];
     const char* name = name_of(static_cast<BusKind>(i));
     wait += kind.wait;
-    counts[name] = kind.count;
+    counts[name] = totals.kind[static_cast<std::size_t>(i)].count;
     costs[name] = {{"mean-ns", mean_ns(kind.time, kind.count)},
                    {"wait-ns", mean_ns(kind.wait, kind.count)},
                    {"address-cycles", kind.address_cycles},
                    {"data-cycles", kind.data_cycles}};
   }
   return {{"transactions", counts},
-          {"utilisation", share(std::max(address_busy, data_busy), elapsed)},
-          {"address-utilisation", share(address_busy, elapsed)},
-          {"data-utilisation", share(data_busy, elapsed)},
+          {"utilisation", share(std::max(before_flush.address_busy, before_flush.data_busy), elapsed)},
+          {"address-utilisation", share(before_flush.address_busy, elapsed)},
+          {"data-utilisation", share(before_flush.data_busy, elapsed)},
           {"wait-ns", ns(wait)},
           {"costs", costs}};
 }
 
+// Of the busiest memory behind a cached window.
 Picoseconds memory_busy(const Platform& platform) {
   Picoseconds busy = 0;
-  for (const PlainMemory* memory : platform.cached_memories()) busy += memory->busy_time();
+  for (const PlainMemory* memory : platform.cached_memories()) busy = std::max(busy, memory->busy_time());
   return busy;
 }
 
-void check_values(const Platform& platform) {
+void check_values(Platform& platform) {
   const RecordedOrder* order = platform.recorded_order();
   if (order == nullptr || order->reads_that_differ() == 0) return;
   throw Finding(std::to_string(order->reads_that_differ()) + " of " + std::to_string(order->reads_compared()) +
-                " reads returned another value than the recording has. Every access was coherent, so the recording "
-                "is not in the order its values came about. First: " +
+                " reads returned another value than the recording has. " +
+                (platform.monitor() == nullptr
+                     ? "Run with monitor = on to see whether an access was incoherent. First: "
+                     : "Every access was coherent, so the recording is not in the order its values came about. "
+                       "First: ") +
                 order->first_difference());
 }
 
@@ -131,7 +138,7 @@ Json collect_results(const Settings& settings, const Table& table, Platform& pla
     initiators.push_back({{"initiator", cache->port()}, {"accesses", accesses(one)}, {"latency", latency(one)}});
   }
   out["accesses"] = accesses(all);
-  out["bus"] = bus(totals, before_flush.address_busy, before_flush.data_busy, elapsed);
+  out["bus"] = bus(totals, before_flush, elapsed);
   out["supplies"] = {{"owner", totals.supplied_by_owner},
                      {"sharer", totals.supplied_by_sharer},
                      {"memory", totals.supplied_by_memory}};
@@ -140,12 +147,12 @@ Json collect_results(const Settings& settings, const Table& table, Platform& pla
       {"block-writes", totals.block_writes},
       {"word-writes", totals.word_writes},
       {"block-writes-at-end", totals.block_writes - before_flush.block_writes},
-      {"utilisation", share(memory_was_busy, elapsed * std::max<std::size_t>(1, platform.cached_memories().size()))}};
+      {"utilisation", share(memory_was_busy, elapsed)}};
   out["latency"] = latency(all);
   out["initiators"] = initiators;
 
   Json checks = {{"monitored", platform.monitor() != nullptr},
-                 {"accesses-checked", platform.monitor() == nullptr ? 0 : platform.monitor()->accesses_checked()},
+                 {"line-accesses-checked", platform.monitor() == nullptr ? 0 : platform.monitor()->accesses_checked()},
                  {"reads-compared-with-recording",
                   platform.recorded_order() == nullptr ? 0 : platform.recorded_order()->reads_compared()},
                  {"dirty-lines-left", dirty}};

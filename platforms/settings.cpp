@@ -6,6 +6,7 @@
 #include <boost/program_options.hpp>
 #include <filesystem>
 #include <fstream>
+#include <functional>
 #include <map>
 #include <sstream>
 
@@ -106,7 +107,7 @@ void Collector::read_arguments(const std::vector<std::string>& arguments) {
   // "--key=" empties a key; Boost.Program_options would refuse it.
   std::vector<std::string> with_values, emptied;
   for (const std::string& argument : arguments) {
-    const bool empties = argument.rfind("--", 0) == 0 && argument.back() == '=';
+    const bool empties = argument.rfind("--", 0) == 0 && argument.find('=') == argument.size() - 1;
     if (empties)
       emptied.push_back(argument.substr(2, argument.size() - 3));
     else
@@ -151,12 +152,39 @@ void Collector::give_up_if_problems() const {
   throw UsageError(text);
 }
 
+// What is wrong with a recording as far as its beginning tells; empty if nothing is.
+std::string problem_with_recording(const std::string& path) {
+  std::error_code ignored;
+  if (std::filesystem::exists(path, ignored) && !std::filesystem::is_regular_file(path, ignored))
+    return path + ": is no regular file, and a recording is read more than once";
+  try {
+    open_recording(path);
+    return {};
+  } catch (const RecordingError& error) {
+    return error.what();
+  }
+}
+
+void load_protocol(Settings& settings, Collector& collector) {
+  try {
+    settings.table = std::make_shared<const Table>(load_table(settings.protocol, settings.update_limit));
+  } catch (const TableError& error) {
+    const auto found = collector.given.find("caches.protocol");
+    collector.problem((found == collector.given.end() ? "default" : found->second.where) + ": caches.protocol: " +
+                      error.what());
+  }
+}
+
 // What no single key can tell.
 void check_together(const Settings& settings, Collector& collector) {
   const auto where = [&](const char* key) {
     const auto found = collector.given.find(key);
     return (found == collector.given.end() ? std::string("default") : found->second.where) + ": ";
   };
+  if (const auto found = collector.given.find("caches.update-limit");
+      settings.table != nullptr && settings.update_limit != 0 && !settings.table->counts())
+    collector.problem(found->second.where + ": caches.update-limit = " + found->second.text + ": protocol '" +
+                      settings.table->name() + "' does not count updates; leave the key out");
   const std::vector<std::string> misshapen = settings.geometry.problems();
   for (const std::string& problem : misshapen)  // each begins with the key's name
     collector.problem(where(("caches." + problem.substr(0, problem.find(':'))).c_str()) + "caches." + problem);
@@ -167,6 +195,9 @@ void check_together(const Settings& settings, Collector& collector) {
   if (!settings.recording.empty() && settings.uses_pattern)
     collector.problem(where("workload.pattern") +
                       "workload.pattern: a recording is given too; keep one of workload.recording, workload.pattern");
+  if (!settings.recording.empty())
+    if (const std::string problem = problem_with_recording(settings.recording); !problem.empty())
+      collector.problem(where("workload.recording") + "workload.recording: " + problem);
   if (!settings.uses_pattern || !misshapen.empty()) return;
   try {
     make_pattern(settings.pattern);
@@ -196,11 +227,6 @@ Settings read_settings(const std::string& config_path, const std::vector<std::st
   }
   collector.give_up_if_problems();
 
-  settings.pattern.initiators = settings.caches;
-  settings.pattern.line_bytes = settings.geometry.line_bytes;
-  check_together(settings, collector);
-  collector.give_up_if_problems();
-
   // A file names its recording and its table from where it stands.
   const auto beside_file = [&](const char* key, std::string& path, bool only_if_there) {
     const auto found = collector.given.find(key);
@@ -210,7 +236,15 @@ Settings read_settings(const std::string& config_path, const std::vector<std::st
     if (!only_if_there || std::filesystem::exists(beside, ignored)) path = beside.string();
   };
   beside_file("workload.recording", settings.recording, false);
-  beside_file("caches.protocol", settings.protocol, true);
+  const std::vector<std::string>& built_in = builtin_tables();
+  if (std::find(built_in.begin(), built_in.end(), settings.protocol) == built_in.end())
+    beside_file("caches.protocol", settings.protocol, true);
+
+  settings.pattern.initiators = settings.caches;
+  settings.pattern.line_bytes = settings.geometry.line_bytes;
+  load_protocol(settings, collector);
+  check_together(settings, collector);
+  collector.give_up_if_problems();
   return settings;
 }
 
@@ -220,10 +254,9 @@ std::string settings_help() {
   for (const Key& key : keys()) {
     const std::string name = key.name;
     const std::size_t dot = name.find('.');
-    if (dot != std::string::npos && name.substr(0, dot) != section) {
-      section = name.substr(0, dot);
-      out << "\n";
-    }
+    const std::string its_section = dot == std::string::npos ? "" : name.substr(0, dot);
+    if (!section.empty() && its_section != section) out << "\n";
+    section = its_section;
     out << "  " << name << std::string(name.size() < 24 ? 24 - name.size() : 1, ' ') << key.help << "\n";
     if (*key.default_text != '\0') out << std::string(26, ' ') << "default: " << key.default_text << "\n";
   }

@@ -2,9 +2,11 @@
 // SPDX-License-Identifier: Apache-2.0
 //
 // Settings are everything a run needs to know, read from an INI file and the command line, which take the same
-// keys; the command line wins. Every problem is found before anything is built and reported at once.
+// keys; the command line wins. Every problem of a stage is reported at once, with its place: what is written, then
+// what its parts come to together and what they name (the table, the recording).
 #pragma once
 
+#include <memory>
 #include <stdexcept>
 #include <string>
 #include <utility>
@@ -12,6 +14,7 @@
 
 #include "earshot/bus/address_map.h"
 #include "earshot/cache/geometry.h"
+#include "earshot/protocol/table.h"
 #include "earshot/timing/picoseconds.h"
 #include "earshot/traffic/pattern.h"
 
@@ -28,7 +31,7 @@ enum class Watch { where_recorded, always, never };  // the coherence monitor
 
 struct Settings {
   // bus
-  Picoseconds bus_clock = 0;
+  Picoseconds bus_clock = 5000;
   unsigned bus_width = 0;
   unsigned arbitration_cycles = 0, address_cycles = 0, snoop_cycles = 0, supply_cycles = 0;
   std::vector<Window> windows;
@@ -37,6 +40,7 @@ struct Settings {
   unsigned caches = 0;
   std::string protocol;           // a built-in table's name, or the path of a table file
   int update_limit = 0;           // 0: as the table says
+  std::shared_ptr<const Table> table;  // the protocol, loaded; not yet proved
   Geometry geometry;
   Picoseconds hit_time = 0;
 

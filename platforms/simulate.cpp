@@ -2,12 +2,15 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "simulate.h"
 
+#include <sys/prctl.h>
 #include <sys/wait.h>
 #include <unistd.h>
 
+#include <algorithm>
+#include <cerrno>
 #include <chrono>
+#include <csignal>
 #include <cstdio>
-#include <filesystem>
 
 #include "earshot/protocol/prover.h"
 #include "platform.h"
@@ -18,23 +21,15 @@ namespace {
 
 constexpr const char* baseline_protocol = "write-through-update";
 
-std::shared_ptr<const Table> sound_table(const Settings& settings) {
-  try {
-    auto table = std::make_shared<const Table>(load_table(settings.protocol, settings.update_limit));
-    if (settings.update_limit != 0 && !table->counts())
-      throw UsageError("caches.update-limit = " + std::to_string(settings.update_limit) + ": protocol '" +
-                       table->name() + "' does not count updates; leave the key out");
-    const std::vector<std::string>& known = builtin_tables();
-    if (std::find(known.begin(), known.end(), settings.protocol) != known.end()) return table;
-    for (const int caches : {2, 3}) {
-      const Proof proof = prove(*table, caches);
-      if (!proof.sound)
-        throw UsageError(settings.protocol + ": the protocol is not sound, so it is not run\n" +
-                         describe(*table, proof));
-    }
-    return table;
-  } catch (const TableError& error) {
-    throw UsageError(error.what());
+// A built-in table is proved by the tests; a user's own is proved here before it may run.
+void require_soundness(const Settings& settings) {
+  const std::vector<std::string>& built_in = builtin_tables();
+  if (std::find(built_in.begin(), built_in.end(), settings.protocol) != built_in.end()) return;
+  for (const int caches : {2, 3}) {
+    const Proof proof = prove(*settings.table, caches);
+    if (!proof.sound)
+      throw UsageError(settings.protocol + ": the protocol is not sound, so it is not run\n" +
+                       describe(*settings.table, proof));
   }
 }
 
@@ -64,7 +59,6 @@ class Progress {
 };
 
 Json run(const Settings& settings, bool progress) {
-  const std::shared_ptr<const Table> table = sound_table(settings);
   Progress steps(progress);
   PlayerHooks hooks;
   if (progress) hooks.done = [&steps] { steps.step(); };
@@ -73,9 +67,9 @@ Json run(const Settings& settings, bool progress) {
   tlm::tlm_global_quantum::instance().set(from_ps(settings.quantum));
   sc_core::sc_report_handler::set_actions("/OSCI/SystemC", sc_core::SC_INFO, sc_core::SC_DO_NOTHING);
   sc_core::sc_set_stop_mode(sc_core::SC_STOP_IMMEDIATE);
-  Platform platform(settings, table, hooks);
+  Platform platform(settings, settings.table, hooks);
   sc_core::sc_start();
-  return collect_results(settings, *table, platform);
+  return collect_results(settings, *settings.table, platform);
 }
 
 // The same input under the baseline protocol, in a process of its own: a SystemC kernel simulates once.
@@ -85,6 +79,7 @@ class BaselineRun {
     int ends[2];
     std::fflush(nullptr);
     if (pipe(ends) != 0) throw std::runtime_error("cannot create a pipe for the baseline run");
+    const pid_t parent = getpid();
     child_ = fork();
     if (child_ < 0) throw std::runtime_error("cannot start a process for the baseline run");
     if (child_ > 0) {
@@ -92,15 +87,18 @@ class BaselineRun {
       from_ = ends[0];
       return;
     }
+    prctl(PR_SET_PDEATHSIG, SIGKILL);  // a killed command leaves nothing running
+    if (getppid() != parent) _exit(0);
     close(ends[0]);
     settings.protocol = baseline_protocol;
     settings.update_limit = 0;
+    settings.table = std::make_shared<const Table>(load_table(baseline_protocol));
     settings.monitor = Watch::never;
     std::string text;
     try {
-      text = run(settings, false).dump();
+      text = run(settings, false).dump(-1, ' ', false, Json::error_handler_t::replace);
     } catch (const std::exception& error) {
-      text = Json{{"error", error.what()}}.dump();
+      text = Json{{"error", error.what()}}.dump(-1, ' ', false, Json::error_handler_t::replace);
     }
     for (std::size_t sent = 0; sent < text.size();) {
       const ssize_t n = write(ends[1], text.data() + sent, text.size() - sent);
@@ -110,8 +108,9 @@ class BaselineRun {
     _exit(0);
   }
   ~BaselineRun() {
-    if (from_ >= 0) close(from_);
-    if (child_ > 0) waitpid(child_, nullptr, 0);
+    close(from_);
+    if (!finished_) kill(child_, SIGKILL);
+    waitpid(child_, nullptr, 0);
   }
   BaselineRun(const BaselineRun&) = delete;
   BaselineRun& operator=(const BaselineRun&) = delete;
@@ -119,7 +118,9 @@ class BaselineRun {
   Json results() {
     std::string text;
     char buffer[65536];
-    for (ssize_t n; (n = read(from_, buffer, sizeof buffer)) > 0;) text.append(buffer, static_cast<std::size_t>(n));
+    for (ssize_t n; (n = read(from_, buffer, sizeof buffer)) > 0 || (n < 0 && errno == EINTR);)
+      if (n > 0) text.append(buffer, static_cast<std::size_t>(n));
+    finished_ = true;
     Json results = Json::parse(text, nullptr, false);
     if (results.is_discarded()) throw std::runtime_error("the baseline run ended without a result");
     if (results.contains("error"))
@@ -131,6 +132,7 @@ class BaselineRun {
  private:
   pid_t child_ = -1;
   int from_ = -1;
+  bool finished_ = false;  // all it had to say has been read
 };
 
 // What the comparison needs of the baseline's document.
@@ -144,8 +146,8 @@ Json baseline_summary(const Json& results) {
 }  // namespace
 
 Json simulate(const Settings& settings, bool progress) {
+  require_soundness(settings);
   if (!settings.baseline) return run(settings, progress);
-  sound_table(settings);  // before anything is started
   if (settings.protocol == baseline_protocol) {
     Json results = run(settings, progress);
     results["baseline"] = baseline_summary(results);

@@ -27,9 +27,15 @@ constexpr const char* help =
 int simulate_verb(const std::vector<std::string>& words) {
   std::string config, json_path;
   bool quiet = false;
+  bool value_expected = false;  // "--key value"
   std::vector<std::string> keys;
   for (std::size_t i = 0; i < words.size(); ++i) {
     const std::string& word = words[i];
+    if (value_expected) {
+      keys.push_back(word);
+      value_expected = false;
+      continue;
+    }
     if (word == "--help") {
       std::fputs((help + settings_help()).c_str(), stdout);
       return 0;
@@ -42,11 +48,11 @@ int simulate_verb(const std::vector<std::string>& words) {
       json_path = word.substr(7);
     } else if (word == "--json") {
       throw UsageError("command line: --json needs the name of a file");
-    } else if (word.rfind("--", 0) != 0 && config.empty() &&
-               (keys.empty() || keys.back().find('=') != std::string::npos)) {
+    } else if (word.rfind("--", 0) != 0 && config.empty()) {
       config = word;
     } else {
       keys.push_back(word);
+      value_expected = word.rfind("--", 0) == 0 && word.find('=') == std::string::npos;
     }
   }
   if (config.empty() && keys.empty()) throw UsageError("simulate: no configuration; expected the path of an INI file");

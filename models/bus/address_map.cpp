@@ -25,6 +25,8 @@ std::vector<std::string> AddressMap::problems(unsigned line_bytes) const {
       found.push_back(text_of(window) + " runs past the end of the 64-bit address space: make it smaller");
       continue;
     }
+    if (window.target_base + (window.last() - window.base) < window.target_base)
+      found.push_back(text_of(window) + " leaves its target's 64-bit address space: lower its target_base");
     const bool whole_lines = line_bytes == 0 || ((window.base | window.target_base | window.size) % line_bytes) == 0;
     if (window.cached && !whole_lines)
       found.push_back(text_of(window) + " is cached, so its base and size must be multiples of the line, " +

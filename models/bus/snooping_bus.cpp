@@ -43,10 +43,10 @@ struct SnoopingBus::Snoop {
 
 class SnoopingBus::TargetPort : public sc_core::sc_module, private tlm::tlm_bw_transport_if<> {
  public:
-  tlm::tlm_initiator_socket<> socket;
+  tlm::tlm_initiator_socket<> socket{"socket"};
 
-  TargetPort(const char* name, SnoopingBus& bus, const Window& window)
-      : sc_module(sc_core::sc_module_name(name)), socket("socket"), bus_(bus), window_(window) {
+  TargetPort(sc_core::sc_module_name name, SnoopingBus& bus, const Window& window)
+      : sc_module(name), bus_(bus), window_(window) {
     socket.bind(*this);
   }
   const char* kind() const override { return "earshot::SnoopingBus::TargetPort"; }
@@ -114,20 +114,37 @@ SnoopingBusTotals SnoopingBus::totals() const {
   return totals;
 }
 
-bool SnoopingBus::acquire() {
-  const bool waits = held_;
-  while (held_) {
-    ++waiting_;
-    sc_core::wait(released_);
-    --waiting_;
+// A place in the queue for the bus, given up also if the process is killed while it waits.
+class SnoopingBus::Waiter {
+ public:
+  explicit Waiter(SnoopingBus& bus) : bus_(bus) { bus_.queue_.push_back(this); }
+  ~Waiter() {
+    const bool was_first = is_first();
+    bus_.queue_.erase(std::find(bus_.queue_.begin(), bus_.queue_.end(), this));
+    if (was_first && !bus_.held_) bus_.released_.notify();
   }
+  Waiter(const Waiter&) = delete;
+  Waiter& operator=(const Waiter&) = delete;
+  bool is_first() const { return bus_.queue_.front() == this; }
+
+ private:
+  SnoopingBus& bus_;
+};
+
+bool SnoopingBus::acquire() {
+  if (!held_ && queue_.empty()) {
+    held_ = true;
+    return false;
+  }
+  const Waiter waiter(*this);
+  while (held_ || !waiter.is_first()) sc_core::wait(released_);
   held_ = true;
-  return waits;
+  return true;
 }
 
 void SnoopingBus::release() {
   held_ = false;
-  if (waiting_ > 0) released_.notify();
+  if (!queue_.empty()) released_.notify();
 }
 
 void SnoopingBus::transact(BusTransaction& transaction, sc_core::sc_time& delay) {
@@ -146,22 +163,37 @@ void SnoopingBus::transact(BusTransaction& transaction, sc_core::sc_time& delay)
     transaction.parts[LatencyPart::snoop] += config_.snoop_cycles * period_;
   }
   transaction.status = tlm::TLM_OK_RESPONSE;
-  if (memory_phase(transaction, snoop, time)) {
+  requester_ = transaction.requester;
+  const bool accepted = memory_phase(transaction, snoop, time);
+  requester_ = -1;
+  if (accepted) {
     transaction.shared = snoop.shared;
     commit_others(transaction, snoop.others);
-    if (transaction.kind == BusKind::read || transaction.kind == BusKind::read_exclusive)
+    if (transaction.kind == BusKind::read || transaction.kind == BusKind::read_exclusive) {
       presence_.add(transaction.line, transaction.requester);
-    else if (transaction.kind == BusKind::write_back)
+      if (transaction.supplier == Supplier::memory)
+        ++totals_.supplied_by_memory;
+      else
+        ++(transaction.supplier == Supplier::owner ? totals_.supplied_by_owner : totals_.supplied_by_sharer);
+    } else if (transaction.kind == BusKind::write_back) {
       presence_.remove(transaction.line, transaction.requester);
+    }
   }
 
-  BusKindTotals& totals = totals_.kind[static_cast<std::size_t>(transaction.kind)];
-  ++totals.count;
-  totals.time += time - requested;
-  totals.wait += transaction.parts[LatencyPart::wait_for_grant];
   // Time a target really waited has passed already; the rest is annotated.
   const Picoseconds now = now_ps();
   delay = from_ps(time > now ? time - now : 0);
+  if (transaction.status == tlm::TLM_OK_RESPONSE)
+    count(transaction.kind, requested, time, transaction.parts[LatencyPart::wait_for_grant]);
+}
+
+void SnoopingBus::count(BusKind kind, Picoseconds requested, Picoseconds completed, Picoseconds wait) {
+  if (completed < requested)
+    SC_REPORT_ERROR(config_id, (std::string(name()) + ": simulation time has run past its end, 2^64 ps").c_str());
+  BusKindTotals& totals = totals_.kind[static_cast<std::size_t>(kind)];
+  ++totals.count;
+  totals.time += completed - requested;
+  totals.wait += wait;
 }
 
 SnoopingBus::Snoop SnoopingBus::ask_others(const BusTransaction& transaction) {
@@ -233,10 +265,8 @@ void SnoopingBus::fetch_line(BusTransaction& transaction, Snoop& snoop, Picoseco
     transaction.parts[LatencyPart::owner_supply] += supply;
     std::memcpy(transaction.line_data, snoop.supplied, line_bytes_);
     transaction.supplier = snoop.owner ? Supplier::owner : Supplier::sharer;
-    ++(snoop.owner ? totals_.supplied_by_owner : totals_.supplied_by_sharer);
   } else {
     transaction.supplier = Supplier::memory;
-    ++totals_.supplied_by_memory;
   }
   data_phase(transaction.kind, line_bytes_, time, transaction.parts);
 
@@ -255,8 +285,9 @@ void SnoopingBus::fetch_line(BusTransaction& transaction, Snoop& snoop, Picoseco
 }
 
 void SnoopingBus::address_phase(BusKind kind, Picoseconds& time, LatencyParts& parts) {
-  const std::uint64_t cycles = config_.arbitration_cycles + config_.address_cycles;
-  const Picoseconds start = address_bus_.book(next_edge(time, period_), cycles * period_);
+  const std::uint64_t cycles = config_.address_cycles;
+  const Picoseconds ready = next_edge(time, period_) + config_.arbitration_cycles * period_;
+  const Picoseconds start = address_bus_.book(ready, cycles * period_);
   parts[LatencyPart::wait_for_grant] += start - time;
   parts[LatencyPart::transfer] += cycles * period_;
   totals_.kind[static_cast<std::size_t>(kind)].address_cycles += cycles;
@@ -307,7 +338,7 @@ void SnoopingBus::access_memory(tlm::tlm_command command, std::uint64_t address,
   status = memory_payload_.get_response_status();
 }
 
-void SnoopingBus::pass_through(tlm::tlm_generic_payload& payload, int, sc_core::sc_time& delay, LatencyParts& parts) {
+void SnoopingBus::pass_through(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay, LatencyParts& parts) {
   const BusKind kind = payload.is_write() ? BusKind::io_write : BusKind::io_read;
   const Picoseconds base = now_ps();
   address_bus_.forget_before(base);
@@ -317,17 +348,15 @@ void SnoopingBus::pass_through(tlm::tlm_generic_payload& payload, int, sc_core::
   const Picoseconds waited_before = parts[LatencyPart::wait_for_grant];
 
   address_phase(kind, time, parts);
-  const int window = map_.find(payload.get_address(), payload.get_data_length());
+  const int window =
+      map_.find(payload.get_address(), std::min(payload.get_data_length(), payload.get_streaming_width()));
   if (kind == BusKind::io_write) data_phase(kind, payload.get_data_length(), time, parts);
   access_target(window, payload, time, parts);
   if (kind == BusKind::io_read) data_phase(kind, payload.get_data_length(), time, parts);
 
-  BusKindTotals& totals = totals_.kind[static_cast<std::size_t>(kind)];
-  ++totals.count;
-  totals.time += time - requested;
-  totals.wait += parts[LatencyPart::wait_for_grant] - waited_before;
   const Picoseconds now = now_ps();
   delay = from_ps(time > now ? time - now : 0);
+  if (payload.is_response_ok()) count(kind, requested, time, parts[LatencyPart::wait_for_grant] - waited_before);
 }
 
 unsigned SnoopingBus::debug(tlm::tlm_generic_payload& payload) {
@@ -348,7 +377,9 @@ unsigned SnoopingBus::debug(tlm::tlm_generic_payload& payload) {
     const std::uint64_t line = (address + at) / line_bytes_ * line_bytes_;
     const unsigned offset = static_cast<unsigned>(address + at - line);
     const unsigned piece = std::min(line_bytes_ - offset, done - at);
-    for (PresenceIndex::Mask rest = presence_.holders(line); rest != 0; rest &= rest - 1) {
+    PresenceIndex::Mask rest = presence_.holders(line);
+    if (requester_ >= 0) rest |= PresenceIndex::Mask{1} << requester_;
+    for (; rest != 0; rest &= rest - 1) {
       bool owner = false;
       std::uint8_t* copy = caches_[static_cast<std::size_t>(__builtin_ctzll(rest))]->copy_of(line, owner);
       if (copy == nullptr) continue;
@@ -376,6 +407,9 @@ bool SnoopingBus::direct_memory(tlm::tlm_generic_payload& payload, tlm::tlm_dmi&
     return false;
   }
   payload.set_address(address - window.base + window.target_base);
+  dmi.init();
+  dmi.set_start_address(payload.get_address());  // for a target that refuses and says no more
+  dmi.set_end_address(payload.get_address());
   const bool granted = targets_[static_cast<std::size_t>(index)]->socket->get_direct_mem_ptr(payload, dmi);
   payload.set_address(address);
 

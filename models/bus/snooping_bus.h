@@ -8,7 +8,7 @@
 //
 // Timing is annotated: nothing waits unless a target does (then later transactions queue behind it), the time
 // is added to the caller's delay and safe under temporal decoupling. In order, one transaction costs
-//   wait for the address bus; address_cycles + arbitration_cycles; snoop_cycles;
+//   arbitration_cycles, then wait for the address bus; address_cycles; snoop_cycles;
 //   a copy elsewhere: supply_cycles; or memory: what its target adds;
 //   wait for the data bus; one cycle for every width bytes moved.
 // update and write_through move the written bytes, write_through then ends when memory has them.
@@ -19,6 +19,7 @@
 
 #include <algorithm>
 #include <array>
+#include <deque>
 #include <memory>
 #include <string>
 #include <systemc>
@@ -39,7 +40,7 @@ struct SnoopingBusConfig {
   // Timing.
   sc_core::sc_time clock{5, sc_core::SC_NS};  // period; a whole number of picoseconds
   unsigned width_bytes = 8;          // bytes moved in a data-bus cycle: a power of two, 1 to 256
-  unsigned arbitration_cycles = 1;   // from request to address on the bus, when nobody competes
+  unsigned arbitration_cycles = 1;   // from request to grant when nobody competes; overlaps others' transfers
   unsigned address_cycles = 1;
   unsigned snoop_cycles = 1;         // the other caches' lookup
   unsigned supply_cycles = 2;        // a cache reads a line out of its store for another
@@ -81,7 +82,6 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface {
   SnoopingBusTotals totals() const;
   // The end of the latest booking of either bus, in simulation time.
   Picoseconds busy_until() const { return std::max(address_bus_.last_end(), data_bus_.last_end()); }
-  int ports() const { return static_cast<int>(caches_.size()); }
 
  private:
   // One per window: the bus's initiator socket and its backward path.
@@ -93,18 +93,20 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface {
   bool acquire() override;
   void release() override;
   void transact(BusTransaction& transaction, sc_core::sc_time& delay) override;
-  void pass_through(tlm::tlm_generic_payload& payload, int requester, sc_core::sc_time& delay,
-                    LatencyParts& parts) override;
+  void pass_through(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay, LatencyParts& parts) override;
   void dropped(int requester, std::uint64_t line) override { presence_.remove(line, requester); }
   unsigned debug(tlm::tlm_generic_payload& payload) override;
   bool direct_memory(tlm::tlm_generic_payload& payload, tlm::tlm_dmi& dmi) override;
 
   // The steps of one transaction.
   struct Snoop;
+  void count(BusKind kind, Picoseconds requested, Picoseconds completed, Picoseconds wait);
   Snoop ask_others(const BusTransaction& transaction);
   void commit_others(const BusTransaction& transaction, PresenceIndex::Mask others);
   bool memory_phase(BusTransaction& transaction, Snoop& snoop, Picoseconds& time);
   void fetch_line(BusTransaction& transaction, Snoop& snoop, Picoseconds& time);
+
+  class Waiter;
 
   // Books the address phase / `bytes` of data at or after `time`, and moves `time` to its end.
   void address_phase(BusKind kind, Picoseconds& time, LatencyParts& parts);
@@ -128,8 +130,9 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface {
   SnoopingBusTotals totals_;
 
   bool held_ = false;               // between acquire() and release()
-  int waiting_ = 0;                 // processes in acquire()
+  std::deque<const Waiter*> queue_; // processes in acquire(), first come first served
   sc_core::sc_event released_{"released"};
+  int requester_ = -1;              // of the transaction in progress, whose line arrives while a target waits
   tlm::tlm_generic_payload memory_payload_;  // reused: fetches, write-backs, write-throughs
   MemoryTimes memory_times_;
 };

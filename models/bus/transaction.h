@@ -65,8 +65,7 @@ class RequestInterface : public virtual sc_core::sc_interface {
   // `delay`. On a status other than TLM_OK_RESPONSE nothing has changed in any cache.
   virtual void transact(BusTransaction& transaction, sc_core::sc_time& delay) = 0;
   // An access to an uncached window: passed to the window's target as it is, address translated.
-  virtual void pass_through(tlm::tlm_generic_payload& payload, int requester, sc_core::sc_time& delay,
-                            LatencyParts& parts) = 0;
+  virtual void pass_through(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay, LatencyParts& parts) = 0;
   // The cache dropped its copy without a transaction (host bookkeeping; no modelled signal).
   virtual void dropped(int requester, std::uint64_t line) = 0;
   // Coherent debug access, no time, no state change: the owner's bytes, else memory's; writes reach every copy

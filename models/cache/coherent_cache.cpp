@@ -66,6 +66,39 @@ void copy_enabled(std::uint8_t* to, const std::uint8_t* from, std::size_t length
 
 }  // namespace
 
+// An owned victim between leave() and the end of its write-back. Unless that is done it comes back: if memory
+// refuses, and also if a target throws or the process is killed while a target waits.
+class CoherentCache::Departure {
+ public:
+  Departure(CoherentCache& cache, Slot& slot, bool owed, const Slot& before)
+      : cache_(cache), slot_(slot), before_(before), owed_(owed) {}
+  ~Departure() {
+    if (owed_) cache_.come_back(slot_, before_);
+  }
+  Departure(const Departure&) = delete;
+  Departure& operator=(const Departure&) = delete;
+  bool owed() const { return owed_; }
+  void done() { owed_ = false; }
+
+ private:
+  CoherentCache& cache_;
+  Slot& slot_;
+  Slot before_;
+  bool owed_;
+};
+
+// A line being fetched: debug accesses reach it while the target waits.
+class CoherentCache::Arrival {
+ public:
+  Arrival(CoherentCache& cache, std::uint64_t line) : cache_(cache) { cache_.incoming_line_ = line; }
+  ~Arrival() { cache_.incoming_line_ = ~std::uint64_t{0}; }
+  Arrival(const Arrival&) = delete;
+  Arrival& operator=(const Arrival&) = delete;
+
+ private:
+  CoherentCache& cache_;
+};
+
 void CacheTotals::add(const CacheTotals& other) {
   reads += other.reads;
   writes += other.writes;
@@ -116,7 +149,8 @@ void CoherentCache::b_transport(tlm::tlm_generic_payload& payload, sc_core::sc_t
   const std::uint64_t offset = address - line;
 
   // The short path: a hit, in one line, that changes no state.
-  if (payload.get_byte_enable_ptr() == nullptr && payload.get_streaming_width() >= length &&
+  if (payload.get_byte_enable_ptr() == nullptr && payload.get_data_ptr() != nullptr &&
+      payload.get_streaming_width() >= length &&
       std::uint64_t{length} - 1 < store_.line_bytes() - offset) {
     Slot* const slot = store_.find(line);
     if (slot != nullptr) {
@@ -170,7 +204,7 @@ void CoherentCache::access(tlm::tlm_generic_payload& payload, sc_core::sc_time& 
   } else if (window < 0) {
     progress.status = tlm::TLM_ADDRESS_ERROR_RESPONSE;
   } else if (!map_->window(window).cached) {
-    bus_socket->pass_through(payload, port_, delay, progress.parts);
+    bus_socket->pass_through(payload, delay, progress.parts);
     ++(payload.is_response_ok() ? totals_.uncached : totals_.errors);
     return;
   } else {
@@ -191,12 +225,11 @@ void CoherentCache::access(tlm::tlm_generic_payload& payload, sc_core::sc_time& 
 // Takes the access apart: every repetition of the streaming width, every line, in address order.
 void CoherentCache::access_cached(tlm::tlm_generic_payload& payload, Progress& progress) {
   const unsigned length = payload.get_data_length();
-  const std::uint8_t* enables = nullptr;
+  std::vector<std::uint8_t> enables;  // one a byte; empty: all enabled
   if (payload.get_byte_enable_ptr() != nullptr && payload.get_byte_enable_length() != 0) {
-    enables_.resize(length);
+    enables.resize(length);
     for (unsigned i = 0; i < length; ++i)
-      enables_[i] = payload.get_byte_enable_ptr()[i % payload.get_byte_enable_length()];
-    enables = enables_.data();
+      enables[i] = payload.get_byte_enable_ptr()[i % payload.get_byte_enable_length()];
   }
   for (unsigned beat = 0; beat < length; beat += payload.get_streaming_width()) {
     const unsigned beat_length = std::min(payload.get_streaming_width(), length - beat);
@@ -207,7 +240,7 @@ void CoherentCache::access_cached(tlm::tlm_generic_payload& payload, Progress& p
       piece.offset = static_cast<std::uint32_t>(payload.get_address() + at - piece.line);
       piece.length = std::min(store_.line_bytes() - piece.offset, beat_length - at);
       piece.data = payload.get_data_ptr() + beat + at;
-      piece.byte_enable = enables == nullptr ? nullptr : enables + beat + at;
+      piece.byte_enable = enables.empty() ? nullptr : enables.data() + beat + at;
       at += piece.length;
       if (piece.byte_enable != nullptr &&
           std::find(piece.byte_enable, piece.byte_enable + piece.length, TLM_BYTE_ENABLED) ==
@@ -284,22 +317,22 @@ void CoherentCache::judge(const Piece& piece, Progress& progress) {
 void CoherentCache::fetch(const Piece& piece, BusTransaction& transaction, Progress& progress, Slot*& slot) {
   Slot& place = slot != nullptr ? *slot : store_.victim(piece.line);
   const Slot victim = place;
-  const bool owed = slot == nullptr && victim.state != absent && leave(place);
+  Departure departure(*this, place, slot == nullptr && victim.state != absent && leave(place), victim);
 
   const Picoseconds requested = now_ps() + to_ps(progress.delay);
   transaction.line_data = incoming_.data();
-  bus_socket->transact(transaction, progress.delay);
-
-  if (owed && transaction.status == tlm::TLM_OK_RESPONSE) {
+  {
+    const Arrival arrival(*this, piece.line);
+    bus_socket->transact(transaction, progress.delay);
+  }
+  if (departure.owed() && transaction.status == tlm::TLM_OK_RESPONSE) {
     const Picoseconds now = now_ps();
     sc_core::sc_time unattended = from_ps(requested > now ? requested - now : 0);
     transaction.status = write_back(victim.line, leaving_, unattended);
     if (transaction.status != tlm::TLM_OK_RESPONSE) surrender(piece, transaction, unattended);
   }
-  if (transaction.status != tlm::TLM_OK_RESPONSE) {
-    if (owed) come_back(place, victim);
-    return;
-  }
+  if (transaction.status != tlm::TLM_OK_RESPONSE) return;
+  departure.done();
   if (slot == nullptr) store_.fill(place, piece.line);
   slot = &place;
   std::memcpy(store_.bytes(place), incoming_.data(), incoming_.size());
@@ -358,16 +391,19 @@ tlm::tlm_response_status CoherentCache::write_back(std::uint64_t line, std::vect
 // Writes an occupied slot's line back if it is owned, else drops it. If memory refuses, it stays.
 tlm::tlm_response_status CoherentCache::give_up(Slot& slot, sc_core::sc_time& delay) {
   const Slot before = slot;
-  if (!leave(slot)) return tlm::TLM_OK_RESPONSE;
+  Departure departure(*this, slot, leave(slot), before);
+  if (!departure.owed()) return tlm::TLM_OK_RESPONSE;
   const tlm::tlm_response_status status = write_back(before.line, leaving_, delay);
-  if (status != tlm::TLM_OK_RESPONSE) come_back(slot, before);
+  if (status == tlm::TLM_OK_RESPONSE) departure.done();
   return status;
 }
 
 tlm::tlm_response_status CoherentCache::replace(std::uint64_t address, const sc_core::sc_time& delay) {
+  const sc_core::sc_time before = sc_core::sc_time_stamp();
   Grant grant(*bus_socket.operator->());
   Slot* const slot = store_.find(store_.line_of(address));
-  sc_core::sc_time unattended = delay;
+  const sc_core::sc_time passed = sc_core::sc_time_stamp() - before;
+  sc_core::sc_time unattended = passed > delay ? sc_core::SC_ZERO_TIME : delay - passed;
   return slot == nullptr ? tlm::TLM_OK_RESPONSE : give_up(*slot, unattended);
 }
 
@@ -421,9 +457,9 @@ bool CoherentCache::commit(const BusTransaction& transaction) {
 }
 
 std::uint8_t* CoherentCache::copy_of(std::uint64_t line, bool& owner) {
-  if (line == leaving_line_) {
-    owner = true;
-    return leaving_.data();
+  if (line == leaving_line_ || line == incoming_line_) {
+    owner = line == leaving_line_;
+    return owner ? leaving_.data() : incoming_.data();
   }
   Slot* const slot = store_.find(line);
   if (slot == nullptr) return nullptr;

@@ -7,7 +7,8 @@
 // CPU side, TLM-2.0 base protocol (IEEE 1666-2011, 11 to 14):
 //   b_transport     adds the access's latency to the delay it is given and returns at once; waits only if another
 //                   process holds the bus or a target of the bus waits. Safe under temporal decoupling.
-//   nb_transport_fw completes early: TLM_COMPLETED with the latency added to the time.
+//   nb_transport_fw completes early: TLM_COMPLETED with the latency added to the time. It may not wait, so it is
+//                   for platforms in which no target of the bus does.
 //   transport_dbg   sees and writes the coherent value, takes no time, changes no state.
 //   DMI             is refused for cached windows, passed on for uncached ones.
 // An access that crosses lines is split; each part is coherent, the whole is not one atom. Byte enables and
@@ -25,6 +26,7 @@
 #include <string>
 #include <systemc>
 #include <tlm>
+#include <vector>
 
 #include "earshot/bus/transaction.h"
 #include "earshot/cache/geometry.h"
@@ -120,6 +122,9 @@ class CoherentCache : public sc_core::sc_module,
     tlm::tlm_response_status status = tlm::TLM_OK_RESPONSE;
   };
 
+  class Departure;
+  class Arrival;
+
   void access(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay);
   void access_cached(tlm::tlm_generic_payload& payload, Progress& progress);
   void access_line(const Piece& piece, Progress& progress);
@@ -145,8 +150,8 @@ class CoherentCache : public sc_core::sc_module,
   // The write-back slot: a victim on its way to memory is out of the store but still seen by debug accesses.
   std::uint64_t leaving_line_ = ~std::uint64_t{0};
   std::vector<std::uint8_t> leaving_;
+  std::uint64_t incoming_line_ = ~std::uint64_t{0};
   std::vector<std::uint8_t> incoming_;  // a line being fetched
-  std::vector<std::uint8_t> enables_;  // byte enables of the access at hand, one a byte
 
   std::uint64_t fast_reads_ = 0;       // hits that took the short path: all cost hit_ps_
   std::uint64_t fast_writes_ = 0;

@@ -42,8 +42,6 @@ void PlainMemory::b_transport(tlm::tlm_generic_payload& payload, sc_core::sc_tim
   calendar_.forget_before(now);
   const Picoseconds start = calendar_.book(ready, service);
   delay = from_ps(start + service - now);
-  queue_time_ += start - ready;
-  ++accesses_;
   if (auto* times = payload.get_extension<MemoryTimes>(); times != nullptr) times->queue += start - ready;
 
   move_bytes(payload);

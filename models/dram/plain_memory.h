@@ -35,8 +35,6 @@ class PlainMemory : public sc_core::sc_module, private tlm::tlm_fw_transport_if<
 
   // Serving accesses: the sum over all of them. Utilisation is this over elapsed time.
   Picoseconds busy_time() const { return calendar_.busy_time(); }
-  Picoseconds queue_time() const { return queue_time_; }  // waiting, the sum over all accesses
-  std::uint64_t accesses() const { return accesses_; }
   Picoseconds busy_until() const { return calendar_.last_end(); }
 
   // Copies bytes out, without time or side effect. REQUIRES: address + length does not pass the end of the space.
@@ -53,8 +51,6 @@ class PlainMemory : public sc_core::sc_module, private tlm::tlm_fw_transport_if<
   PlainMemoryConfig config_;
   SparseBytes bytes_;
   Calendar calendar_;
-  Picoseconds queue_time_ = 0;
-  std::uint64_t accesses_ = 0;
 };
 
 }  // namespace earshot

@@ -22,7 +22,6 @@ class SparseBytes {
 
   // The page that holds `address`, created if need be; stays valid for the life of this object.
   std::uint8_t* page(std::uint64_t address);
-  std::size_t pages() const { return pages_.size(); }
 
  private:
   using Page = std::array<std::uint8_t, page_bytes>;

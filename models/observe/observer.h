@@ -3,7 +3,7 @@
 //
 // An Observer is told what caches and buses do; it never steers. Modules hold a pointer to one, null when
 // nobody watches, which then costs a test of that pointer. Called from the process that performs the access,
-// at the instant the access takes effect. The pointers in the arguments are valid during the call only.
+// at the instant the access takes effect. Bytes are valid during the call only, a State as long as its Table.
 #pragma once
 
 #include <cstddef>

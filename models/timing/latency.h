@@ -13,7 +13,7 @@ namespace earshot {
 
 enum class LatencyPart : std::uint8_t {
   hit,             // the cache looks the line up
-  wait_for_grant,  // the address bus or the data bus is not free, or its clock edge has not come
+  wait_for_grant,  // arbitration, and the address bus or the data bus is not free or its clock edge has not come
   snoop,           // the other caches look the line up and answer
   owner_supply,    // another cache reads the line out of its store
   memory_queue,    // the memory serves somebody else

@@ -11,7 +11,7 @@ namespace earshot {
 
 using Picoseconds = std::uint64_t;
 
-// REQUIRES: the kernel's time resolution is 1 ps, its default; modules check that at end of elaboration.
+// REQUIRES: the kernel's time resolution is 1 ps, its default; SnoopingBus checks that at end of elaboration.
 inline Picoseconds to_ps(const sc_core::sc_time& time) { return time.value(); }
 inline sc_core::sc_time from_ps(Picoseconds ps) { return sc_core::sc_time::from_value(ps); }
 

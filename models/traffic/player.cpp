@@ -28,12 +28,12 @@ void invent(std::uint32_t initiator, std::uint64_t number, std::uint8_t* bytes, 
 }
 
 // Calls `step(delay)` with the local time until it returns false, synchronising when the quantum is used up and at
-// the end. Returns what stopped it early, or null; kernel reports are not for us and pass through.
+// the end. Stores what stopped it early in `error` before it says so: hooks.failed() may end the simulation, and then
+// this process never goes on. Kernel reports are not for us and pass through.
 template <typename Step>
-std::exception_ptr run_decoupled(const PlayerHooks& hooks, Step step) {
+void run_decoupled(const PlayerHooks& hooks, std::exception_ptr& error, Step step) {
   tlm_utils::tlm_quantumkeeper keeper;
   keeper.reset();
-  std::exception_ptr error;
   try {
     for (sc_core::sc_time delay; step(delay); delay = keeper.get_local_time()) {
       keeper.set(delay);
@@ -46,10 +46,15 @@ std::exception_ptr run_decoupled(const PlayerHooks& hooks, Step step) {
     if (hooks.failed) hooks.failed();
   }
   keeper.sync();
-  return error;
 }
 
 }  // namespace
+
+PlayError no_cache_for(const Access& access, std::uint64_t number, std::size_t caches) {
+  return PlayError("access " + std::to_string(number) + " (" + text_of(access) + ") is for initiator " +
+                   std::to_string(access.initiator) + ", but there are only " + std::to_string(caches) +
+                   " caches: set caches.count to " + std::to_string(access.initiator + 1) + " or more");
+}
 
 Player::Player(sc_core::sc_module_name name, std::uint32_t initiator, sc_core::sc_time think, PlayerHooks hooks)
     : sc_module(name), initiator_(initiator), think_(think), hooks_(std::move(hooks)), bytes_(largest_access) {
@@ -59,7 +64,7 @@ Player::Player(sc_core::sc_module_name name, std::uint32_t initiator, sc_core::s
 void Player::play() {
   if (source_ == nullptr) return;
   Access access;
-  error_ = run_decoupled(hooks_, [&](sc_core::sc_time& delay) {
+  run_decoupled(hooks_, error_, [&](sc_core::sc_time& delay) {
     if (!source_->next(access)) return false;
     perform(access, delay);
     return true;
@@ -119,7 +124,7 @@ RecordedOrder::RecordedOrder(sc_core::sc_module_name name, std::vector<Player*> 
 
 void RecordedOrder::play() {
   Access access;
-  error_ = run_decoupled(hooks_, [&](sc_core::sc_time& delay) {
+  run_decoupled(hooks_, error_, [&](sc_core::sc_time& delay) {
     if (!source_->next(access)) return false;
     step(access, delay);
     return true;
@@ -129,10 +134,7 @@ void RecordedOrder::play() {
 
 void RecordedOrder::step(const Access& access, sc_core::sc_time& delay) {
   ++played_;
-  if (access.initiator >= players_.size())
-    throw PlayError("access " + std::to_string(played_) + " (" + text_of(access) + ") is for initiator " +
-                    std::to_string(access.initiator) + ", but there are only " + std::to_string(players_.size()) +
-                    " caches: set caches.count to " + std::to_string(access.initiator + 1) + " or more");
+  if (access.initiator >= players_.size()) throw no_cache_for(access, played_, players_.size());
   Player& player = *players_[access.initiator];
   if (check_values_) learn(access);
   player.perform(access, delay);

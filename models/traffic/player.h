@@ -36,11 +36,14 @@ struct PlayerHooks {
   std::function<void()> failed;
 };
 
-// An access the platform answered with an error, or a source that failed: what() names the access.
+// An access that the platform answered with an error or has no cache for: what() names the access.
 class PlayError : public std::runtime_error {
  public:
   using std::runtime_error::runtime_error;
 };
+
+// The error for the `number`-th access of a stream, whose initiator is not below `caches`.
+PlayError no_cache_for(const Access& access, std::uint64_t number, std::size_t caches);
 
 class Player : public sc_core::sc_module {
  public:

@@ -20,15 +20,15 @@ TEST_CASE("a miss in memory costs address, snoop, memory and four beats, a hit t
   System system(load_table("dirty-owner-update"));
   simulate([&] {
     system.cpu(0).read(0x40);
-    // 1 lookup, wait 4 for the clock edge, 2 x 5 address, 5 snoop, 40 + 4 x 5 memory, 4 x 5 data
+    // 1 lookup; 4 to the clock edge and 5 of arbitration; 5 address; 5 snoop; 40 + 4 x 5 memory; 4 x 5 data
     CHECK(ns(system.cpu(0).delay) == Approx(1 + 4 + 10 + 5 + 60 + 20));
     system.cpu(0).read(0x44);
     CHECK(ns(system.cpu(0).delay) == Approx(1));
     const CacheTotals totals = system.cache(0).totals();
     CHECK(totals.parts.total() == totals.latency.sum());
     CHECK(totals.parts[LatencyPart::hit] == 2000);
-    CHECK(totals.parts[LatencyPart::wait_for_grant] == 4000);
-    CHECK(totals.parts[LatencyPart::transfer] == 30000);
+    CHECK(totals.parts[LatencyPart::wait_for_grant] == 9000);
+    CHECK(totals.parts[LatencyPart::transfer] == 25000);
     CHECK(totals.parts[LatencyPart::snoop] == 5000);
     CHECK(totals.parts[LatencyPart::memory_array] == 60000);
   });
@@ -60,11 +60,11 @@ TEST_CASE("a second request waits for the first one's address phase, not for its
   simulate([&] {
     system.cpu(0).read(0x40);
     system.cpu(1).read(0x80);
-    // the address bus is free at 15 ns; the memory serves the first until 80 ns, the second from then on
+    // the address bus is free at 15 ns, the memory, which is asked at 25 ns, at 80 ns
     CHECK(ns(system.cpu(1).delay) == Approx(80 + 60 + 20));
     const CacheTotals totals = system.cache(1).totals();
     CHECK(totals.parts[LatencyPart::wait_for_grant] == 14000);
-    CHECK(totals.parts[LatencyPart::memory_queue] == 50000);
+    CHECK(totals.parts[LatencyPart::memory_queue] == 55000);
     CHECK(totals.parts.total() == totals.latency.sum());
   });
 }

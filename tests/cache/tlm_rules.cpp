@@ -159,6 +159,38 @@ TEST_CASE("accesses without data, length or streaming width are burst errors", "
   });
 }
 
+TEST_CASE("a hit without a data pointer is a burst error like a miss", "[cache]") {
+  System system(dirty_owner());
+  simulate([&] {
+    system.cpu(0).read(0x40);
+    CHECK(system.cpu(0).transport(tlm::TLM_READ_COMMAND, 0x40, nullptr, 4) == tlm::TLM_BURST_ERROR_RESPONSE);
+  });
+}
+
+TEST_CASE("a streaming access to an uncached window needs the window to hold one repetition only", "[cache]") {
+  SystemOptions options;
+  options.windows = {{"memory", 0, 0x10000, true, 0}, {"fifo", 0x20000, 4, false, 0}};
+  System system(dirty_owner(), options);
+  simulate([&] {
+    std::uint8_t data[8] = {1, 2, 3, 4, 5, 6, 7, 8};
+    CHECK(system.cpu(0).transport(tlm::TLM_WRITE_COMMAND, 0x20000, data, 8, 4) == tlm::TLM_OK_RESPONSE);
+    CHECK(system.cpu(0).read(0x20000) == 0x08070605);
+    CHECK(system.cpu(0).transport(tlm::TLM_WRITE_COMMAND, 0x20000, data, 8) == tlm::TLM_ADDRESS_ERROR_RESPONSE);
+  });
+}
+
+TEST_CASE("a refused transaction is counted nowhere", "[cache]") {
+  RefusingSystem system;
+  simulate([&] {
+    system.memory.refuse_reads = true;
+    system.cpu.read(0x40);
+    const SnoopingBusTotals totals = system.bus.totals();
+    CHECK(totals.kind[static_cast<std::size_t>(BusKind::read)].count == 0);
+    CHECK(totals.supplied_by_memory == 0);
+    CHECK(totals.block_reads == 0);
+  });
+}
+
 TEST_CASE("an address in no window, or leaving its window, is an address error", "[cache]") {
   SystemOptions options;
   options.windows = {{"memory", 0, 0x1000, true, 0}};
