@@ -16,24 +16,24 @@ std::unique_ptr<AccessSource> open_source(const Settings& settings, std::uint32_
   return open_recording(settings.recording, only);
 }
 
-// The whole recording, refusing initiators without a cache, of which it passes on the first one's accesses. In
-// concurrent order every other player sees its own accesses only, so nobody else would notice.
+// One initiator's accesses of a recording, refusing a recording that has initiators without a cache: in concurrent
+// order nobody plays those, so nobody else would notice.
 class FirstInitiator : public AccessSource {
  public:
-  FirstInitiator(std::unique_ptr<AccessSource> source, unsigned caches) : source_(std::move(source)), caches_(caches) {}
+  FirstInitiator(std::unique_ptr<RecordingReader> reader, unsigned caches)
+      : reader_(std::move(reader)), caches_(caches) {}
   bool next(Access& access) override {
-    while (source_->next(access)) {
-      ++played_;
-      if (access.initiator >= caches_) throw no_cache_for(access, played_, caches_);
-      if (access.initiator == 0) return true;
-    }
-    return false;
+    const bool more = reader_->next(access);
+    const std::uint64_t without_cache = caches_ < 64 ? reader_->initiators_seen() >> caches_ : 0;
+    if (without_cache == 0) return more;
+    const int first = static_cast<int>(caches_) + __builtin_ctzll(without_cache);
+    throw PlayError("has accesses of initiator " + std::to_string(first) + ", but there are only " +
+                    std::to_string(caches_) + " caches: set caches.count to " + std::to_string(first + 1) + " or more");
   }
 
  private:
-  std::unique_ptr<AccessSource> source_;
+  std::unique_ptr<RecordingReader> reader_;
   unsigned caches_;
-  std::uint64_t played_ = 0;
 };
 
 }  // namespace
@@ -106,7 +106,7 @@ void Platform::build_players(const Settings& settings, PlayerHooks hooks) {
     if (settings.order == Order::recorded) continue;
     if (i == 0 && !settings.uses_pattern)
       players_.back()->set_source(
-          std::make_unique<FirstInitiator>(open_recording(settings.recording), settings.caches));
+          std::make_unique<FirstInitiator>(open_recording(settings.recording, 0), settings.caches));
     else
       players_.back()->set_source(open_source(settings, i));
   }

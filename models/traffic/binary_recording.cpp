@@ -52,6 +52,7 @@ class BinaryReader : public RecordingReader {
   }
 
   const RecordingNotes& notes() const override { return notes_; }
+  std::uint64_t initiators_seen() const override { return initiators_seen_; }
 
  private:
   // `offset` counts from the beginning of what is consumed.
@@ -145,6 +146,7 @@ class BinaryReader : public RecordingReader {
     decoder_.open({bytes + frame_bytes, bytes + frame_bytes + head},
                   {bytes + parts_at, bytes + parts_at + parts}, only_);
     count_ += decoder_.count();
+    initiators_seen_ |= decoder_.initiators();
     frame_size_ = parts_at + parts;
   }
 
@@ -164,6 +166,7 @@ class BinaryReader : public RecordingReader {
 
   std::unique_ptr<CompressedSource> source_;
   const std::uint32_t only_;
+  std::uint64_t initiators_seen_ = 0;
   RecordingNotes notes_;
   BlockDecoder decoder_;
   std::size_t frame_size_ = 0;  // of the block being decoded, at the front of the source's window

@@ -199,12 +199,12 @@ void BlockDecoder::open_streams(Bytes& head, Bytes parts, std::uint32_t only) {
   };
   stream_count_ = take_below(most_initiators + 1, "it has more streams than there are initiators");
   if (streams_.size() < stream_count_) streams_.resize(stream_count_);
-  std::uint64_t seen = 0;
+  initiators_ = 0;
   for (std::size_t i = 0; i < stream_count_; ++i) {
     Stream& stream = streams_[i];
     stream.initiator = take_below(most_initiators, "a stream's initiator is out of range");
-    if ((seen >> stream.initiator & 1) != 0) malformed("an initiator has two streams");
-    seen |= std::uint64_t{1} << stream.initiator;
+    if ((initiators_ >> stream.initiator & 1) != 0) malformed("an initiator has two streams");
+    initiators_ |= std::uint64_t{1} << stream.initiator;
     stream.left = take_below(block_accesses + 1 - count_, "it has more accesses than a block may");
     count_ += stream.left;
     stream.ops = take_column();

@@ -89,6 +89,8 @@ class BlockDecoder {
   // readable. With `only` set, checks and decodes that initiator's part alone. Throws BlockError.
   void open(Bytes head, Bytes parts, std::uint32_t only);
 
+  // Bit i: the block has accesses of initiator i, whatever `only` is.
+  std::uint64_t initiators() const { return initiators_; }
   // Accesses in the block, whatever `only` is.
   std::uint32_t count() const { return count_; }
 
@@ -116,6 +118,7 @@ class BlockDecoder {
   std::uint32_t left_ = 0;  // to decode from this block
   std::uint32_t count_ = 0;
   bool only_one_ = false;
+  std::uint64_t initiators_ = 0;
 };
 
 }  // namespace earshot

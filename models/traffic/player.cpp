@@ -50,12 +50,6 @@ void run_decoupled(const PlayerHooks& hooks, std::exception_ptr& error, Step ste
 
 }  // namespace
 
-PlayError no_cache_for(const Access& access, std::uint64_t number, std::size_t caches) {
-  return PlayError("access " + std::to_string(number) + " (" + text_of(access) + ") is for initiator " +
-                   std::to_string(access.initiator) + ", but there are only " + std::to_string(caches) +
-                   " caches: set caches.count to " + std::to_string(access.initiator + 1) + " or more");
-}
-
 Player::Player(sc_core::sc_module_name name, std::uint32_t initiator, sc_core::sc_time think, PlayerHooks hooks)
     : sc_module(name), initiator_(initiator), think_(think), hooks_(std::move(hooks)), bytes_(largest_access) {
   sc_core::sc_spawn([this] { play(); }, "play");
@@ -134,7 +128,10 @@ void RecordedOrder::play() {
 
 void RecordedOrder::step(const Access& access, sc_core::sc_time& delay) {
   ++played_;
-  if (access.initiator >= players_.size()) throw no_cache_for(access, played_, players_.size());
+  if (access.initiator >= players_.size())
+    throw PlayError("access " + std::to_string(played_) + " (" + text_of(access) + ") is for initiator " +
+                    std::to_string(access.initiator) + ", but there are only " + std::to_string(players_.size()) +
+                    " caches: set caches.count to " + std::to_string(access.initiator + 1) + " or more");
   Player& player = *players_[access.initiator];
   if (check_values_) learn(access);
   player.perform(access, delay);

@@ -42,9 +42,6 @@ class PlayError : public std::runtime_error {
   using std::runtime_error::runtime_error;
 };
 
-// The error for the `number`-th access of a stream, whose initiator is not below `caches`.
-PlayError no_cache_for(const Access& access, std::uint64_t number, std::size_t caches);
-
 class Player : public sc_core::sc_module {
  public:
   tlm_utils::simple_initiator_socket<Player> initiator_socket{"initiator_socket"};

@@ -66,6 +66,9 @@ class AccessSource {
 class RecordingReader : public AccessSource {
  public:
   virtual const RecordingNotes& notes() const = 0;
+  // Bit i: what has been read so far has accesses of initiator i, also if only another's are yielded. At the end of
+  // the recording that is all of them.
+  virtual std::uint64_t initiators_seen() const = 0;
 };
 
 constexpr std::uint32_t every_initiator = ~std::uint32_t{0};

@@ -69,6 +69,7 @@ class TextReader : public RecordingReader {
       const std::string_view row = without_comment(line);
       if (row.empty()) continue;
       parse_row(row, access);
+      initiators_seen_ |= std::uint64_t{1} << access.initiator;
       if (only_ != every_initiator && access.initiator != only_) continue;
       at_end_ = false;
       return true;
@@ -77,6 +78,7 @@ class TextReader : public RecordingReader {
   }
 
   const RecordingNotes& notes() const override { return notes_; }
+  std::uint64_t initiators_seen() const override { return initiators_seen_; }
 
  private:
   [[noreturn]] void fail(const std::string& what) const {
@@ -247,6 +249,7 @@ class TextReader : public RecordingReader {
 
   std::unique_ptr<CompressedSource> source_;
   const std::uint32_t only_;
+  std::uint64_t initiators_seen_ = 0;
   RecordingNotes notes_;
   std::vector<Column> columns_;  // of the header, in its order
   std::size_t fields_needed_ = 0;

@@ -31,13 +31,28 @@ TEST_CASE("replaying a recording over a map of bytes gives no wrong read, for C 
   }
 }
 
+TEST_CASE(
+    "a program that waits on futexes and pipes, and handles signals, is recorded without a wrong read") {
+  for (const std::string& build : builds()) {
+    for (const bool free_running : {false, true}) {
+      RecordOptions options;
+      options.free_running = free_running;
+      const Recorded recorded = recording_of({program_in(build, "waiting_cpp")}, options);
+      INFO(build << "\n" << recorded.summary);
+      CHECK(recorded.result.exit_status == 0);
+      CHECK(recorded.result.deadlock.empty());
+      if (!free_running) CHECK(wrong_reads(recorded.accesses) == 0);
+    }
+  }
+}
+
 TEST_CASE("the same seed gives the same recording, byte for byte, and another seed another one") {
   for (const std::string& build : builds()) {
     for (const char* const program : everything) {
       INFO(build << " " << program);
       const Recorded first = recording_of({program_in(build, program)});
       const Recorded second = recording_of({program_in(build, program)});
-      CHECK(first.bytes == second.bytes);
+      if (can_be_repeated(first)) CHECK(first.bytes == second.bytes);
       RecordOptions other_seed;
       other_seed.seed = 2;
       CHECK(recording_of({program_in(build, program)}, other_seed).accesses != first.accesses);
@@ -51,7 +66,7 @@ TEST_CASE("the recording does not depend on the environment") {
   REQUIRE(setenv("EARSHOT_TEST_VARIABLE", std::string(5001, 'e').c_str(), 1) == 0);
   const Recorded after = recording_of(program);
   unsetenv("EARSHOT_TEST_VARIABLE");
-  CHECK(before.bytes == after.bytes);
+  if (can_be_repeated(before)) CHECK(before.bytes == after.bytes);
 }
 
 TEST_CASE("a program linked with the recorder runs by itself, too") {

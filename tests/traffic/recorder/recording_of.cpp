@@ -33,6 +33,12 @@ Recorded recording_of(const std::vector<std::string>& program, RecordOptions opt
   return recorded;
 }
 
+bool can_be_repeated(const Recorded& recorded) {
+  if (!recorded.result.addresses_fixed)
+    WARN("addresses are random here: that recordings repeat is not checked");
+  return recorded.result.addresses_fixed;
+}
+
 std::string record_error_of(const std::vector<std::string>& program, RecordOptions options) {
   const TemporaryFolder folder;
   options.into = folder.file("recording");

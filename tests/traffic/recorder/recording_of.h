@@ -23,6 +23,9 @@ struct Recorded {
 // Records in binary form, in a folder that is gone afterwards. `options.into` is not looked at.
 Recorded recording_of(const std::vector<std::string>& program, RecordOptions options = {});
 
+// False, with a warning, where the system forbids to switch off address randomisation, as some containers do.
+bool can_be_repeated(const Recorded& recorded);
+
 // The message of the RecordError when recording it, with the folder of the test programs cut from it; "no
 // error" if none. Fails if a file is left behind.
 std::string record_error_of(const std::vector<std::string>& program, RecordOptions options = {});

@@ -136,12 +136,12 @@ static void timed(void) {
   clock_gettime(CLOCK_MONOTONIC, &after);
   require((after.tv_sec - before.tv_sec) * 1000000000 + after.tv_nsec - before.tv_nsec >= 5000000, "sleep");
   clock_gettime(CLOCK_REALTIME, &until);
-  until.tv_sec += 5;
+  until.tv_nsec += until.tv_nsec < 980000000 ? 10000000 : 0;
   sem_t never;
   sem_init(&never, 0, 0);
   require(sem_timedwait(&never, &until) == -1 && errno == ETIMEDOUT, "sem_timedwait");
   pthread_mutex_lock(&mutex);
-  until.tv_sec += 5;
+  until.tv_nsec += until.tv_nsec < 980000000 ? 10000000 : 0;
   require(pthread_cond_timedwait(&changed, &mutex, &until) == ETIMEDOUT, "pthread_cond_timedwait");
   pthread_mutex_unlock(&mutex);
 }

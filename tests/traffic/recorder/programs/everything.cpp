@@ -227,11 +227,11 @@ void futures() {
   std::mutex mutex;
   std::condition_variable never;
   std::unique_lock<std::mutex> lock(mutex);
-  require(!never.wait_for(lock, std::chrono::seconds(3), [] { return false; }), "timed wait");
+  require(!never.wait_for(lock, std::chrono::milliseconds(30), [] { return false; }), "timed wait");
   std::timed_mutex timed;
   timed.lock();
   bool got = true;
-  std::thread([&] { got = timed.try_lock_for(std::chrono::seconds(2)); }).join();
+  std::thread([&] { got = timed.try_lock_for(std::chrono::milliseconds(20)); }).join();
   require(!got, "timed lock");
 }
 

@@ -45,5 +45,5 @@ int main(void) {
   memmove(box.overlapping + 8, box.overlapping, 16);
   __atomic_store_n(&box.wide, (__int128)3 << 64 | 4, __ATOMIC_SEQ_CST);
   box.number = 8;
-  return 0;
+  return *(volatile int32_t*)&box.to.a;
 }
