@@ -2,6 +2,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "report.h"
 
+#include <algorithm>
 #include <array>
 #include <cstdarg>
 #include <cstdio>
@@ -101,13 +102,12 @@ std::string saturation(const Json& results) {
   std::array<Resource, 3> resources{{{"the address bus", real(results.at("bus"), "address-utilisation")},
                                      {"the data bus", real(results.at("bus"), "data-utilisation")},
                                      {"memory", real(results.at("memory"), "utilisation")}}};
-  std::size_t first = 0;
+  std::stable_sort(resources.begin(), resources.end(),
+                   [](const Resource& a, const Resource& b) { return a.busy > b.busy; });
+  std::string text = "First to saturate is " + std::string(resources[0].name) +
+                     format(", %.1f %% busy now", 100 * resources[0].busy);
   for (std::size_t i = 1; i < resources.size(); ++i)
-    if (resources[i].busy > resources[first].busy) first = i;
-  std::string text = "First to saturate is " + std::string(resources[first].name) +
-                     format(", %.1f %% busy now", 100 * resources[first].busy);
-  for (std::size_t i = 0; i < resources.size(); ++i)
-    if (i != first) text += format("; %s %.1f %%", resources[i].name, 100 * resources[i].busy);
+    text += format("; %s %.1f %%", resources[i].name, 100 * resources[i].busy);
   text += format(". The run takes %.3f us", real(results, "elapsed-ns") / 1000);
   if (results.contains("baseline"))
     text += format(", the baseline %.3f us", real(results.at("baseline"), "elapsed-ns") / 1000);
