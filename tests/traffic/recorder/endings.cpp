@@ -61,12 +61,41 @@ TEST_CASE("the summary says how a program ended unless it ended well") {
 }
 
 TEST_CASE("the summary gives threads, accesses, what was learned, order and seed") {
-  CHECK(ending("return").summary ==
-        "recording: 1,001 accesses (1 reads, 1,000 writes) of 1 thread\n"
-        "order and values exact; seed 1, 0 hand-overs\n"
-        "learned: 8 bytes held a value before the recording; 0 writes by code without hooks, put in before "
-        "their first "
-        "read\n");
+  RecordOptions options;
+  options.into = "engine.earshot";
+  options.program = {"build/engine"};
+  options.seed = 7;
+  RecordResult result;
+  result.reads = 1'234'567;
+  result.writes = 89;
+  result.first_read_bytes = 4'161;
+  result.added_writes = 3;
+  result.threads = 9;
+  result.most_alive = 4;
+  result.hand_overs = 1'000;
+  CHECK(
+      summary_of(options, result) ==
+      "engine.earshot: 1,234,656 accesses (1,234,567 reads, 89 writes) of 9 threads, 4 at once\n"
+      "order and values exact; seed 7, 1,000 hand-overs\n"
+      "learned: 4,161 bytes held a value before the recording; 3 writes by code without hooks, put in before "
+      "their first read\n");
+  result.addresses_fixed = false;
+  CHECK(summary_of(options, result)
+            .find("\nthe system would not switch off address randomisation: another run has "
+                  "other addresses\n") != std::string::npos);
+  options.free_running = true;
+  CHECK(summary_of(options, result) ==
+        "engine.earshot: 1,234,656 accesses (1,234,567 reads, 89 writes) of 9 threads, 4 at once\n"
+        "order between threads approximate, no values: threads ran freely\n");
+}
+
+TEST_CASE("what is reported is what was recorded") {
+  const RecordResult result = ending("return").result;
+  CHECK(result.reads == 1);  // of a word of the command line
+  CHECK(result.writes == 1000);
+  CHECK(result.first_read_bytes == 8);
+  CHECK(result.added_writes == 0);
+  CHECK(result.threads == 1);
 }
 
 TEST_CASE("a program that waits for ever is ended with a message saying who waits where") {
@@ -88,7 +117,9 @@ TEST_CASE("the limit ends the recording at exactly that many accesses, not the p
   CHECK(recorded.result.limit_reached);
   CHECK(recorded.result.exit_status == 3);
   const Recorded whole = ending("status");
-  CHECK(std::equal(recorded.accesses.begin(), recorded.accesses.end(), whole.accesses.begin()));
+  if (can_be_repeated(whole)) {
+    CHECK(std::equal(recorded.accesses.begin(), recorded.accesses.end(), whole.accesses.begin()));
+  }
   CHECK_FALSE(whole.result.limit_reached);
 }
 
