@@ -90,10 +90,10 @@ void outside() {
   std::atomic<bool> done{false};
   int ticks = 0;
   std::thread ticker([&] {
-    while (!done) {
+    do {
       ++ticks;
       std::this_thread::sleep_for(milliseconds(1));
-    }
+    } while (!done);
   });
   std::thread echo([&] {
     char letter = 0;
