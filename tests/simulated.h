@@ -158,4 +158,30 @@ class System {
   std::unique_ptr<CoherenceMonitor> monitor;
 };
 
+// A cache of one line over a target of the test's own, whose socket is called target_socket.
+template <typename Memory>
+struct OneLineSystem {
+  Memory memory{"memory"};
+  SnoopingBus bus;
+  UpdatingCache cache;
+  Driver cpu{"cpu"};
+
+  OneLineSystem() : bus("bus", bus_config()), cache("cache", cache_config()) {
+    bus.window_socket("memory").bind(memory.target_socket);
+    cache.bus_socket.bind(bus.cache_socket);
+    cpu.socket.bind(cache.cpu_socket);
+  }
+  static SnoopingBusConfig bus_config() {
+    SnoopingBusConfig config;
+    config.windows = {{"memory", 0, 0, true, 0}};
+    return config;
+  }
+  static CacheConfig cache_config() {
+    CacheConfig config;
+    config.geometry = {32, 1, 32, Replacement::lru, 1};
+    config.table = std::make_shared<const Table>(load_table("dirty-owner-update"));
+    return config;
+  }
+};
+
 }  // namespace earshot::test

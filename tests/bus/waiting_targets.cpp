@@ -40,29 +40,7 @@ class Slow : public sc_core::sc_module {
   }
 };
 
-// One cache of one line over a memory that waits, and as many drivers on the cache as a test likes to spawn.
-struct OneLine {
-  SnoopingBus bus;
-  Slow memory{"memory"};
-  UpdatingCache cache;
-  Driver cpu{"cpu"};
-  OneLine() : bus("bus", bus_config()), cache("cache", cache_config()) {
-    bus.window_socket("memory").bind(memory.target_socket);
-    cache.bus_socket.bind(bus.cache_socket);
-    cpu.socket.bind(cache.cpu_socket);
-  }
-  static SnoopingBusConfig bus_config() {
-    SnoopingBusConfig config;
-    config.windows = {{"memory", 0, 0, true, 0}};
-    return config;
-  }
-  static CacheConfig cache_config() {
-    CacheConfig config;
-    config.geometry = {32, 1, 32, Replacement::lru, 1};
-    config.table = std::make_shared<const Table>(load_table("dirty-owner-update"));
-    return config;
-  }
-};
+using OneLine = OneLineSystem<Slow>;
 
 void race(const std::string& protocol) {
   SnoopingBusConfig bus_config;

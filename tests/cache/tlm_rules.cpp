@@ -42,28 +42,7 @@ class Refusing : public sc_core::sc_module, private tlm::tlm_fw_transport_if<> {
   SparseBytes bytes_;
 };
 
-struct RefusingSystem {
-  Refusing memory{"memory"};
-  SnoopingBus bus;
-  UpdatingCache cache;
-  Driver cpu{"cpu"};
-  RefusingSystem() : bus("bus", bus_config()), cache("cache", cache_config()) {
-    bus.window_socket("memory").bind(memory.target_socket);
-    cache.bus_socket.bind(bus.cache_socket);
-    cpu.socket.bind(cache.cpu_socket);
-  }
-  static SnoopingBusConfig bus_config() {
-    SnoopingBusConfig config;
-    config.windows = {{"memory", 0, 0, true, 0}};
-    return config;
-  }
-  static CacheConfig cache_config() {
-    CacheConfig config;
-    config.geometry = {32, 1, 32, Replacement::lru, 1};  // one line
-    config.table = std::make_shared<const Table>(dirty_owner());
-    return config;
-  }
-};
+using RefusingSystem = OneLineSystem<Refusing>;
 
 }  // namespace
 
