@@ -36,18 +36,19 @@ Json accesses(const CacheTotals& totals) {
 }
 
 Json latency(const CacheTotals& totals) {
+  const Histogram all = totals.latency();
   Json parts, sums;
   for (int i = 0; i < latency_parts; ++i) {
     const auto part = static_cast<LatencyPart>(i);
-    parts[name_of(part)] = mean_ns(totals.parts[part], totals.latency.count());
+    parts[name_of(part)] = mean_ns(totals.parts[part], all.count());
     sums[name_of(part)] = totals.parts[part];
   }
-  return {{"mean-ns", mean_ns(totals.latency.sum(), totals.latency.count())},
-          {"p50-ns", ns(totals.latency.percentile(50))},
-          {"p95-ns", ns(totals.latency.percentile(95))},
-          {"p99-ns", ns(totals.latency.percentile(99))},
-          {"max-ns", ns(totals.latency.max())},
-          {"total-ps", totals.latency.sum()},
+  return {{"mean-ns", mean_ns(all.sum(), all.count())},
+          {"p50-ns", ns(all.percentile(50))},
+          {"p95-ns", ns(all.percentile(95))},
+          {"p99-ns", ns(all.percentile(99))},
+          {"max-ns", ns(all.max())},
+          {"total-ps", all.sum()},
           {"parts-ns", parts},
           {"total-parts-ps", sums}};
 }

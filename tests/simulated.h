@@ -103,20 +103,22 @@ struct SystemOptions {
   Geometry geometry{1024, 2, 32, Replacement::lru, 1};
   std::vector<Window> windows{{"memory", 0, 0, true, 0}};
   bool watched = true;
+  SnoopingBusConfig bus{};   // but for the windows
+  CacheConfig cache{};       // but for geometry and table
 };
 
 // Caches on a bus, a PlainMemory behind every window, a driver before every cache, the monitor watching.
 class System {
  public:
   explicit System(const Table& protocol, const SystemOptions& options = {}) {
-    SnoopingBusConfig bus_config;
+    SnoopingBusConfig bus_config = options.bus;
     bus_config.windows = options.windows;
     bus = std::make_unique<SnoopingBus>("bus", bus_config);
     for (const Window& window : options.windows) {
       memories.push_back(std::make_unique<PlainMemory>(window.name.c_str(), PlainMemoryConfig{}));
       bus->window_socket(window.name).bind(memories.back()->target_socket);
     }
-    CacheConfig config;
+    CacheConfig config = options.cache;
     config.geometry = options.geometry;
     config.table = std::make_shared<const Table>(protocol);
     for (int i = 0; i < options.caches; ++i) {

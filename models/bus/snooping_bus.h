@@ -1,25 +1,34 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// A SnoopingBus joins coherent caches to memory and peripherals. A transaction takes effect at one instant,
-// its grant: the bus asks every other cache, collects the shared and owner answers, moves the data and has
-// every copy change state there. Address phase and data phase use separate buses, so that one transaction's
-// snoop overlaps another's data (a split bus), each kept on a calendar booked earliest gap first.
-//
-// Timing is annotated: nothing waits unless a target does (then later transactions queue behind it), the time
-// is added to the caller's delay and safe under temporal decoupling. In order, one transaction costs
+// A SnoopingBus joins coherent caches to memory and peripherals. A transaction takes effect at one instant, its
+// grant: the bus asks every other cache, collects the shared and owner answers, moves the data and has every copy
+// change state there. In order, one transaction costs
 //   arbitration_cycles, then wait for the address bus; address_cycles; snoop_cycles;
-//   a copy elsewhere: supply_cycles; or memory: what its target adds;
+//   a copy elsewhere: supply_cycles; or memory: what its target takes;
 //   wait for the data bus; one cycle for every width bytes moved.
 // update and write_through move the written bytes, write_through then ends when memory has them.
 //
+// split: the address bus and the data bus are granted apart, so that one transaction's snoop overlaps another's
+// memory access and data. connected: the bus is held from the grant to the last beat.
+//
+// Timing annotated: nothing waits unless a target does (then later transactions queue behind it), the time is added
+// to the caller's delay and safe under temporal decoupling; the buses are calendars booked earliest gap first.
+// Timing arbitrated: requests queue and an arbiter grants them by event; at most `outstanding` transactions are under
+// way, at most one for a line: later ones for it wait. The data bus serves whoever has data first. A request is judged
+// at its grant, in the state the line is in then. Targets are called with nb_transport; one is told of a fetch at the
+// grant, for the instant at which the snoop ends. If memory refuses a line, other caches may have lost clean copies
+// of it. If nothing completes for stall_cycles while something is outstanding, SC_REPORT_ERROR "/earshot/bus/stall"
+// lists every queue, its head and what that waits for.
+//
 // Configuration errors are reported from the constructor (SC_REPORT_ERROR, id "/earshot/bus/config", all in one
-// message), a cache whose line differs or a wrong time resolution at end of elaboration.
+// message); a cache whose line differs, arbitration that does not fit the number of caches, or a wrong time resolution
+// at end of elaboration.
 #pragma once
 
-#include <algorithm>
 #include <array>
 #include <deque>
+#include <functional>
 #include <memory>
 #include <string>
 #include <systemc>
@@ -27,23 +36,39 @@
 #include <vector>
 
 #include "earshot/bus/address_map.h"
+#include "earshot/bus/arbiter.h"
 #include "earshot/bus/presence_index.h"
 #include "earshot/bus/transaction.h"
+#include "earshot/bus/window_port.h"
+#include "earshot/observe/histogram.h"
 #include "earshot/timing/calendar.h"
+#include "earshot/timing/queue_meter.h"
 
 namespace earshot {
+
+enum class BusStructure : std::uint8_t { connected, split };
 
 struct SnoopingBusConfig {
   // Behaviour.
   std::vector<Window> windows;       // at least one; disjoint
 
   // Timing.
+  BusTiming timing = BusTiming::annotated;
+  BusStructure structure = BusStructure::split;
   sc_core::sc_time clock{5, sc_core::SC_NS};  // period; a whole number of picoseconds
   unsigned width_bytes = 8;          // bytes moved in a data-bus cycle: a power of two, 1 to 256
   unsigned arbitration_cycles = 1;   // from request to grant when nobody competes; overlaps others' transfers
   unsigned address_cycles = 1;
   unsigned snoop_cycles = 1;         // the other caches' lookup
   unsigned supply_cycles = 2;        // a cache reads a line out of its store for another
+  unsigned turnaround_cycles = 0;    // nobody may drive the data bus for so long after every transfer
+
+  // Arbitrated timing only; annotated timing serves first come, first served.
+  ArbiterConfig arbiter;
+  // If set, makes the arbiter instead: called once, at end of elaboration, with the number of ports.
+  std::function<std::unique_ptr<Arbiter>(int ports)> make_arbiter;
+  unsigned outstanding = 8;          // transactions under way, from grant to last beat: at least 1
+  std::uint64_t stall_cycles = 1000000;  // without a completion until a stall is reported; 0: never
 };
 
 // What one kind of transaction did. Times are sums over `count` transactions.
@@ -53,6 +78,14 @@ struct BusKindTotals {
   Picoseconds wait = 0;              // of that: for the address and the data bus
   std::uint64_t address_cycles = 0;
   std::uint64_t data_cycles = 0;
+  Histogram latency;                 // of `time`, picoseconds
+};
+
+// What one port waited for the grants of its requests. Arbitrated timing only.
+struct BusPortTotals {
+  std::uint64_t grants = 0;
+  Picoseconds wait = 0;              // from request to grant, arbitration included: the sum
+  Picoseconds longest_wait = 0;
 };
 
 struct SnoopingBusTotals {
@@ -63,11 +96,18 @@ struct SnoopingBusTotals {
   std::uint64_t block_reads = 0;     // lines read from memory
   std::uint64_t block_writes = 0;    // lines written to memory: write-backs, and supplies memory takes too
   std::uint64_t word_writes = 0;     // write-throughs
-  Picoseconds address_busy = 0;
-  Picoseconds data_busy = 0;
+  Picoseconds address_busy = 0;      // connected: held, from grant to last beat
+  Picoseconds data_busy = 0;         // turnaround included
+  std::vector<BusPortTotals> ports;
 };
 
-class SnoopingBus : public sc_core::sc_module, private RequestInterface {
+// One queue of the bus, for reports. Arbitrated timing only.
+struct BusQueue {
+  std::string name;
+  const QueueMeter* meter;
+};
+
+class SnoopingBus : public sc_core::sc_module, private RequestInterface, private WindowPort::Listener {
  public:
   BusTargetSocket cache_socket{"cache_socket"};
 
@@ -80,37 +120,65 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface {
 
   const AddressMap& address_map() const { return map_; }
   SnoopingBusTotals totals() const;
-  // The end of the latest booking of either bus, in simulation time.
-  Picoseconds busy_until() const { return std::max(address_bus_.last_end(), data_bus_.last_end()); }
+  // When the last transaction ended, in simulation time: annotated, its last booking of either bus; arbitrated, when
+  // memory had all that belongs to it.
+  Picoseconds busy_until() const;
+
+  // Arbitrated timing: the queues, for reports.
+  std::vector<BusQueue> queues() const;
+  // What fails of: Little's law in every queue, the cycles moved being the time the buses were busy. Any is a bug.
+  std::vector<std::string> broken_laws() const;
+  // Every queue, its head and what it waits for, one a line; empty if nothing is outstanding.
+  std::string waiting() const;
 
  private:
-  // One per window: the bus's initiator socket and its backward path.
-  class TargetPort;
+  class Arbitrated;  // the engine of arbitrated timing
 
   void end_of_elaboration() override;
+  void work();
+
+  // WindowPort::Listener
+  void answered(WindowAccess& access) override;
+  void direct_memory_ended(std::uint64_t first, std::uint64_t last) override;
 
   // RequestInterface
   bool acquire() override;
   void release() override;
   void transact(BusTransaction& transaction, sc_core::sc_time& delay) override;
   void pass_through(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay, LatencyParts& parts) override;
+  void request(BusTransaction& transaction) override;
+  bool in_flight(std::uint64_t line) const override;
   void dropped(int requester, std::uint64_t line) override { presence_.remove(line, requester); }
   unsigned debug(tlm::tlm_generic_payload& payload) override;
   bool direct_memory(tlm::tlm_generic_payload& payload, tlm::tlm_dmi& dmi) override;
 
   // The steps of one transaction.
-  struct Snoop;
+  struct Snoop {
+    PresenceIndex::Mask others = 0;  // the ports that hold the line
+    bool shared = false;
+    bool owner = false;              // the supplier owns the line
+    bool write_memory = false;
+    const std::uint8_t* supplied = nullptr;  // null: nobody supplies
+  };
   void count(BusKind kind, Picoseconds requested, Picoseconds completed, Picoseconds wait);
+  void count_supply(const BusTransaction& transaction);
+  Picoseconds cycles(std::uint64_t count) const { return count * period_; }
+  std::uint64_t beats(std::uint64_t bytes) const { return (bytes + config_.width_bytes - 1) / config_.width_bytes; }
   Snoop ask_others(const BusTransaction& transaction);
   void commit_others(const BusTransaction& transaction, PresenceIndex::Mask others);
-  bool memory_phase(BusTransaction& transaction, Snoop& snoop, Picoseconds& time);
-  void fetch_line(BusTransaction& transaction, Snoop& snoop, Picoseconds& time);
 
+  // Annotated timing.
   class Waiter;
-
+  struct Hold {  // of a connected bus
+    Picoseconds start;
+  };
+  bool memory_phase(BusTransaction& transaction, Snoop& snoop, const Hold& hold, Picoseconds& time);
+  void fetch_line(BusTransaction& transaction, Snoop& snoop, const Hold& hold, Picoseconds& time);
+  unsigned data_bytes(const BusTransaction& transaction) const;
   // Books the address phase / `bytes` of data at or after `time`, and moves `time` to its end.
-  void address_phase(BusKind kind, Picoseconds& time, LatencyParts& parts);
-  void data_phase(BusKind kind, unsigned bytes, Picoseconds& time, LatencyParts& parts);
+  Hold address_phase(BusKind kind, unsigned bytes, Picoseconds& time, LatencyParts& parts);
+  void data_phase(BusKind kind, unsigned bytes, const Hold& hold, Picoseconds& time, LatencyParts& parts);
+  void let_go(const Hold& hold, Picoseconds time);
   // One access to a window's target, starting at `time`, which moves to its end.
   void access_target(int window, tlm::tlm_generic_payload& payload, Picoseconds& time, LatencyParts& parts);
   void access_memory(tlm::tlm_command command, std::uint64_t address, std::uint8_t* data, unsigned length,
@@ -120,7 +188,7 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface {
   SnoopingBusConfig config_;
   Picoseconds period_;
   AddressMap map_;
-  std::vector<std::unique_ptr<TargetPort>> targets_;  // one a window, same order
+  std::vector<std::unique_ptr<WindowPort>> targets_;  // one a window, same order
   std::vector<SnoopInterface*> caches_;               // by port; set at end of elaboration
   unsigned line_bytes_ = 0;
 
@@ -128,6 +196,7 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface {
   Calendar address_bus_;
   Calendar data_bus_;
   SnoopingBusTotals totals_;
+  std::uint64_t transfers_ = 0;     // over the data bus
 
   bool held_ = false;               // between acquire() and release()
   std::deque<const Waiter*> queue_; // processes in acquire(), first come first served
@@ -135,6 +204,8 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface {
   int requester_ = -1;              // of the transaction in progress, whose line arrives while a target waits
   tlm::tlm_generic_payload memory_payload_;  // reused: fetches, write-backs, write-throughs
   MemoryTimes memory_times_;
+
+  std::unique_ptr<Arbitrated> arbitrated_;
 };
 
 }  // namespace earshot

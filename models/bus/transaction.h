@@ -8,20 +8,30 @@
 #pragma once
 
 #include <cstdint>
+#include <string>
 #include <tlm>
 
 #include "earshot/bus/address_map.h"
 #include "earshot/protocol/events.h"
 #include "earshot/timing/latency.h"
+#include "earshot/timing/timeline.h"
 
 namespace earshot {
 
+// How a bus, and with it every cache on it, lets time pass.
+enum class BusTiming : std::uint8_t {
+  annotated,   // calls return at once with the time added to their delay; nothing waits unless a target does
+  arbitrated,  // requests queue, an arbiter grants by event, calls block until the access is really done
+};
+
 enum class Supplier : std::uint8_t { none, memory, owner, sharer };
 
-// One coherent bus transaction. The requester owns it and every buffer it points to, for the call only.
+// One coherent bus transaction. The requester owns it and every buffer it points to: annotated, for the call of
+// transact(); arbitrated, from request() to finished().
 struct BusTransaction {
-  // Set by the requester.
-  BusKind kind = BusKind::read;    // not io_read or io_write
+  // Set by the requester: annotated, before transact(); arbitrated, requester and line before request(), the rest
+  // by granted().
+  BusKind kind = BusKind::read;
   int requester = 0;               // the port given by SnoopInterface::attached()
   std::uint64_t line = 0;          // the line's address
   std::uint8_t* line_data = nullptr;   // read, read_exclusive: receives the line; write_back: is the line
@@ -29,12 +39,14 @@ struct BusTransaction {
   std::uint32_t length = 0;
   const std::uint8_t* word = nullptr;          // those bytes
   const std::uint8_t* byte_enable = nullptr;   // null, or one flag a byte: TLM_BYTE_ENABLED or not
+  tlm::tlm_generic_payload* io = nullptr;      // io_read, io_write (arbitrated only): what is passed on
 
   // Set by the bus.
   bool shared = false;             // another cache still holds the line
   Supplier supplier = Supplier::none;
   tlm::tlm_response_status status = tlm::TLM_INCOMPLETE_RESPONSE;
-  LatencyParts parts;              // what the transaction's time was spent on
+  LatencyParts parts;              // annotated: what the transaction's time was spent on
+  Timeline timeline;               // arbitrated: the same, in order, begun by request()
 };
 
 // A cache's answer to the question what it would do about a transaction. Nothing changes by asking.
@@ -51,8 +63,8 @@ struct SnoopingBusTypes {  // the traits of the cache-to-bus sockets
   using tlm_phase_type = tlm::tlm_phase;
 };
 
-// Forward, from a cache to the bus. Call from a simulation process; acquire() and transact() may wait() if
-// another process holds the bus or a target of the bus waits.
+// Forward, from a cache to the bus. acquire(), transact() and pass_through() are for annotated timing: call them from
+// a simulation process; they may wait() if another process holds the bus or a target of the bus waits.
 class RequestInterface : public virtual sc_core::sc_interface {
  public:
   using protocol_types = SnoopingBusTypes;
@@ -66,6 +78,18 @@ class RequestInterface : public virtual sc_core::sc_interface {
   virtual void transact(BusTransaction& transaction, sc_core::sc_time& delay) = 0;
   // An access to an uncached window: passed to the window's target as it is, address translated.
   virtual void pass_through(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay, LatencyParts& parts) = 0;
+
+  // Arbitrated timing: queues the transaction and returns. The requester then hears, never from within this call,
+  //   granted()   at its grant, with the bus its own: say what is needed now, or that nothing is;
+  //   effected()  unless it fails, when it takes effect: at the grant, if no memory is asked for data; a fetch from
+  //               memory, when its last beat has come; a write_through, when memory has taken the word;
+  //   finished()  when it has its last beat, or memory has the written data;
+  //   settled()   when memory has all that belongs to the line and the next transaction for the line may be granted.
+  // A requester has at most one transaction for a line queued or under way.
+  virtual void request(BusTransaction& transaction) = 0;
+  // Whether a transaction for the line is under way: granted, not yet settled().
+  virtual bool in_flight(std::uint64_t line) const = 0;
+
   // The cache dropped its copy without a transaction (host bookkeeping; no modelled signal).
   virtual void dropped(int requester, std::uint64_t line) = 0;
   // Coherent debug access, no time, no state change: the owner's bytes, else memory's; writes reach every copy
@@ -81,10 +105,20 @@ class SnoopInterface : public virtual sc_core::sc_interface {
   using protocol_types = SnoopingBusTypes;
 
   // Once, at the bus's end of elaboration. `map` lives as long as the bus. Returns the cache's line in bytes.
-  virtual unsigned attached(int port, const AddressMap& map) = 0;
+  virtual unsigned attached(int port, const AddressMap& map, BusTiming timing) = 0;
   virtual SnoopAnswer ask(const BusTransaction& transaction) = 0;
   // Changes state as the protocol says and takes the broadcast bytes. Returns whether the copy survives.
   virtual bool commit(const BusTransaction& transaction) = 0;
+
+  // To the requester, arbitrated timing: see RequestInterface::request(). None of them waits.
+  // granted() judges the request in the state the line is in now and fills in the transaction; false: nothing needs
+  // the bus any more, the transaction is over.
+  virtual bool granted(BusTransaction& transaction) = 0;
+  virtual void effected(BusTransaction& transaction) = 0;
+  virtual void finished(BusTransaction& transaction) = 0;  // look at the status
+  virtual void settled(std::uint64_t line) = 0;
+  // One line for each thing the cache still waits for; empty if nothing. For the report of a stall.
+  virtual std::string waiting() const = 0;
   // The cache's copy of a line, or null; `owner` tells whether memory may be older. For debug access.
   virtual std::uint8_t* copy_of(std::uint64_t line, bool& owner) = 0;
   virtual void invalidate_direct_memory(std::uint64_t first, std::uint64_t last) = 0;

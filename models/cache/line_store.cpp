@@ -27,22 +27,31 @@ LineStore::LineStore(const Geometry& geometry)
       trees_(policy_ == Replacement::tree_plru ? static_cast<std::size_t>(geometry.sets()) : 0),
       bytes_(static_cast<std::size_t>(geometry.size_bytes)) {}
 
-Slot& LineStore::victim(std::uint64_t line) {
-  const std::size_t set = set_of(line);
-  const auto first = slots_.begin() + static_cast<std::ptrdiff_t>(set * ways_);
-  const auto last = first + static_cast<std::ptrdiff_t>(ways_);
-  const auto free = std::find_if(first, last, [](const Slot& slot) { return slot.state == absent; });
-  if (free != last) return *free;
+Slot* LineStore::victim(std::uint64_t line) {
+  const std::size_t first = set_of(line) * ways_;
+  const auto begin = slots_.begin() + static_cast<std::ptrdiff_t>(first);
+  const auto end = begin + static_cast<std::ptrdiff_t>(ways_);
+  const auto free = std::find_if(begin, end, [](const Slot& slot) { return slot.state == absent && !slot.pinned; });
+  if (free != end) return &*free;
+
+  std::size_t way = 0;
   switch (policy_) {
     case Replacement::lru:
     case Replacement::fifo:
-      return *std::min_element(first, last, [](const Slot& a, const Slot& b) { return a.stamp < b.stamp; });
+      way = static_cast<std::size_t>(std::min_element(begin, end, [](const Slot& a, const Slot& b) {
+                                       return a.pinned != b.pinned ? b.pinned : a.stamp < b.stamp;
+                                     }) - begin);
+      break;
     case Replacement::tree_plru:
-      return slots_[set * ways_ + tree_victim(set)];
+      way = tree_victim(set_of(line));
+      break;
     case Replacement::random:
-      return slots_[set * ways_ + static_cast<std::size_t>(splitmix64(random_) % ways_)];
+      way = static_cast<std::size_t>(splitmix64(random_) % ways_);
+      break;
   }
-  return *first;
+  for (std::size_t tried = 0; tried < ways_; ++tried, way = (way + 1) % ways_)
+    if (!slots_[first + way].pinned) return &slots_[first + way];
+  return nullptr;
 }
 
 // Each node on the way to the used leaf remembers that its other half is now the older one: a bit is 1 when the

@@ -20,6 +20,7 @@ struct Slot {
   StateId state = absent;
   bool fast_read = false;
   bool fast_write = false;
+  bool pinned = false;                     // a miss under way needs this place: victim() leaves it alone
 };
 
 class LineStore {
@@ -39,9 +40,10 @@ class LineStore {
     return nullptr;
   }
 
-  // The slot a line at `line` would be filled into: an absent one of its set if there is any (lowest way
-  // first), else the policy's victim. Random draws its number here, so call once per fill.
-  Slot& victim(std::uint64_t line);
+  // The slot a line at `line` would be filled into: an absent one of its set if there is any (lowest way first), else
+  // the policy's victim; null if every one is pinned. If the policy's choice is pinned, the next way that is not.
+  // Random draws its number here, so call once per fill.
+  Slot* victim(std::uint64_t line);
 
   // A processor access used the slot.
   void touch(Slot& slot) {
@@ -58,7 +60,11 @@ class LineStore {
     last_ = index_of(slot);
     if (policy_ == Replacement::tree_plru) touch_tree(slot);
   }
-  void clear(Slot& slot) { slot = Slot{}; }
+  void clear(Slot& slot) {  // a pinned slot stays so
+    const bool pinned = slot.pinned;
+    slot = Slot{};
+    slot.pinned = pinned;
+  }
 
   std::uint8_t* bytes(const Slot& slot) { return &bytes_[index_of(slot) << line_shift_]; }
   std::vector<Slot>& slots() { return slots_; }

@@ -2,10 +2,15 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "earshot/dram/plain_memory.h"
 
-#include <algorithm>
 #include <string>
 
+#include "earshot/dram/payload_bytes.h"
+
 namespace earshot {
+
+namespace {
+constexpr std::uint64_t last_byte = ~std::uint64_t{0};
+}
 
 PlainMemory::PlainMemory(sc_core::sc_module_name name, const PlainMemoryConfig& config)
     : sc_module(name), config_(config) {
@@ -23,20 +28,15 @@ void PlainMemory::b_transport(tlm::tlm_generic_payload& payload, sc_core::sc_tim
     payload.set_response_status(tlm::TLM_OK_RESPONSE);
     return;
   }
-  const unsigned length = payload.get_data_length();
-  if (length == 0 || payload.get_streaming_width() == 0 || payload.get_data_ptr() == nullptr) {
-    payload.set_response_status(tlm::TLM_BURST_ERROR_RESPONSE);
-    return;
-  }
-  const unsigned extent = std::min(length, payload.get_streaming_width());
-  if (payload.get_address() + (extent - 1) < payload.get_address()) {
-    payload.set_response_status(tlm::TLM_ADDRESS_ERROR_RESPONSE);
+  const tlm::tlm_response_status status = payload_status(payload, last_byte);
+  if (status != tlm::TLM_OK_RESPONSE) {
+    payload.set_response_status(status);
     return;
   }
 
   const Picoseconds now = now_ps();
   const Picoseconds ready = now + to_ps(delay);
-  const Picoseconds beats = (length + config_.beat_bytes - 1) / config_.beat_bytes;
+  const Picoseconds beats = (payload.get_data_length() + config_.beat_bytes - 1) / config_.beat_bytes;
   const Picoseconds service =
       to_ps(payload.is_write() ? config_.write_latency : config_.read_latency) + beats * to_ps(config_.beat_time);
   calendar_.forget_before(now);
@@ -44,32 +44,9 @@ void PlainMemory::b_transport(tlm::tlm_generic_payload& payload, sc_core::sc_tim
   delay = from_ps(start + service - now);
   if (auto* times = payload.get_extension<MemoryTimes>(); times != nullptr) times->queue += start - ready;
 
-  move_bytes(payload);
+  move_payload_bytes(payload, bytes_);
   payload.set_dmi_allowed(true);
   payload.set_response_status(tlm::TLM_OK_RESPONSE);
-}
-
-void PlainMemory::move_bytes(tlm::tlm_generic_payload& payload) {
-  const unsigned length = payload.get_data_length();
-  const unsigned width = payload.get_streaming_width();
-  std::uint8_t* const data = payload.get_data_ptr();
-  const std::uint8_t* const enable = payload.get_byte_enable_ptr();
-  const unsigned enable_length = payload.get_byte_enable_length();
-  if (enable == nullptr && width >= length) {
-    if (payload.is_write())
-      bytes_.write(payload.get_address(), data, length);
-    else
-      bytes_.read(payload.get_address(), data, length);
-    return;
-  }
-  for (unsigned i = 0; i < length; ++i) {
-    if (enable != nullptr && enable_length != 0 && enable[i % enable_length] != TLM_BYTE_ENABLED) continue;
-    const std::uint64_t address = payload.get_address() + i % width;
-    if (payload.is_write())
-      bytes_.write(address, data + i, 1);
-    else
-      bytes_.read(address, data + i, 1);
-  }
 }
 
 tlm::tlm_sync_enum PlainMemory::nb_transport_fw(tlm::tlm_generic_payload& payload, tlm::tlm_phase& phase,
@@ -79,13 +56,7 @@ tlm::tlm_sync_enum PlainMemory::nb_transport_fw(tlm::tlm_generic_payload& payloa
 }
 
 unsigned PlainMemory::transport_dbg(tlm::tlm_generic_payload& payload) {
-  const unsigned length = payload.get_data_length();
-  if (length == 0 || payload.get_address() + (length - 1) < payload.get_address()) return 0;
-  if (payload.is_write())
-    bytes_.write(payload.get_address(), payload.get_data_ptr(), length);
-  else if (payload.is_read())
-    bytes_.read(payload.get_address(), payload.get_data_ptr(), length);
-  return length;
+  return debug_payload(payload, bytes_, last_byte);
 }
 
 bool PlainMemory::get_direct_mem_ptr(tlm::tlm_generic_payload& payload, tlm::tlm_dmi& dmi) {

@@ -46,7 +46,6 @@ class PlainMemory : public sc_core::sc_module, private tlm::tlm_fw_transport_if<
                                      sc_core::sc_time& time) override;
   bool get_direct_mem_ptr(tlm::tlm_generic_payload& payload, tlm::tlm_dmi& dmi) override;
   unsigned transport_dbg(tlm::tlm_generic_payload& payload) override;
-  void move_bytes(tlm::tlm_generic_payload& payload);
 
   PlainMemoryConfig config_;
   SparseBytes bytes_;

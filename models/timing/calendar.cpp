@@ -23,6 +23,26 @@ Picoseconds Calendar::book(Picoseconds ready, Picoseconds duration) {
   return start;
 }
 
+Picoseconds Calendar::earliest(Picoseconds ready, Picoseconds duration) const {
+  auto place = std::lower_bound(busy_.begin() + static_cast<std::ptrdiff_t>(first_), busy_.end(), ready,
+                                [](const Interval& interval, Picoseconds time) { return interval.end <= time; });
+  Picoseconds start = ready;
+  for (; place != busy_.end() && place->start < start + duration; ++place) start = std::max(start, place->end);
+  return start;
+}
+
+void Calendar::occupy(Picoseconds start, Picoseconds end) {
+  while (start < end) {  // gap by gap
+    const Picoseconds from = earliest(start, 1);
+    if (from >= end) return;
+    const auto next = std::upper_bound(busy_.begin() + static_cast<std::ptrdiff_t>(first_), busy_.end(), from,
+                                       [](Picoseconds time, const Interval& interval) { return time < interval.start; });
+    const Picoseconds until = next == busy_.end() ? end : std::min(end, next->start);
+    book(from, until - from);
+    start = until;
+  }
+}
+
 // Enters [start, end) before the interval at `place`, merging with neighbours it touches.
 void Calendar::insert(std::size_t place, Picoseconds start, Picoseconds end) {
   last_end_ = std::max(last_end_, end);

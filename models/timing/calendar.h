@@ -22,6 +22,10 @@ class Calendar {
   // Books `duration` at the earliest start >= `ready`; returns the start.
   // REQUIRES: ready >= the last time given to forget_before().
   Picoseconds book(Picoseconds ready, Picoseconds duration);
+  // Where book() would put it, without booking.
+  Picoseconds earliest(Picoseconds ready, Picoseconds duration) const;
+  // Marks [start, end) as busy, whatever of it is busy already: a booking whose end was not known at its start.
+  void occupy(Picoseconds start, Picoseconds end);
 
   // No request will ever be ready before `time`: what ends at or before it may be forgotten.
   void forget_before(Picoseconds time) {

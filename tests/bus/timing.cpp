@@ -25,7 +25,7 @@ TEST_CASE("a miss in memory costs address, snoop, memory and four beats, a hit t
     system.cpu(0).read(0x44);
     CHECK(ns(system.cpu(0).delay) == Approx(1));
     const CacheTotals totals = system.cache(0).totals();
-    CHECK(totals.parts.total() == totals.latency.sum());
+    CHECK(totals.parts.total() == totals.latency().sum());
     CHECK(totals.parts[LatencyPart::hit] == 2000);
     CHECK(totals.parts[LatencyPart::wait_for_grant] == 9000);
     CHECK(totals.parts[LatencyPart::transfer] == 25000);
@@ -65,7 +65,7 @@ TEST_CASE("a second request waits for the first one's address phase, not for its
     const CacheTotals totals = system.cache(1).totals();
     CHECK(totals.parts[LatencyPart::wait_for_grant] == 14000);
     CHECK(totals.parts[LatencyPart::memory_queue] == 55000);
-    CHECK(totals.parts.total() == totals.latency.sum());
+    CHECK(totals.parts.total() == totals.latency().sum());
   });
 }
 
@@ -123,6 +123,6 @@ TEST_CASE("busy times are the cycles the totals count", "[bus]") {
           system.count(BusKind::read) + system.count(BusKind::read_exclusive));
     CHECK(totals.block_reads == totals.supplied_by_memory);
     for (int i = 0; i < 4; ++i)
-      CHECK(system.cache(i).totals().parts.total() == system.cache(i).totals().latency.sum());
+      CHECK(system.cache(i).totals().parts.total() == system.cache(i).totals().latency().sum());
   });
 }

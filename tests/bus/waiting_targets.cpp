@@ -88,7 +88,7 @@ void race(const std::string& protocol) {
   sc_core::sc_start();
   if (error) std::rethrow_exception(error);
   CHECK(monitor.accesses_checked() == 6000);
-  for (const auto& cache : caches) CHECK(cache->totals().parts.total() == cache->totals().latency.sum());
+  for (const auto& cache : caches) CHECK(cache->totals().parts.total() == cache->totals().latency().sum());
 }
 
 }  // namespace

@@ -18,7 +18,7 @@ bool use(LineStore& store, std::uint64_t line) {
     store.touch(*slot);
     return true;
   }
-  Slot& slot = store.victim(line);
+  Slot& slot = *store.victim(line);
   store.clear(slot);
   slot.state = 1;
   store.fill(slot, line);
@@ -75,7 +75,7 @@ TEST_CASE("random replacement repeats for the same seed and spreads over the way
   LineStore store({512, 16, 32, Replacement::random, 5});
   for (std::uint64_t line = 0; line < 16; ++line) use(store, line * 32);
   std::vector<bool> hit(16);
-  for (int i = 0; i < 300; ++i) hit[static_cast<std::size_t>(&store.victim(0) - store.slots().data())] = true;
+  for (int i = 0; i < 300; ++i) hit[static_cast<std::size_t>(store.victim(0) - store.slots().data())] = true;
   CHECK(std::count(hit.begin(), hit.end(), true) == 16);
 }
 
@@ -86,5 +86,5 @@ TEST_CASE("a cleared slot is found no more and is filled first", "[cache]") {
   REQUIRE(slot != nullptr);
   store.clear(*slot);
   CHECK(store.find(64) == nullptr);
-  CHECK(&store.victim(1024) == slot);
+  CHECK(store.victim(1024) == slot);
 }

@@ -50,7 +50,7 @@ bool use(LineStore& store, std::uint64_t page) {
     store.touch(*slot);
     return true;
   }
-  Slot& slot = store.victim(page * line_bytes);
+  Slot& slot = *store.victim(page * line_bytes);
   store.clear(slot);
   slot.state = 1;
   store.fill(slot, page * line_bytes);
@@ -98,7 +98,7 @@ std::string tree_bits(const LineStore& store) {
   const auto victim_after = [&](std::vector<std::uint64_t> touched) {
     LineStore copy = store;
     for (const std::uint64_t page : touched) use(copy, page);
-    return copy.victim(99 * line_bytes).line / line_bytes;
+    return copy.victim(99 * line_bytes)->line / line_bytes;
   };
   const bool b0 = victim_after({}) >= 2;
   const bool b1 = victim_after({2}) == 1;  // a use on the right sends the victim to the left, which tells b1
@@ -182,7 +182,7 @@ TEST_CASE("tree-PLRU chooses the published victim and moves to the published sta
     // Victim: 00x line 0, 01x line 1, 1x0 line 2, 1x1 line 3.
     const std::uint64_t victim = bits[0] == '0' ? (bits[1] == '0' ? 0u : 1u) : (bits[2] == '0' ? 2u : 3u);
     LineStore asked = store;
-    CHECK(asked.victim(99 * line_bytes).line / line_bytes == victim);
+    CHECK(asked.victim(99 * line_bytes)->line / line_bytes == victim);
 
     // Next state by the line used: 0: 11_, 1: 10_, 2: 0_1, 3: 0_0.
     const std::vector<std::string> next = {std::string("11") + bits[2], std::string("10") + bits[2],
@@ -221,11 +221,11 @@ TEST_CASE("tree-PLRU and true LRU part where the tree forgets the order", "[outs
     INFO("touches " << touches);
     LineStore tree = four_ways(each.pages);
     CHECK(tree_bits(tree) == each.bits);
-    CHECK(tree.victim(99 * line_bytes).line == each.plru_victim * line_bytes);
+    CHECK(tree.victim(99 * line_bytes)->line == each.plru_victim * line_bytes);
     LineStore lru(one_set(Replacement::lru, 4));
     for (std::uint64_t page = 0; page < 4; ++page) use(lru, page);
     for (const std::uint64_t page : each.pages) use(lru, page);
-    CHECK(lru.victim(99 * line_bytes).line == each.lru_victim * line_bytes);
+    CHECK(lru.victim(99 * line_bytes)->line == each.lru_victim * line_bytes);
   }
 }
 

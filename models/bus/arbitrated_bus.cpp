@@ -1,0 +1,509 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+#include "earshot/bus/arbitrated_bus.h"
+
+#include <algorithm>
+#include <cstring>
+#include <sstream>
+
+namespace earshot {
+
+void SnoopingBus::Arbitrated::start() {
+  const int ports = static_cast<int>(bus_.caches_.size());
+  arbiter_ = bus_.config_.make_arbiter ? bus_.config_.make_arbiter(ports) : make_arbiter(bus_.config_.arbiter, ports);
+  bus_.totals_.ports.resize(bus_.caches_.size());
+}
+
+// ---- From request to grant
+
+void SnoopingBus::Arbitrated::request(BusTransaction& transaction) {
+  const Picoseconds now = now_ps();
+  transaction.timeline = Timeline(now);
+  const Picoseconds ready = next_edge(now, bus_.period_) + bus_.cycles(bus_.config_.arbitration_cycles);
+  requests_.push({&transaction, now, ready});
+  request_meter_.enter(now);
+  if (!held_) schedule(std::max(ready, address_free_));
+  if (watching_ || bus_.config_.stall_cycles == 0) return;
+  watching_ = true;
+  completions_seen_ = completions_;
+  agenda_.at<&Arbitrated::watch>(now + bus_.cycles(bus_.config_.stall_cycles), this, static_cast<void*>(nullptr));
+}
+
+void SnoopingBus::Arbitrated::schedule(Picoseconds time) {
+  if (time >= next_arbitration_) return;
+  next_arbitration_ = time;
+  agenda_.at<&Arbitrated::arbitrate>(time, this, static_cast<void*>(nullptr));
+}
+
+void SnoopingBus::Arbitrated::arbitrate(void*) {
+  const Picoseconds now = now_ps();
+  if (now != next_arbitration_) return;  // an earlier one was scheduled since, and has happened
+  next_arbitration_ = RequestQueue::never;
+  if (held_) return;  // bus_free() comes back
+  while (now >= address_free_ && outstanding_ < bus_.config_.outstanding) {
+    const std::vector<Contender>& contenders = requests_.contenders(now);
+    if (contenders.empty()) break;
+    const std::uint64_t cycle = now / bus_.period_;
+    if (const std::uint64_t next = arbiter_->next_cycle(contenders, cycle); next > cycle) {
+      schedule(bus_.cycles(next));
+      break;
+    }
+    if (grant(requests_.take(arbiter_->choose(contenders, cycle))) && held_) return;
+  }
+  if (requests_.size() == 0 || outstanding_ == bus_.config_.outstanding) return;  // finish() comes back
+  if (now < address_free_) schedule(address_free_);
+  if (const Picoseconds next = requests_.next_ready(now); next != RequestQueue::never)
+    schedule(std::max(next, address_free_));
+}
+
+// Returns whether the bus was needed.
+bool SnoopingBus::Arbitrated::grant(const RequestQueue::Request& request) {
+  const Picoseconds now = now_ps();
+  BusTransaction& transaction = *request.transaction;
+  const int port = transaction.requester;
+  transaction.timeline.spend(LatencyPart::wait_for_grant, now);
+  request_meter_.leave(now, request.since);
+  if (transaction.io == nullptr && !bus_.caches_[static_cast<std::size_t>(port)]->granted(transaction)) {
+    ++completions_;
+    return false;
+  }
+  BusPortTotals& totals = bus_.totals_.ports[static_cast<std::size_t>(port)];
+  ++totals.grants;
+  totals.wait += now - request.since;
+  totals.longest_wait = std::max(totals.longest_wait, now - request.since);
+
+  Active& active = new_active();
+  active.transaction = &transaction;
+  active.kind = transaction.kind;
+  active.line = transaction.line;
+  active.port = port;
+  active.granted = now;
+  if (transaction.io == nullptr) requests_.lock(active.line);
+  ++outstanding_;
+  outstanding_meter_.enter(now);
+  bus_.totals_.kind[static_cast<std::size_t>(active.kind)].address_cycles += bus_.config_.address_cycles;
+  const Picoseconds address_end = now + bus_.cycles(bus_.config_.address_cycles);
+  transaction.timeline.spend(LatencyPart::transfer, address_end);
+  transaction.status = tlm::TLM_OK_RESPONSE;
+  if (bus_.config_.structure == BusStructure::connected) {
+    held_ = true;
+  } else {
+    bus_.totals_.address_busy += address_end - now;
+    address_free_ = address_end;
+  }
+  begin(active);
+  return true;
+}
+
+SnoopingBus::Arbitrated::Active& SnoopingBus::Arbitrated::new_active() {
+  if (unused_.empty()) {
+    actives_.push_back(std::make_unique<Active>());
+    unused_.push_back(actives_.back().get());
+  }
+  Active& active = *unused_.back();
+  unused_.pop_back();
+  active_.push_back(&active);
+  active.effected = false;
+  active.memory_takes_line = false;
+  active.bytes = 0;
+  active.access = nullptr;
+  enter(active, Stage::snoop);
+  return active;
+}
+
+void SnoopingBus::Arbitrated::enter(Active& active, Stage stage) {
+  active.stage = stage;
+  active.since = now_ps();
+}
+
+// ---- The grant: the one instant at which everybody's state changes
+
+void SnoopingBus::Arbitrated::begin(Active& active) {
+  BusTransaction& transaction = *active.transaction;
+  switch (active.kind) {
+    case BusKind::io_read:
+      need_memory(active, tlm::TLM_READ_COMMAND, nullptr, 0, transaction.timeline.end());
+      return;
+    case BusKind::io_write:
+      active.bytes = transaction.io->get_data_length();
+      need_data_bus(active, transaction.timeline.end());
+      return;
+    case BusKind::write_back:
+      active.bytes = bus_.line_bytes_;
+      need_data_bus(active, transaction.timeline.end());
+      return;
+    default:
+      snoop(active);
+  }
+}
+
+void SnoopingBus::Arbitrated::snoop(Active& active) {
+  BusTransaction& transaction = *active.transaction;
+  transaction.timeline.spend(LatencyPart::snoop,
+                             transaction.timeline.end() + bus_.cycles(bus_.config_.snoop_cycles));
+  const Picoseconds snooped = transaction.timeline.end();
+  if (active.kind == BusKind::write_through) {  // takes effect when memory has the word
+    active.bytes = transaction.length;
+    std::memcpy(active.buffer.data(), transaction.word, transaction.length);
+    transaction.word = active.buffer.data();
+    need_data_bus(active, snooped);
+    return;
+  }
+  const Snoop snoop = bus_.ask_others(transaction);
+  const bool fetch = active.kind == BusKind::read || active.kind == BusKind::read_exclusive;
+  if (fetch) {
+    active.bytes = bus_.line_bytes_;
+    active.memory_takes_line = snoop.write_memory;
+    transaction.supplier = Supplier::memory;
+    if (snoop.supplied != nullptr) {
+      transaction.supplier = snoop.owner ? Supplier::owner : Supplier::sharer;
+      std::memcpy(transaction.line_data, snoop.supplied, bus_.line_bytes_);
+      if (snoop.write_memory) std::memcpy(active.buffer.data(), snoop.supplied, bus_.line_bytes_);
+    }
+  }
+  commit(active, snoop);
+  if (fetch && snoop.supplied == nullptr) {
+    need_memory(active, tlm::TLM_READ_COMMAND, transaction.line_data, bus_.line_bytes_, snooped);
+    return;
+  }
+  active.effected = true;
+  bus_.caches_[static_cast<std::size_t>(active.port)]->effected(transaction);
+  if (fetch) {
+    bus_.presence_.add(active.line, active.port);
+    transaction.timeline.spend(LatencyPart::owner_supply, snooped + bus_.cycles(bus_.config_.supply_cycles));
+    need_data_bus(active, transaction.timeline.end());
+  } else if (active.kind == BusKind::update) {
+    active.bytes = transaction.length;
+    need_data_bus(active, snooped);
+  } else {
+    agenda_.at<&Arbitrated::snoop_ended>(snooped, this, &active);
+  }
+}
+
+void SnoopingBus::Arbitrated::commit(Active& active, const Snoop& snoop) {
+  active.transaction->shared = snoop.shared;
+  bus_.commit_others(*active.transaction, snoop.others);
+}
+
+void SnoopingBus::Arbitrated::snoop_ended(Active* active) {  // of an upgrade: nothing to move
+  let_go(*active);
+  finish(*active, tlm::TLM_OK_RESPONSE);
+  settle(*active);
+}
+
+// ---- Data bus
+
+void SnoopingBus::Arbitrated::need_data_bus(Active& active, Picoseconds ready) {
+  enter(active, Stage::data);
+  ready = next_edge(ready, bus_.period_);
+  if (ready == now_ps())
+    data_ready(&active);
+  else
+    agenda_.at<&Arbitrated::data_ready>(ready, this, &active);
+}
+
+void SnoopingBus::Arbitrated::data_ready(Active* active) {
+  const Picoseconds now = now_ps();
+  enter(*active, Stage::data_bus);
+  data_meter_.enter(now);
+  data_queue_.push_back(active);
+  if (transferring_ == nullptr && data_queue_.size() == 1) {
+    if (now >= data_free_)
+      next_transfer(nullptr);
+    else
+      agenda_.at<&Arbitrated::next_transfer>(data_free_, this, static_cast<Active*>(nullptr));
+  }
+}
+
+void SnoopingBus::Arbitrated::next_transfer(Active*) {
+  Active& active = *data_queue_.front();
+  data_queue_.pop_front();
+  transferring_ = &active;
+  const Picoseconds now = now_ps();
+  data_meter_.leave(now, active.since);
+  const std::uint64_t beats = bus_.beats(active.bytes);
+  const Picoseconds end = now + bus_.cycles(beats);
+  data_free_ = end + bus_.cycles(bus_.config_.turnaround_cycles);
+  bus_.totals_.kind[static_cast<std::size_t>(active.kind)].data_cycles += beats;
+  bus_.totals_.data_busy += data_free_ - now;
+  ++bus_.transfers_;
+  active.transaction->timeline.spend(LatencyPart::wait_for_grant, now);
+  active.transaction->timeline.spend(LatencyPart::transfer, end);
+  agenda_.at<&Arbitrated::transferred>(end, this, &active);
+}
+
+void SnoopingBus::Arbitrated::transferred(Active* active) {
+  const Picoseconds now = now_ps();
+  transferring_ = nullptr;
+  if (!data_queue_.empty()) {
+    if (now >= data_free_)
+      next_transfer(nullptr);
+    else
+      agenda_.at<&Arbitrated::next_transfer>(data_free_, this, static_cast<Active*>(nullptr));
+  }
+  let_go(*active);
+
+  BusTransaction& transaction = *active->transaction;
+  switch (active->kind) {
+    case BusKind::write_through:
+      need_memory(*active, tlm::TLM_WRITE_COMMAND, active->buffer.data(), transaction.length, now);
+      return;
+    case BusKind::write_back:
+      need_memory(*active, tlm::TLM_WRITE_COMMAND, transaction.line_data, bus_.line_bytes_, now);
+      return;
+    case BusKind::io_write:
+      need_memory(*active, tlm::TLM_WRITE_COMMAND, nullptr, 0, now);
+      return;
+    case BusKind::io_read:
+      finish(*active, transaction.status);
+      settle(*active);
+      return;
+    case BusKind::read:
+    case BusKind::read_exclusive:
+      if (!active->effected) {
+        bus_.presence_.add(active->line, active->port);
+        bus_.caches_[static_cast<std::size_t>(active->port)]->effected(transaction);
+      }
+      bus_.count_supply(transaction);
+      break;
+    default:
+      break;
+  }
+  finish(*active, tlm::TLM_OK_RESPONSE);
+  if (active->memory_takes_line)  // off the bus; the requester does not wait for it
+    need_memory(*active, tlm::TLM_WRITE_COMMAND, active->buffer.data(), bus_.line_bytes_, now);
+  else
+    settle(*active);
+}
+
+// A connected bus is free for the next grant after the last beat and its turnaround.
+void SnoopingBus::Arbitrated::let_go(Active& active) {
+  if (bus_.config_.structure != BusStructure::connected) return;
+  const Picoseconds now = now_ps();
+  const Picoseconds free = next_edge(std::max(now, data_free_), bus_.period_);
+  bus_.totals_.address_busy += free - active.granted;
+  if (free == now)
+    bus_free(nullptr);
+  else
+    agenda_.at<&Arbitrated::bus_free>(free, this, static_cast<Active*>(nullptr));
+}
+
+void SnoopingBus::Arbitrated::bus_free(Active*) {
+  held_ = false;
+  if (requests_.size() > 0) schedule(now_ps());
+}
+
+// ---- Memory and peripherals
+
+// For io accesses, the payload that is passed on says what and where.
+void SnoopingBus::Arbitrated::need_memory(Active& active, tlm::tlm_command command, std::uint8_t* data,
+                                          unsigned length, Picoseconds ready) {
+  WindowAccess& access = accesses_.acquire();
+  active.access = &access;
+  access.transaction = &active;
+  access.ready = ready;
+  access.set_command(command);
+  const BusTransaction* const transaction = active.transaction;
+  if (transaction != nullptr && transaction->io != nullptr) {
+    const tlm::tlm_generic_payload& io = *transaction->io;
+    access.set_address(io.get_address());
+    access.set_data_ptr(io.get_data_ptr());
+    access.set_data_length(io.get_data_length());
+    access.set_streaming_width(io.get_streaming_width());
+    access.set_byte_enable_ptr(io.get_byte_enable_ptr());
+    access.set_byte_enable_length(io.get_byte_enable_length());
+    for (unsigned i = 0; i < tlm::max_num_extensions(); ++i)  // lent; what the bus has set itself stays
+      if (io.get_extension(i) != nullptr && access.get_extension(i) == nullptr)
+        access.set_extension(i, io.get_extension(i));
+  } else {
+    const bool word = active.kind == BusKind::write_through;
+    access.set_address(active.line + (word ? transaction->offset : 0));
+    access.set_data_ptr(data);
+    access.set_data_length(length);
+    access.set_streaming_width(length);
+    const std::uint8_t* const enable = word ? transaction->byte_enable : nullptr;
+    access.set_byte_enable_ptr(const_cast<std::uint8_t*>(enable));
+    access.set_byte_enable_length(enable == nullptr ? 0 : length);
+  }
+  enter(active, active.transaction == nullptr ? Stage::memory_write : Stage::memory);
+  const int window = bus_.map_.find(access.get_address(), std::min(access.get_data_length(),
+                                                                   access.get_streaming_width()));
+  bus_.targets_[static_cast<std::size_t>(window)]->send(access);
+}
+
+void SnoopingBus::Arbitrated::answered(WindowAccess& access) {
+  Active& active = *static_cast<Active*>(access.transaction);
+  // Data that has to go over the bus is looked at on the bus's next edge: one event for both.
+  const bool to_bus = active.kind == BusKind::io_read || (active.kind <= BusKind::read_exclusive && !active.effected);
+  const Picoseconds when = to_bus ? next_edge(access.ended, bus_.period_) : access.ended;
+  agenda_.at<&Arbitrated::memory_done>(std::max(when, now_ps()), this, &active);
+}
+
+void SnoopingBus::Arbitrated::memory_done(Active* active) {
+  WindowAccess& access = *active->access;
+  active->access = nullptr;
+  const tlm::tlm_response_status status = access.get_response_status();
+  BusTransaction* const transaction = active->transaction;
+  if (transaction != nullptr) {
+    Timeline& timeline = transaction->timeline;
+    const Picoseconds from = timeline.end();
+    const Picoseconds queue = std::min(access.sent - from + access.times.queue, access.ended - from);
+    timeline.spend(LatencyPart::memory_queue, from + queue);
+    timeline.spend(LatencyPart::memory_array, access.ended);
+    if (transaction->io != nullptr) {
+      transaction->io->set_response_status(status);
+      transaction->io->set_dmi_allowed(access.is_dmi_allowed());
+      for (unsigned i = 0; i < tlm::max_num_extensions(); ++i)
+        if (transaction->io->get_extension(i) == access.get_extension(i)) access.set_extension(i, nullptr);
+    }
+  }
+  access.release();
+  const bool accepted = status == tlm::TLM_OK_RESPONSE;
+
+  if (transaction == nullptr) {  // memory has taken a supplied line
+    if (!accepted)
+      SC_REPORT_ERROR("/earshot/bus/memory", (std::string(bus_.name()) + ": memory refuses a line it let be read")
+                                                 .c_str());
+    ++bus_.totals_.block_writes;
+    settle(*active);
+    return;
+  }
+  switch (active->kind) {
+    case BusKind::read:
+    case BusKind::read_exclusive:
+      if (accepted) {
+        ++bus_.totals_.block_reads;
+        need_data_bus(*active, access.ended);
+        return;
+      }
+      let_go(*active);
+      break;
+    case BusKind::io_read:
+      transaction->status = status;
+      active->bytes = transaction->io->get_data_length();
+      need_data_bus(*active, access.ended);
+      return;
+    case BusKind::write_through:
+      if (!accepted) break;
+      ++bus_.totals_.word_writes;
+      commit(*active, bus_.ask_others(*transaction));
+      bus_.caches_[static_cast<std::size_t>(active->port)]->effected(*transaction);
+      break;
+    case BusKind::write_back:
+      if (accepted) {
+        ++bus_.totals_.block_writes;
+        bus_.presence_.remove(active->line, active->port);
+      }
+      break;
+    default:
+      break;
+  }
+  finish(*active, status);
+  settle(*active);
+}
+
+// ---- The end
+
+void SnoopingBus::Arbitrated::finish(Active& active, tlm::tlm_response_status status) {
+  BusTransaction& transaction = *active.transaction;
+  active.transaction = nullptr;
+  transaction.status = status;
+  ++completions_;
+  const Picoseconds now = now_ps();
+  outstanding_meter_.leave(now, active.granted);
+  if (outstanding_-- == bus_.config_.outstanding && requests_.size() > 0 && !held_)
+    schedule(next_edge(std::max(now, address_free_), bus_.period_));
+  if (status == tlm::TLM_OK_RESPONSE)
+    bus_.count(active.kind, transaction.timeline.begin(), transaction.timeline.end(),
+               transaction.timeline.since(transaction.timeline.begin())[LatencyPart::wait_for_grant]);
+  bus_.caches_[static_cast<std::size_t>(active.port)]->finished(transaction);
+}
+
+// Memory has all that belongs to the transaction: the next one for its line may be granted.
+void SnoopingBus::Arbitrated::settle(Active& active) {
+  if (active.kind < BusKind::io_read) {
+    requests_.unlock(active.line);
+    bus_.caches_[static_cast<std::size_t>(active.port)]->settled(active.line);
+    if (requests_.size() > 0 && !held_) schedule(next_edge(std::max(now_ps(), address_free_), bus_.period_));
+  }
+  last_end_ = now_ps();
+  active_.erase(std::find(active_.begin(), active_.end(), &active));
+  unused_.push_back(&active);
+}
+
+// ---- Debug access
+
+PresenceIndex::Mask SnoopingBus::Arbitrated::requesters(std::uint64_t line) const {
+  PresenceIndex::Mask ports = 0;
+  for (const Active* active : active_)
+    if (active->line == line && active->kind < BusKind::io_read) ports |= PresenceIndex::Mask{1} << active->port;
+  return ports;
+}
+
+void SnoopingBus::Arbitrated::debug_write(std::uint64_t address, const std::uint8_t* bytes, unsigned length) {
+  for (Active* active : active_) {
+    std::uint64_t first = active->line;
+    std::uint64_t size = 0;
+    if (active->kind == BusKind::write_through && active->transaction != nullptr) {
+      first += active->transaction->offset;
+      size = active->transaction->length;
+    } else if (active->memory_takes_line) {
+      size = bus_.line_bytes_;
+    }
+    for (std::uint64_t i = 0; i < size; ++i)
+      if (first + i - address < length) active->buffer[i] = bytes[first + i - address];
+  }
+}
+
+// ---- Reports
+
+std::vector<BusQueue> SnoopingBus::Arbitrated::queues() const {
+  std::vector<BusQueue> all{{"requests", &request_meter_},
+                            {"outstanding transactions", &outstanding_meter_},
+                            {"data bus", &data_meter_}};
+  for (const auto& target : bus_.targets_) {
+    all.push_back({"to window " + target->window().name, &target->queue()});
+    all.push_back({"at window " + target->window().name, &target->target()});
+  }
+  return all;
+}
+
+void SnoopingBus::Arbitrated::watch(void*) {
+  watching_ = false;
+  if (requests_.size() == 0 && active_.empty()) return;
+  if (completions_ == completions_seen_)
+    SC_REPORT_ERROR("/earshot/bus/stall", (std::string(bus_.name()) + ": nothing has completed for " +
+                                           std::to_string(bus_.config_.stall_cycles) + " bus cycles, at " +
+                                           sc_core::sc_time_stamp().to_string() + ". Outstanding:\n" + waiting())
+                                              .c_str());
+  watching_ = true;
+  completions_seen_ = completions_;
+  agenda_.at<&Arbitrated::watch>(now_ps() + bus_.cycles(bus_.config_.stall_cycles), this, static_cast<void*>(nullptr));
+}
+
+std::string SnoopingBus::Arbitrated::waiting() const {
+  static constexpr const char* stages[] = {"its snoop to end", "memory", "its data", "the data bus",
+                                           "memory to take the supplied line"};
+  std::ostringstream text;
+  const auto what = [&](const char* kind, int port, std::uint64_t line) {
+    text << "bus: " << kind << " of port " << port << ", line 0x" << std::hex << line << std::dec;
+  };
+  for (const Active* active : active_) {
+    what(name_of(active->kind), active->port, active->line);
+    text << ", granted at " << from_ps(active->granted) << ", waits for "
+         << stages[static_cast<std::size_t>(active->stage)] << " since " << from_ps(active->since) << '\n';
+  }
+  requests_.for_each([&](const RequestQueue::Request& request, bool held_up) {
+    what("request", request.transaction->requester, request.transaction->line);
+    text << " asked for at " << from_ps(request.since) << ", waits for "
+         << (held_up                                           ? "the transaction of its line to end"
+             : outstanding_ >= bus_.config_.outstanding ? "one of the outstanding transactions to end"
+                                                               : "its grant")
+         << '\n';
+  });
+  for (const auto& target : bus_.targets_) text << target->waiting();
+  for (const SnoopInterface* cache : bus_.caches_) text << cache->waiting();
+  return text.str();
+}
+
+}  // namespace earshot

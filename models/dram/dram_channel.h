@@ -1,0 +1,182 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+//
+// A DramChannel is the controller of one channel: its queues of bursts, and the scheduler that turns them into
+// commands, at most one each clock and each as early as the constraints allow. Kernel-free: time is the clocks that
+// the caller gives, never decreasing from call to call.
+//
+// It is driven by events. After every enqueue() and advance(), call advance() when next_event() has come, or
+// sooner. With nothing queued there is no event: refreshes, and rows closed for being idle, are caught up with when
+// the next request arrives or somebody asks.
+//
+// Reads and writes to one burst. The caller moves the bytes at enqueue(), in that order, so the order of arrival is
+// the order of memory; here is only time. Still the commands keep to it: a write never goes to the banks before an
+// older read of its burst. A read whose bytes are all in queued writes is served from there, one clock later.
+//
+// Refresh (JESD79-3 and -4: 8 may be postponed): done when due if nothing is queued for the rank (per-bank refresh:
+// for the bank), else postponed as long as the grade allows. Once it has begun, or can wait no longer, the rank (the
+// bank) takes no other commands until it is done.
+#pragma once
+
+#include <limits>
+#include <string>
+#include <vector>
+
+#include "earshot/dram/command.h"
+#include "earshot/dram/dram_address_map.h"
+#include "earshot/dram/dram_banks.h"
+#include "earshot/dram/dram_config.h"
+#include "earshot/dram/dram_counts.h"
+#include "earshot/dram/refresh_debt.h"
+#include "earshot/timing/queue_meter.h"
+
+namespace earshot {
+
+// What is asked of a channel: one burst.
+struct DramBurst {
+  unsigned id = 0;  // the caller's, told again with the completion
+  bool write = false;
+  std::uint64_t number = 0;  // address / burst_bytes
+  DramPlace place;
+  unsigned first = 0, last = 0;  // [first, last): the bytes of the burst that it touches, all of them
+};
+
+struct DramCompletion {
+  unsigned id = 0;
+  Clocks started = 0;  // the first command issued for it; of a write: when it was queued
+  Clocks done = 0;     // the end of its last beat; of a write: when it was queued
+};
+
+class DramChannel {
+ public:
+  static constexpr Clocks never = std::numeric_limits<Clocks>::max();
+
+  // REQUIRES: config.problems() is empty, but for toy grades: as far as the problems are the grade's.
+  explicit DramChannel(const DramConfig& config, unsigned channel = 0);
+
+  bool accepts(bool write) const {
+    return write ? writes_.entries.size() < config_.write_queue : reads_.entries.size() < config_.read_queue;
+  }
+  // Appends to `completions` if it is complete at once: a write, or a read served from a queued write.
+  // REQUIRES: accepts(burst.write); advance() has been called for every event before `now`.
+  void enqueue(const DramBurst& burst, Clocks now, std::vector<DramCompletion>& completions);
+
+  Clocks next_event();
+  // Issues every command up to and including `now`. Appends reads, whose `done` may be later than `now`, in that
+  // order.
+  void advance(Clocks now, std::vector<DramCompletion>& completions);
+
+  // The rest tells what has happened before `now`. REQUIRES: as for enqueue().
+  DramCounts counts(Clocks now);
+  const std::vector<CommandRecord>& commands(Clocks now);  // if config.log_commands
+  // In clocks. A read is queued until its column command is issued, and so is a write.
+  const QueueMeter& read_meter() const { return reads_.meter; }
+  const QueueMeter& write_meter() const { return writes_.meter; }
+  Clocks data_bus_busy() const { return counts_.data_bus_busy; }
+  Clocks data_end() const { return data_end_; }  // of the last burst
+
+  std::vector<std::string> broken_laws(Clocks now) const;  // empty if all hold
+  // Each queue, its head and what that waits for; empty if nothing is queued.
+  std::vector<std::string> pending();
+
+ private:
+  static constexpr std::size_t none = ~std::size_t{0};
+  enum class Found : std::uint8_t { nothing_yet, hit, closed, conflict };
+
+  struct Entry {
+    std::uint64_t number = 0, row = 0, order = 0;
+    Clocks arrived = 0, started = 0;
+    unsigned id = 0;
+    unsigned column = 0;
+    unsigned bank = 0;  // of the channel
+    std::uint16_t first = 0, last = 0;
+    std::uint16_t older_reads = 0;  // a write: queued reads of its burst that must go before it
+    Found found = Found::nothing_yet;
+  };
+  struct Queue {
+    bool write = false;
+    std::vector<Entry> entries;  // in order of arrival
+    std::size_t held = 0;        // of them wait for older reads
+    QueueMeter meter;
+  };
+  // What the scan of the queues knows about a bank; valid where the stamp is that of the scan.
+  struct BankScan {
+    std::uint64_t hit = 0, miss = 0, shut = 0;
+    unsigned queued = 0;  // bursts, in both queues
+  };
+  struct Rank {
+    RefreshDebt debt;
+    unsigned next_bank = 0;  // of the rank, to refresh next
+    unsigned queued = 0;     // bursts
+    bool begun = false;      // precharged for the refresh that comes next
+  };
+  // The command to issue next, if nothing arrives before.
+  struct Choice {
+    Clocks clock = never;
+    unsigned priority = 0;  // of those possible at one clock; the lowest goes
+    DramCommand command = DramCommand::refresh;
+    unsigned bank = 0;  // for a rank: its first
+    Queue* queue = nullptr;
+    std::size_t entry = none;
+  };
+  enum Priority : unsigned { refresh_first, over_age, first_kind, second_kind, third_kind, idle_last };
+
+  bool empty() const { return reads_.entries.empty() && writes_.entries.empty(); }
+  bool in_order() const { return config_.scheduling != DramScheduling::first_ready; }
+
+  // dram_channel.cpp
+  bool merge(const DramBurst& burst);
+  bool in_queued_write(const DramBurst& burst) const;
+  void append(Queue& queue, const DramBurst& burst, Clocks now);
+  void hold(Entry& write);
+  void release(std::uint64_t number);
+  void remove(Queue& queue, std::size_t entry, Clocks now);
+  void run_until(Clocks now, std::vector<DramCompletion>& completions);
+  void skip_idle_refreshes(Clocks now);
+  void issue(std::vector<DramCompletion>& completions);
+  void issue_column(std::vector<DramCompletion>& completions);
+  bool last_of_its_row(const Entry& entry) const;
+  void pay(unsigned rank, Clocks now);
+  void log(DramCommand command, unsigned bank, std::uint64_t row, std::uint64_t column);
+  std::string describe(const Queue& queue);
+
+  // dram_choice.cpp
+  void choose();
+  void choose_refresh();
+  void choose_in_order();
+  void choose_first_ready(Queue& queue);
+  void choose_idle_rows();
+  Queue& queue_to_serve();
+  Choice next_command(Queue& queue, std::size_t entry) const;
+  void consider(const Choice& choice) {
+    if (choice.clock < choice_.clock || (choice.clock == choice_.clock && choice.priority < choice_.priority))
+      choice_ = choice;
+  }
+  void look_again_at(Clocks clock) { change_ = std::min(change_, clock); }
+  Clocks no_sooner(Clocks clock) const { return std::max({clock, cursor_, command_bus_free_}); }
+
+  const DramConfig config_;
+  const unsigned channel_;
+  DramBanks banks_;
+  std::vector<BankScan> scan_;
+  std::vector<Rank> ranks_;
+  Queue reads_, writes_;
+  bool draining_ = false;
+  std::uint64_t next_order_ = 0;
+  std::uint64_t stamp_ = 0;
+
+  Clocks cursor_ = 0;            // everything before has happened
+  Clocks command_bus_free_ = 0;
+  bool chosen_ = false;          // the two below are valid
+  Choice choice_;
+  Clocks change_ = never;        // when another choice may be due although nothing arrives
+
+  DramCounts counts_;
+  std::uint64_t beats_ = 0;
+  Clocks data_end_ = 0;
+  Clocks occupied_since_ = 0;
+  std::vector<CommandRecord> log_;
+  std::vector<DramCompletion> unused_;  // idle time completes nothing
+};
+
+}  // namespace earshot
