@@ -6,63 +6,16 @@
 #include <cctype>
 #include <sstream>
 
-#include "quantities.h"
+#include "key_readers.h"
 
 namespace earshot {
 namespace {
 
-using Apply = std::function<std::string(const std::string&, Settings&)>;
-
-template <typename Number>
-Apply number(Number Settings::*member, std::uint64_t least, std::uint64_t most) {
-  return [=](const std::string& text, Settings& settings) -> std::string {
-    std::uint64_t value = 0;
-    if (!parse_number(text, value) || value < least || value > most)
-      return "a whole number from " + std::to_string(least) + " to " + std::to_string(most);
-    settings.*member = static_cast<Number>(value);
-    return {};
-  };
-}
-
-// At most 1 ms: with cycle counts up to 1000 that leaves room for 10^7 of the slowest transactions in 2^64 ps.
-Apply time(Picoseconds Settings::*member, Picoseconds least) {
-  return [=](const std::string& text, Settings& settings) -> std::string {
-    Picoseconds value = 0;
-    if (!parse_time(text, settings.bus_clock, value) || value < least || value > Picoseconds{1000000000})
-      return std::string("a time ") + (least > 0 ? "above 0, " : "") +
-             "of at most 1 ms in whole picoseconds, with a unit: 5ns, 1.25ns, 800ps, 1us, 3 bus-cycles";
-    settings.*member = value;
-    return {};
-  };
-}
-
-Apply yes_no(bool Settings::*member) {
-  return [=](const std::string& text, Settings& settings) -> std::string {
-    return parse_yes_no(text, settings.*member) ? "" : "on or off";
-  };
-}
-
-Apply word(std::string Settings::*member) {
-  return [=](const std::string& text, Settings& settings) -> std::string {
-    settings.*member = text;
-    return {};
-  };
-}
-
-// A key that has only one value as yet.
-Apply only(const std::string& value) {
-  return [=](const std::string& text, Settings&) -> std::string { return text == value ? "" : value; };
-}
+using S = Settings;
+using D = DramConfig;
 
 std::string apply_size(const std::string& text, Settings& settings) {
   return parse_size(text, settings.geometry.size_bytes) ? "" : "a size in bytes: 16384, 16KiB, 1MiB";
-}
-
-std::string apply_ways(const std::string& text, Settings& settings) {
-  std::uint64_t value = 0;
-  if (!parse_number(text, value) || value < 1 || value > 65536) return "a whole number from 1 to 65536";
-  settings.geometry.ways = static_cast<unsigned>(value);
-  return {};
 }
 
 std::string apply_line(const std::string& text, Settings& settings) {
@@ -78,15 +31,6 @@ std::string apply_replacement(const std::string& text, Settings& settings) {
 
 std::string apply_seed(const std::string& text, Settings& settings) {
   return parse_number(text, settings.geometry.seed) ? "" : "a whole number";
-}
-
-template <unsigned Settings::*member>
-std::string apply_width(const std::string& text, Settings& settings) {
-  std::uint64_t value = 0;
-  if (!parse_size(text, value) || value < 1 || value > 256 || (value & (value - 1)) != 0)
-    return "a power of two from 1 to 256 bytes: 8, 16B";
-  settings.*member = static_cast<unsigned>(value);
-  return {};
 }
 
 // "ram 0x0..0x7fffffff cached, uart 0x80000000..0x80000fff uncached"
@@ -120,27 +64,10 @@ std::string apply_windows(const std::string& text, Settings& settings) {
   return {};
 }
 
-std::string apply_order(const std::string& text, Settings& settings) {
-  if (text != "recorded" && text != "concurrent") return "recorded or concurrent";
-  settings.order = text == "recorded" ? Order::recorded : Order::concurrent;
-  return {};
-}
-
 std::string apply_pattern(const std::string& text, Settings& settings) {
   settings.uses_pattern = !text.empty();
   if (!text.empty()) settings.pattern.kind = text;
   return {};  // make_pattern() knows the kinds, and what goes together
-}
-
-template <typename Number>
-Apply pattern_number(Number PatternConfig::*member, std::uint64_t least, std::uint64_t most) {
-  return [=](const std::string& text, Settings& settings) -> std::string {
-    std::uint64_t value = 0;
-    if (!parse_number(text, value) || value < least || value > most)
-      return "a whole number from " + std::to_string(least) + " to " + std::to_string(most);
-    settings.pattern.*member = static_cast<Number>(value);
-    return {};
-  };
 }
 
 std::string apply_monitor(const std::string& text, Settings& settings) {
@@ -155,63 +82,188 @@ std::string apply_monitor(const std::string& text, Settings& settings) {
   return {};
 }
 
-}  // namespace
+const Need arbitrated{"timing", {"arbitrated"}};
+const Need dram{"memory.kind", {"dram"}};
+constexpr std::uint64_t most_queued = 4096;
+constexpr std::uint64_t most_clocks = std::uint64_t{1} << 32;
 
-const std::vector<Key>& keys() {
-  static const std::vector<Key> table{
-      {"bus.clock", "5ns", "period of the bus clock", time(&Settings::bus_clock, 1)},
-      {"bus.kind", "split", "address and data bus are granted apart: split", only("split")},
-      {"bus.arbitration", "first-come", "the earliest request gets the earliest gap: first-come", only("first-come")},
-      {"bus.width", "8", "bytes the data bus moves in a cycle", apply_width<&Settings::bus_width>},
+std::vector<Key> bus_keys() {
+  return {
+      {"bus.clock", "5ns", "period of the bus clock", time(at(&S::bus_clock), 1)},
+      {"bus.kind", "split", "split: address and data bus are granted apart; connected: held to the last beat",
+       choice<BusStructure>(at(&S::structure), {{"split", BusStructure::split},
+                                                                  {"connected", BusStructure::connected}})},
+      {"bus.arbitration", "first-come",
+       "first-come, round-robin, fixed-priority, time-slots, weighted-round-robin, lottery",
+       choice<Arbitration>(at(&S::arbiter, &ArbiterConfig::kind), {
+                    {"first-come", Arbitration::first_come},
+                    {"round-robin", Arbitration::round_robin},
+                    {"fixed-priority", Arbitration::fixed_priority},
+                    {"time-slots", Arbitration::time_slots},
+                    {"weighted-round-robin", Arbitration::weighted_round_robin},
+                    {"lottery", Arbitration::lottery}}),
+       {arbitrated}},
+      {"bus.priorities", "", "fixed-priority: initiators, first in line first; else in their order",
+       numbers(at(&S::arbiter, &ArbiterConfig::priorities)), {{"bus.arbitration", {"fixed-priority"}}}},
+      {"bus.weights", "", "weighted-round-robin, lottery: one an initiator; else all 1",
+       numbers(at(&S::arbiter, &ArbiterConfig::weights)),
+       {{"bus.arbitration", {"weighted-round-robin", "lottery"}}}},
+      {"bus.slots", "", "time-slots: the initiator of each slot, repeated for ever; else each once",
+       numbers(at(&S::arbiter, &ArbiterConfig::slots)), {{"bus.arbitration", {"time-slots"}}}},
+      {"bus.slot-cycles", "8", "time-slots: bus cycles in a slot",
+       number(at(&S::arbiter, &ArbiterConfig::slot_cycles), 1, 1000000), {{"bus.arbitration", {"time-slots"}}}},
+      {"bus.arbitration-seed", "1", "for the lottery",
+       number(at(&S::arbiter, &ArbiterConfig::seed), 0, ~std::uint64_t{0}), {{"bus.arbitration", {"lottery"}}}},
+      {"bus.width", "8", "bytes the data bus moves in a cycle", power_of_two(at(&S::bus_width))},
       {"bus.arbitration-cycles", "1", "from request to grant, uncontended",
-       number(&Settings::arbitration_cycles, 0, 1000)},
-      {"bus.address-cycles", "1", "an address on the address bus", number(&Settings::address_cycles, 1, 1000)},
-      {"bus.snoop-cycles", "1", "the other caches look the line up", number(&Settings::snoop_cycles, 0, 1000)},
-      {"bus.supply-cycles", "2", "a cache reads a line out for another", number(&Settings::supply_cycles, 0, 1000)},
+       number(at(&S::arbitration_cycles), 0, 1000)},
+      {"bus.address-cycles", "1", "an address on the address bus", number(at(&S::address_cycles), 1, 1000)},
+      {"bus.snoop-cycles", "1", "the other caches look the line up", number(at(&S::snoop_cycles), 0, 1000)},
+      {"bus.supply-cycles", "2", "a cache reads a line out for another", number(at(&S::supply_cycles), 0, 1000)},
+      {"bus.turnaround-cycles", "0", "the data bus rests after every transfer",
+       number(at(&S::turnaround_cycles), 0, 1000)},
+      {"bus.outstanding", "8", "transactions under way at once, from grant to last beat",
+       number(at(&S::bus_outstanding), 1, 1024), {arbitrated}},
+      {"bus.stall-cycles", "1000000", "nothing completes for so long: a finding; 0: never",
+       number(at(&S::stall_cycles), 0, 1000000000000), {arbitrated}},
+      {"bus.longest-wait", "0ns", "an initiator waits longer for a grant: a finding; 0ns: no limit",
+       time(at(&S::longest_wait), 0), {arbitrated}},
       {"bus.windows", "memory 0x0..0xffffffffffffffff cached",
-       "the address map: NAME FIRST..LAST cached|uncached, ...", apply_windows},
+       "the address map: NAME FIRST..LAST cached|uncached, ... (dram, not given: what it holds)", apply_windows},
+  };
+}
 
-      {"caches.count", "4", "caches on the bus, one for each initiator", number(&Settings::caches, 1, most_initiators)},
+std::vector<Key> cache_keys() {
+  return {
+      {"caches.count", "4", "caches on the bus, one for each initiator", number(at(&S::caches), 1, most_initiators)},
       {"caches.protocol", "dirty-owner-update", "a built-in protocol, or the path of a table file",
-       word(&Settings::protocol)},
+       word(at(&S::protocol))},
       {"caches.update-limit", "0", "competitive-update: unused updates until a copy goes; 0: the table's own",
-       number(&Settings::update_limit, 0, 15)},
+       number(at(&S::update_limit), 0, 15)},
       {"caches.size", "16KiB", "bytes in each cache", apply_size},
-      {"caches.ways", "4", "lines in each set", apply_ways},
+      {"caches.ways", "4", "lines in each set", number(at(&S::geometry, &Geometry::ways), 1, 65536)},
       {"caches.line", "32", "bytes in a line: 8 to 256", apply_line},
       {"caches.replacement", "lru", "who makes room: lru, tree-plru, fifo, random", apply_replacement},
       {"caches.seed", "1", "for random replacement", apply_seed},
-      {"caches.hit-time", "1ns", "to look a line up", time(&Settings::hit_time, 0)},
+      {"caches.hit-time", "1ns", "to look a line up", time(at(&S::hit_time), 0)},
+      {"caches.misses", "4", "lines a cache fetches or asks for at once", number(at(&S::misses), 1, 64), {arbitrated}},
+      {"caches.write-back-slots", "2", "victims of a cache on their way to memory",
+       number(at(&S::write_back_slots), 1, 64), {arbitrated}},
+  };
+}
 
-      {"memory.kind", "plain", "plain: every access takes a fixed time, one at a time", only("plain")},
-      {"memory.read-latency", "40ns", "of each read, before its beats", time(&Settings::read_latency, 0)},
-      {"memory.write-latency", "40ns", "of each write, before its beats", time(&Settings::write_latency, 0)},
-      {"memory.beat-time", "5ns", "of each beat", time(&Settings::beat_time, 0)},
-      {"memory.beat", "8", "bytes in a beat", apply_width<&Settings::beat_bytes>},
+std::vector<Key> plain_memory_keys() {
+  return {
+      {"memory.kind", "plain", "plain: every access takes a fixed time, one at a time; dram: by JEDEC timing",
+       choice<MemoryKind>(at(&S::memory_kind), {{"plain", MemoryKind::plain},
+                                                                {"dram", MemoryKind::dram}})},
+      {"memory.read-latency", "40ns", "plain, and uncached windows: of each read, before its beats",
+       time(at(&S::read_latency), 0)},
+      {"memory.write-latency", "40ns", "likewise: of each write, before its beats", time(at(&S::write_latency), 0)},
+      {"memory.beat-time", "5ns", "likewise: of each beat", time(at(&S::beat_time), 0)},
+      {"memory.beat", "8", "likewise: bytes in a beat", power_of_two(at(&S::beat_bytes))},
+  };
+}
 
-      {"workload.recording", "", "path of a recording; relative to the file that names it",
-       word(&Settings::recording)},
+std::vector<Key> dram_keys() {
+  const Need first_ready{"memory.scheduling", {"first-ready"}};
+  return {
+      {"memory.grade", "ddr4-2400t", "a built-in grade, or the path of a grade file", word(at(&S::grade)), {dram}},
+      {"memory.density", "0", "Gbit of a device; 0: the grade's usual", number(at(&S::density), 0, 1024), {dram}},
+      {"memory.device-width", "0", "data bits of a device; 0: the grade's usual", number(at(&S::device_width), 0, 64),
+       {dram}},
+      {"memory.channels", "1", "DRAM channels", number(at(&S::dram, &D::channels), 1, 64), {dram}},
+      {"memory.ranks", "1", "ranks in each channel", number(at(&S::dram, &D::ranks), 1, 16), {dram}},
+      {"memory.channel-width", "0", "data bits of a channel; 0: the grade's usual",
+       number(at(&S::dram, &D::channel_bits), 0, 1024), {dram}},
+      {"memory.scheduling", "first-ready", "first-ready (row hits first), first-come, one-at-a-time",
+       choice<DramScheduling>(at(&S::dram, &D::scheduling), {{"first-ready", DramScheduling::first_ready},
+                                                                    {"first-come", DramScheduling::first_come},
+                                                                    {"one-at-a-time", DramScheduling::one_at_a_time}}),
+       {dram, arbitrated}},
+      {"memory.age-cap", "2000", "first-ready: older requests go first, in DRAM clocks",
+       number(at(&S::dram, &D::age_cap), 1, most_clocks), {dram, arbitrated, first_ready}},
+      {"memory.read-queue", "32", "bursts a channel's read queue holds",
+       number(at(&S::dram, &D::read_queue), 1, most_queued), {dram, arbitrated}},
+      {"memory.write-queue", "32", "bursts a channel's write queue holds",
+       number(at(&S::dram, &D::write_queue), 1, most_queued), {dram}},
+      {"memory.write-high", "24", "first-ready: so many queued writes are served before reads",
+       number(at(&S::dram, &D::write_high), 1, most_queued), {dram, arbitrated, first_ready}},
+      {"memory.write-low", "8", "first-ready: down to so many", number(at(&S::dram, &D::write_low), 0, most_queued),
+       {dram, arbitrated, first_ready}},
+      {"memory.row-policy", "open", "when a row is closed: open (never), closed (at once), idle-timeout",
+       choice<DramRows>(at(&S::dram, &D::rows), {{"open", DramRows::open},
+                                                              {"closed", DramRows::closed},
+                                                              {"idle-timeout", DramRows::idle_timeout}}),
+       {dram}},
+      {"memory.row-timeout", "200", "idle-timeout: DRAM clocks after a bank's last command",
+       number(at(&S::dram, &D::idle_timeout), 0, most_clocks),
+       {dram, {"memory.row-policy", {"idle-timeout"}}}},
+      {"memory.address-map", "row rank bank column group channel",
+       "fields of an address, most significant first", word(at(&S::dram, &D::address_map)), {dram}},
+      {"memory.bank-hash", "off", "banks are chosen by bank bits XOR row bits",
+       yes_no(at(&S::dram, &D::hash_banks)), {dram}},
+      {"memory.refresh", "all-bank", "all-bank, per-bank, off",
+       choice<DramRefresh>(at(&S::dram, &D::refresh), {{"all-bank", DramRefresh::all_bank},
+                                                                 {"per-bank", DramRefresh::per_bank},
+                                                                 {"off", DramRefresh::off}}),
+       {dram}},
+      {"memory.frontend", "0", "DRAM clocks from a request to its place in a queue",
+       number(at(&S::dram, &D::frontend), 0, most_clocks), {dram}},
+      {"memory.backend", "0", "DRAM clocks from the last beat to the response",
+       number(at(&S::dram, &D::backend), 0, most_clocks), {dram}},
+      {"memory.command-log", "", "path to write every DRAM command to, as CSV", word(at(&S::command_log)),
+       {dram, arbitrated}},
+  };
+}
+
+std::vector<Key> workload_keys() {
+  using P = PatternConfig;
+  return {
+      {"workload.recording", "", "path of a recording; relative to the file that names it", word(at(&S::recording))},
       {"workload.order", "recorded", "recorded: one access at a time; concurrent: each initiator on its own",
-       apply_order},
-      {"workload.think", "0ns", "passes in an initiator before each access", time(&Settings::think, 0)},
+       choice<Order>(at(&S::order), {{"recorded", Order::recorded},
+                                                                          {"concurrent", Order::concurrent}})},
+      {"workload.addresses", "recorded", "recorded: as they are; packed: pages nobody touches are left out",
+       choice<bool>(at(&S::packed), {{"recorded", false}, {"packed", true}})},
+      {"workload.outstanding", "1", "accesses an initiator keeps in flight", number(at(&S::in_flight), 1, 64),
+       {arbitrated, {"workload.order", {"concurrent"}}}},
+      {"workload.think", "0ns", "passes in an initiator before each access", time(at(&S::think), 0)},
       {"workload.pattern", "",
        "instead of a recording: private, read-shared, producer-consumer, migratory, false-sharing, uniform",
        apply_pattern},
       {"workload.accesses", "100000", "of each initiator, for a pattern",
-       pattern_number(&PatternConfig::accesses, 1, std::uint64_t{1} << 40)},
-      {"workload.lines", "64", "lines a pattern touches", pattern_number(&PatternConfig::lines, 1, 1u << 20)},
-      {"workload.word", "4", "bytes in each of a pattern's accesses", pattern_number(&PatternConfig::word_bytes, 1, 8)},
+       number(at(&S::pattern, &P::accesses), 1, std::uint64_t{1} << 40)},
+      {"workload.lines", "64", "lines a pattern touches", number(at(&S::pattern, &P::lines), 1, 1u << 20)},
+      {"workload.word", "4", "bytes in each of a pattern's accesses", number(at(&S::pattern, &P::word_bytes), 1, 8)},
       {"workload.write-percent", "30", "share of writes, for patterns that choose",
-       pattern_number(&PatternConfig::write_percent, 0, 100)},
-      {"workload.seed", "1", "for a pattern", pattern_number(&PatternConfig::seed, 0, ~std::uint64_t{0})},
-
-      {"timing", "annotated", "how time passes: annotated (delays are computed, nothing blocks)", only("annotated")},
-      {"quantum", "1us", "how far an initiator may run ahead of the others; 0ns: not at all",
-       time(&Settings::quantum, 0)},
-      {"monitor", "auto", "check every access for coherence: on, off, auto (on in recorded order)", apply_monitor},
-      {"flush-at-end", "on", "write dirty lines back at the end and compare memory", yes_no(&Settings::flush_at_end)},
-      {"baseline", "on", "also run write-through-update on the same input", yes_no(&Settings::baseline)},
+       number(at(&S::pattern, &P::write_percent), 0, 100)},
+      {"workload.seed", "1", "for a pattern", number(at(&S::pattern, &P::seed), 0, ~std::uint64_t{0})},
   };
+}
+
+std::vector<Key> run_keys() {
+  return {
+      {"timing", "annotated", "annotated: delays are computed, nothing blocks; arbitrated: requests queue for grants",
+       choice<BusTiming>(at(&S::timing), {{"annotated", BusTiming::annotated},
+                                                               {"arbitrated", BusTiming::arbitrated}})},
+      {"quantum", "1us", "annotated: how far an initiator may run ahead of the others; 0ns: not at all",
+       time(at(&S::quantum), 0)},
+      {"monitor", "auto", "check every access for coherence: on, off, auto (on in recorded order)", apply_monitor},
+      {"flush-at-end", "on", "write dirty lines back at the end and compare memory", yes_no(at(&S::flush_at_end))},
+      {"baseline", "on", "also run write-through-update on the same input", yes_no(at(&S::baseline))},
+  };
+}
+
+}  // namespace
+
+const std::vector<Key>& keys() {
+  static const std::vector<Key> table = [] {
+    std::vector<Key> all;
+    for (auto* section : {bus_keys, cache_keys, plain_memory_keys, dram_keys, workload_keys, run_keys})
+      for (Key& key : section()) all.push_back(std::move(key));
+    return all;
+  }();
   return table;
 }
 

@@ -1,8 +1,10 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
+#define SC_INCLUDE_DYNAMIC_PROCESSES
 #include "platform.h"
 
 #include <algorithm>
+#include <sstream>
 
 #include "earshot/cache/invalidating_cache.h"
 #include "earshot/cache/updating_cache.h"
@@ -10,11 +12,6 @@
 
 namespace earshot {
 namespace {
-
-std::unique_ptr<AccessSource> open_source(const Settings& settings, std::uint32_t only) {
-  if (settings.uses_pattern) return make_pattern(settings.pattern, only);
-  return open_recording(settings.recording, only);
-}
 
 // One initiator's accesses of a recording, refusing a recording that has initiators without a cache: in concurrent
 // order nobody plays those, so nobody else would notice.
@@ -39,37 +36,36 @@ class FirstInitiator : public AccessSource {
 }  // namespace
 
 Platform::Platform(const Settings& settings, std::shared_ptr<const Table> table, const PlayerHooks& progress) {
+  build_bus(settings);
+  build_memories(settings);
+  build_caches(settings, table);
+  build_players(settings, progress);
+  if (settings.watched()) build_monitor(settings);
+  sc_core::sc_spawn([this] { flush(); }, "flusher");
+}
+
+void Platform::build_bus(const Settings& settings) {
   SnoopingBusConfig config;
   config.windows = settings.windows;
+  config.timing = settings.timing;
+  config.structure = settings.structure;
   config.clock = from_ps(settings.bus_clock);
   config.width_bytes = settings.bus_width;
   config.arbitration_cycles = settings.arbitration_cycles;
   config.address_cycles = settings.address_cycles;
   config.snoop_cycles = settings.snoop_cycles;
   config.supply_cycles = settings.supply_cycles;
+  config.turnaround_cycles = settings.turnaround_cycles;
+  config.arbiter = settings.arbiter;
+  config.outstanding = settings.bus_outstanding;
+  config.stall_cycles = settings.stall_cycles;
   bus_ = std::make_unique<SnoopingBus>("bus", config);
-
-  build_memories(settings);
-  build_caches(settings, table);
-  build_players(settings, progress);
-  if (!settings.watched()) return;
-  monitor_ = std::make_unique<CoherenceMonitor>(
-      settings.geometry.line_bytes, [this](std::uint64_t address, std::uint8_t* to, std::size_t length) {
-        const int window = bus_->address_map().find(address, length);
-        memories_[static_cast<std::size_t>(window)]->peek(address, to, length);
-      });
-  for (const auto& cache : caches_) cache->set_observer(monitor_.get());
 }
 
 void Platform::build_memories(const Settings& settings) {
-  PlainMemoryConfig config;
-  config.read_latency = from_ps(settings.read_latency);
-  config.write_latency = from_ps(settings.write_latency);
-  config.beat_time = from_ps(settings.beat_time);
-  config.beat_bytes = settings.beat_bytes;
   for (const Window& window : settings.windows) {
-    memories_.push_back(std::make_unique<PlainMemory>(("memory_" + window.name).c_str(), config));
-    bus_->window_socket(window.name).bind(memories_.back()->target_socket);
+    memories_.push_back(std::make_unique<WindowMemory>(window, settings));
+    bus_->window_socket(window.name).bind(memories_.back()->target_socket());
     if (window.cached) cached_memories_.push_back(memories_.back().get());
   }
 }
@@ -82,6 +78,8 @@ void Platform::build_caches(const Settings& settings, const std::shared_ptr<cons
     config.geometry.seed += i;
     config.table = table;
     config.hit_time = from_ps(settings.hit_time);
+    config.misses = settings.misses;
+    config.write_back_slots = settings.write_back_slots;
     if (table->family() == Family::update)
       caches_.push_back(std::make_unique<UpdatingCache>(name.c_str(), config));
     else
@@ -91,26 +89,38 @@ void Platform::build_caches(const Settings& settings, const std::shared_ptr<cons
 }
 
 void Platform::build_players(const Settings& settings, PlayerHooks hooks) {
+  if (settings.packed) packed_ = std::make_unique<PackedAddresses>(settings.recording, settings.windows);
   hooks.replace = [this](std::uint32_t initiator, std::uint64_t address, const sc_core::sc_time& delay) {
     const tlm::tlm_response_status status = caches_[initiator]->replace(address, delay);
     if (status != tlm::TLM_OK_RESPONSE)
       throw PlayError("memory refused the write-back that a replace of initiator " + std::to_string(initiator) +
                       " caused");
   };
-  std::vector<Player*> players;
+  hooks.finished = [this] {
+    if (--playing_ == 0) sc_core::sc_pause();
+  };
+  const bool concurrent = settings.order == Order::concurrent;
+  playing_ = concurrent ? settings.caches : 1;
+  const sc_core::sc_time think = from_ps(settings.think);
   for (unsigned i = 0; i < settings.caches; ++i) {
-    players_.push_back(std::make_unique<Player>(("player" + std::to_string(i)).c_str(), i, from_ps(settings.think),
-                                                hooks));
-    players_.back()->initiator_socket.bind(caches_[i]->cpu_socket);
-    players.push_back(players_.back().get());
-    if (settings.order == Order::recorded) continue;
-    if (i == 0 && !settings.uses_pattern)
-      players_.back()->set_source(
-          std::make_unique<FirstInitiator>(open_recording(settings.recording, 0), settings.caches));
-    else
-      players_.back()->set_source(open_source(settings, i));
+    const std::string name = "player" + std::to_string(i);
+    if (settings.in_flight > 1) {
+      non_blocking_players_.push_back(
+          std::make_unique<NonBlockingPlayer>(name.c_str(), i, settings.in_flight, think, hooks));
+      non_blocking_players_.back()->initiator_socket.bind(caches_[i]->cpu_socket);
+      non_blocking_players_.back()->set_source(stream(settings, i));
+    } else {
+      players_.push_back(std::make_unique<Player>(name.c_str(), i, think, hooks));
+      players_.back()->initiator_socket.bind(caches_[i]->cpu_socket);
+      if (concurrent) players_.back()->set_source(stream(settings, i));
+    }
   }
-  if (settings.order == Order::concurrent) return;
+  if (!concurrent) build_recorded_order(settings, hooks);
+}
+
+void Platform::build_recorded_order(const Settings& settings, const PlayerHooks& hooks) {
+  std::vector<Player*> players;
+  for (const auto& player : players_) players.push_back(player.get());
   std::unique_ptr<AccessSource> source;
   bool exact_values = false;  // and told in the order they came about
   if (settings.uses_pattern) {
@@ -118,23 +128,72 @@ void Platform::build_players(const Settings& settings, PlayerHooks hooks) {
   } else {
     auto recording = open_recording(settings.recording);
     exact_values = recording->notes().exact_order;
-    source = std::move(recording);
+    source = placed(std::move(recording));
   }
   recorded_order_ =
       std::make_unique<RecordedOrder>("recorded_order", players, std::move(source), exact_values, hooks);
 }
 
+// What one initiator plays in concurrent order.
+std::unique_ptr<AccessSource> Platform::stream(const Settings& settings, unsigned initiator) const {
+  if (settings.uses_pattern) return make_pattern(settings.pattern, initiator);
+  auto recording = open_recording(settings.recording, initiator);
+  if (initiator > 0) return placed(std::move(recording));
+  return placed(std::make_unique<FirstInitiator>(std::move(recording), settings.caches));
+}
+
+std::unique_ptr<AccessSource> Platform::placed(std::unique_ptr<AccessSource> source) const {
+  return packed_ == nullptr ? std::move(source) : packed_->moved(std::move(source));
+}
+
+void Platform::build_monitor(const Settings& settings) {
+  monitor_ = std::make_unique<CoherenceMonitor>(
+      settings.geometry.line_bytes, [this](std::uint64_t address, std::uint8_t* to, std::size_t length) {
+        const int window = bus_->address_map().find(address, length);
+        memories_[static_cast<std::size_t>(window)]->peek(address, to, length);
+      });
+  for (const auto& cache : caches_) cache->set_observer(monitor_.get());
+}
+
+template <typename Do>
+void Platform::for_each_end(Do what) const {
+  if (recorded_order_ != nullptr) what(recorded_order_->end());
+  for (const auto& player : players_) what(player->end());
+  for (const auto& player : non_blocking_players_) what(player->end());
+}
+
 Picoseconds Platform::finished_at() const {
   Picoseconds last = 0;
-  if (recorded_order_ != nullptr) {
-    if (recorded_order_->error()) std::rethrow_exception(recorded_order_->error());
-    last = to_ps(recorded_order_->finished_at());
-  }
-  for (const auto& player : players_) {
-    if (player->error()) std::rethrow_exception(player->error());
-    last = std::max(last, to_ps(player->finished_at()));
-  }
+  for_each_end([&](const PlayerEnd& end) {
+    if (end.error != nullptr) std::rethrow_exception(end.error);
+    last = std::max(last, to_ps(end.at));
+  });
   return last;
+}
+
+std::string Platform::waiting() const {
+  std::ostringstream text;
+  for (const auto& player : players_)
+    if (const std::string access = player->waiting(); !access.empty())
+      text << player->name() << ": waits for its access: " << access << '\n';
+  for (const auto& player : non_blocking_players_) {
+    std::istringstream accesses(player->waiting());
+    for (std::string access; std::getline(accesses, access);)
+      text << player->name() << ": waits for its access: " << access << '\n';
+  }
+  text << bus_->waiting();
+  for (const WindowMemory* memory : cached_memories_)
+    if (memory->dram() != nullptr)
+      for (const std::string& line : memory->dram()->pending()) text << line << '\n';
+  return text.str();
+}
+
+void Platform::flush() {
+  sc_core::wait(flush_);
+  sc_core::sc_time delay;
+  for (const auto& cache : caches_) cache->flush(delay);
+  flushed_ = true;
+  sc_core::sc_pause();
 }
 
 }  // namespace earshot

@@ -2,6 +2,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "quantities.h"
 
+#include <algorithm>
 #include <array>
 #include <utility>
 
@@ -54,6 +55,23 @@ bool parse_number(const std::string& text, std::uint64_t& out) {
     value = value * base + digit;
   }
   out = value;
+  return true;
+}
+
+bool parse_numbers(const std::string& text, std::uint64_t most, std::vector<std::uint64_t>& out) {
+  std::vector<std::uint64_t> values;
+  bool after_comma = false;
+  for (std::size_t at = 0; (at = text.find_first_not_of(' ', at)) != std::string::npos;) {
+    const std::size_t end = std::min(text.find_first_of(", ", at), text.size());
+    std::uint64_t value = 0;
+    if (!parse_number(text.substr(at, end - at), value) || value > most) return false;
+    values.push_back(value);
+    at = text.find_first_not_of(' ', end);
+    after_comma = at != std::string::npos && text[at] == ',';
+    if (after_comma) ++at;
+  }
+  if (after_comma) return false;
+  out = values;
   return true;
 }
 

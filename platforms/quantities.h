@@ -7,6 +7,7 @@
 
 #include <cstdint>
 #include <string>
+#include <vector>
 
 #include "earshot/timing/picoseconds.h"
 
@@ -14,6 +15,8 @@ namespace earshot {
 
 // A whole number, decimal or 0x-hex.
 bool parse_number(const std::string& text, std::uint64_t& out);
+// Whole numbers up to `most`, separated by commas, blanks, or both; none is fine.
+bool parse_numbers(const std::string& text, std::uint64_t most, std::vector<std::uint64_t>& out);
 // A number of bytes: "64", "16KiB", "1 MiB", "64B". Units: B, KiB, MiB, GiB.
 bool parse_size(const std::string& text, std::uint64_t& out);
 // A time that is a whole number of picoseconds: "1.25ns", "5 ns", "800ps", "1us". Units: ps, ns, us, ms.

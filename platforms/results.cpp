@@ -3,19 +3,14 @@
 #include "results.h"
 
 #include <algorithm>
+#include <cstdio>
+
+#include "bottleneck.h"
+#include "memory_results.h"
+#include "results_numbers.h"
 
 namespace earshot {
 namespace {
-
-double ns(Picoseconds ps) { return static_cast<double>(ps) / 1000.0; }
-
-double mean_ns(Picoseconds sum, std::uint64_t count) {
-  return count == 0 ? 0.0 : ns(sum) / static_cast<double>(count);
-}
-
-double share(Picoseconds busy, Picoseconds elapsed) {
-  return elapsed == 0 ? 0.0 : static_cast<double>(busy) / static_cast<double>(elapsed);
-}
 
 // "bus.width" becomes configuration["bus"]["width"].
 Json configuration(const Settings& settings) {
@@ -35,30 +30,64 @@ Json accesses(const CacheTotals& totals) {
           {"misses", totals.misses}, {"uncached", totals.uncached}, {"errors", totals.errors}};
 }
 
+// The mean and the percentiles of latencies, or of times.
+Json spread(const Histogram& histogram) {
+  return {{"mean-ns", mean_ns(histogram.sum(), histogram.count())},
+          {"p50-ns", ns(histogram.percentile(50))},
+          {"p95-ns", ns(histogram.percentile(95))},
+          {"p99-ns", ns(histogram.percentile(99))},
+          {"max-ns", ns(histogram.max())}};
+}
+
+Json counted_spread(const Histogram& histogram) {
+  Json out = {{"count", histogram.count()}};
+  out.update(spread(histogram));
+  return out;
+}
+
 Json latency(const CacheTotals& totals) {
   const Histogram all = totals.latency();
-  Json parts, sums;
+  Json parts, sums, kinds;
   for (int i = 0; i < latency_parts; ++i) {
     const auto part = static_cast<LatencyPart>(i);
     parts[name_of(part)] = mean_ns(totals.parts[part], all.count());
     sums[name_of(part)] = totals.parts[part];
   }
-  return {{"mean-ns", mean_ns(all.sum(), all.count())},
-          {"p50-ns", ns(all.percentile(50))},
-          {"p95-ns", ns(all.percentile(95))},
-          {"p99-ns", ns(all.percentile(99))},
-          {"max-ns", ns(all.max())},
-          {"total-ps", all.sum()},
-          {"parts-ns", parts},
-          {"total-parts-ps", sums}};
+  for (int i = 0; i < access_kinds; ++i)
+    kinds[name_of(static_cast<AccessKind>(i))] = counted_spread(totals.kind[static_cast<std::size_t>(i)]);
+  Json out = spread(all);
+  out["total-ps"] = all.sum();
+  out["parts-ns"] = parts;
+  out["total-parts-ps"] = sums;
+  out["kinds"] = kinds;
+  return out;
+}
+
+Json queues(const Played& played, const std::string& owner) {
+  Json out = Json::array();
+  for (const MeteredQueue& queue : played.queues)
+    if (queue.owner == owner) out.push_back(queue_json(queue.name, queue.meter, played.elapsed, 1));
+  return out;
+}
+
+Json grants(const SnoopingBusTotals& totals) {
+  Json out = Json::array();
+  for (std::size_t port = 0; port < totals.ports.size(); ++port) {
+    const BusPortTotals& one = totals.ports[port];
+    out.push_back({{"initiator", port},
+                   {"grants", one.grants},
+                   {"mean-wait-ns", mean_ns(one.wait, one.grants)},
+                   {"longest-wait-ns", ns(one.longest_wait)}});
+  }
+  return out;
 }
 
 // Counts are of the whole run; times and utilisations of what came before the flush, which no initiator waits for.
-Json bus(const SnoopingBusTotals& totals, const SnoopingBusTotals& before_flush, Picoseconds elapsed) {
+Json bus(const SnoopingBusTotals& totals, const Played& played) {
   Json counts, costs;
   Picoseconds wait = 0;
   for (int i = 0; i < bus_kinds; ++i) {
-    const BusKindTotals& kind = before_flush.kind[static_cast<std::size_t>(i)];
+    const BusKindTotals& kind = played.bus.kind[static_cast<std::size_t>(i)];
     const char* name = name_of(static_cast<BusKind>(i));
     wait += kind.wait;
     counts[name] = totals.kind[static_cast<std::size_t>(i)].count;
@@ -68,96 +97,137 @@ Json bus(const SnoopingBusTotals& totals, const SnoopingBusTotals& before_flush,
                    {"data-cycles", kind.data_cycles}};
   }
   return {{"transactions", counts},
-          {"utilisation", share(std::max(before_flush.address_busy, before_flush.data_busy), elapsed)},
-          {"address-utilisation", share(before_flush.address_busy, elapsed)},
-          {"data-utilisation", share(before_flush.data_busy, elapsed)},
+          {"utilisation", share(std::max(played.bus.address_busy, played.bus.data_busy), played.elapsed)},
+          {"address-utilisation", share(played.bus.address_busy, played.elapsed)},
+          {"data-utilisation", share(played.bus.data_busy, played.elapsed)},
           {"wait-ns", ns(wait)},
-          {"costs", costs}};
+          {"costs", costs},
+          {"queues", queues(played, "bus")},
+          {"grants", grants(played.bus)}};
 }
 
-// Of the busiest memory behind a cached window.
-Picoseconds memory_busy(const Platform& platform) {
-  Picoseconds busy = 0;
-  for (const PlainMemory* memory : platform.cached_memories()) busy = std::max(busy, memory->busy_time());
-  return busy;
+// Latencies without what accesses waited for each other: of the waiting for the bus, only arbitration and, on
+// average, half a cycle until the next clock edge remain for each transaction somebody waits for.
+Load load_of(const Settings& settings, const Played& played) {
+  Load load;
+  load.elapsed = played.elapsed;
+  load.think = settings.think;
+  load.in_flight = settings.in_flight;
+  CacheTotals all;
+  for (const CacheTotals& one : played.caches) all.add(one);
+  load.accesses = all.reads + all.writes + all.uncached;
+  std::uint64_t transactions = 0;
+  Picoseconds io = all.uncached * settings.hit_time, wait = all.parts[LatencyPart::wait_for_grant];
+  for (int i = 0; i < bus_kinds; ++i) {
+    const BusKindTotals& kind = played.bus.kind[static_cast<std::size_t>(i)];
+    if (static_cast<BusKind>(i) != BusKind::write_back) transactions += kind.count;
+    if (static_cast<BusKind>(i) < BusKind::io_read) continue;
+    io += kind.time;
+    wait += kind.wait;
+  }
+  const Picoseconds unavoidable =
+      transactions * (settings.arbitration_cycles * settings.bus_clock + settings.bus_clock / 2);
+  const Picoseconds waited = wait - std::min(wait, unavoidable) + all.parts[LatencyPart::memory_queue];
+  load.uncontended = all.parts.total() + io - waited;
+  return load;
 }
 
-void check_values(Platform& platform) {
-  const RecordedOrder* order = platform.recorded_order();
-  if (order == nullptr || order->reads_that_differ() == 0) return;
-  throw Finding(std::to_string(order->reads_that_differ()) + " of " + std::to_string(order->reads_compared()) +
-                " reads returned another value than the recording has. " +
-                (platform.monitor() == nullptr
-                     ? "Run with monitor = on to see whether an access was incoherent. First: "
-                     : "Every access was coherent, so the recording is not in the order its values came about. "
-                       "First: ") +
-                order->first_difference());
+std::vector<Resource> resources_of(const Settings& settings, const Platform& platform, const Played& played) {
+  std::vector<Resource> resources;
+  if (settings.structure == BusStructure::connected) {
+    resources.push_back({"bus", played.bus.address_busy});
+  } else {
+    resources.push_back({"address bus", played.bus.address_busy});
+    resources.push_back({"data bus", played.bus.data_busy});
+  }
+  for (std::size_t i = 0; i < platform.cached_memories().size(); ++i) {
+    const std::vector<Resource> more = memory_resources(platform, played, i);
+    resources.insert(resources.end(), more.begin(), more.end());
+  }
+  return resources;
+}
+
+Json bottleneck(const Settings& settings, const Platform& platform, const Played& played) {
+  const std::vector<Resource> resources = resources_of(settings, platform, played);
+  const Bottleneck found = find_bottleneck(resources, load_of(settings, played));
+  Json all = Json::array();
+  for (const Resource& resource : resources)
+    all.push_back({{"resource", resource.name}, {"utilisation", share(resource.busy, played.elapsed)}});
+  Json out = {{"resource", found.resource},
+              {"utilisation", found.utilisation},
+              {"headroom", 1 - found.utilisation},
+              {"demand-ns", found.demand_ps / 1000},
+              {"initiators-at-saturation", nullptr},
+              {"resources", all}};
+  if (found.initiators_at_saturation > 0) out["initiators-at-saturation"] = found.initiators_at_saturation;
+  return out;
+}
+
+Json checks(Platform& platform, const Played& played) {
+  std::uint64_t latencies = 0;
+  for (const CacheTotals& one : played.caches) latencies += one.latency().count();
+  std::uint64_t queues = played.queues.size();
+  if (!played.queues.empty())
+    for (const WindowMemory* memory : platform.cached_memories())
+      if (memory->dram() != nullptr) queues += 1 + 2 * memory->dram()->config().channels;
+  return {{"monitored", platform.monitor() != nullptr},
+          {"line-accesses-checked", platform.monitor() == nullptr ? 0 : platform.monitor()->accesses_checked()},
+          {"reads-compared-with-recording",
+           platform.recorded_order() == nullptr ? 0 : platform.recorded_order()->reads_compared()},
+          {"dirty-lines-left", played.dirty_lines},
+          {"latencies-checked", latencies},
+          {"queues-checked", queues}};
+}
+
+std::string in_ns(Picoseconds time) {
+  char text[40];
+  std::snprintf(text, sizeof text, "%.1f ns", ns(time));
+  return text;
+}
+
+Json findings(const Settings& settings, Platform& platform, const Played& played) {
+  Json out = Json::array();
+  for (std::size_t port = 0; port < played.bus.ports.size() && settings.longest_wait > 0; ++port)
+    if (const Picoseconds wait = played.bus.ports[port].longest_wait; wait > settings.longest_wait)
+      out.push_back("initiator " + std::to_string(port) + " waited " + in_ns(wait) +
+                    " for a grant of the bus; bus.longest-wait allows " + in_ns(settings.longest_wait));
+  for (const std::string& law : broken_laws(platform))
+    out.push_back("a self-check fails, which is a bug in Earshot; do not use these results: " + law);
+  return out;
 }
 
 }  // namespace
 
-Json collect_results(const Settings& settings, const Table& table, Platform& platform) {
-  Picoseconds elapsed = 0;
-  try {
-    elapsed = platform.finished_at();
-  } catch (const CoherenceViolation& violation) {
-    throw Finding(violation.what());
-  } catch (const PlayError& error) {
-    throw UsageError((settings.recording.empty() ? "the pattern" : settings.recording) + ": " + error.what());
-  }
-  check_values(platform);
-
-  // What is booked behind the last access still belongs to the run; the write-backs of the flush do not.
-  elapsed = std::max(elapsed, platform.bus().busy_until());
-  for (const PlainMemory* memory : platform.cached_memories()) elapsed = std::max(elapsed, memory->busy_until());
-  const SnoopingBusTotals before_flush = platform.bus().totals();
-  const Picoseconds memory_was_busy = memory_busy(platform);
-
-  std::uint64_t dirty = 0;
-  try {
-    sc_core::sc_time delay = from_ps(elapsed) - sc_core::sc_time_stamp();
-    if (settings.flush_at_end)
-      for (const auto& cache : platform.caches()) cache->flush(delay);
-    for (const auto& cache : platform.caches()) dirty += cache->owned_lines();
-    if (platform.monitor() != nullptr) platform.monitor()->check_memory();
-  } catch (const CoherenceViolation& violation) {
-    throw Finding(violation.what());
-  }
+Json collect_results(const Settings& settings, const Table& table, Platform& platform, const Played& played) {
   const SnoopingBusTotals totals = platform.bus().totals();
-
   Json out;
   out["schema"] = results_schema;
   out["configuration"] = configuration(settings);
   out["protocol"] = table.name();
-  out["elapsed-ns"] = ns(elapsed);
+  out["elapsed-ns"] = ns(played.elapsed);
 
   CacheTotals all;
   Json initiators = Json::array();
-  for (const auto& cache : platform.caches()) {
-    const CacheTotals one = cache->totals();
-    all.add(one);
-    initiators.push_back({{"initiator", cache->port()}, {"accesses", accesses(one)}, {"latency", latency(one)}});
+  for (std::size_t i = 0; i < played.caches.size(); ++i) {
+    all.add(played.caches[i]);
+    initiators.push_back({{"initiator", i},
+                          {"accesses", accesses(played.caches[i])},
+                          {"latency", latency(played.caches[i])},
+                          {"queues", queues(played, "cache " + std::to_string(i))}});
   }
   out["accesses"] = accesses(all);
-  out["bus"] = bus(totals, before_flush, elapsed);
+  out["bottleneck"] = bottleneck(settings, platform, played);
+  out["bus"] = bus(totals, played);
   out["supplies"] = {{"owner", totals.supplied_by_owner},
                      {"sharer", totals.supplied_by_sharer},
                      {"memory", totals.supplied_by_memory}};
-  out["memory"] = {
-      {"block-reads", totals.block_reads},
-      {"block-writes", totals.block_writes},
-      {"word-writes", totals.word_writes},
-      {"block-writes-at-end", totals.block_writes - before_flush.block_writes},
-      {"utilisation", share(memory_was_busy, elapsed)}};
+  out["memory"] = memory_results(platform, totals, played);
   out["latency"] = latency(all);
+  out["latency"]["kinds"]["write-back"] =
+      counted_spread(played.bus.kind[static_cast<std::size_t>(BusKind::write_back)].latency);
   out["initiators"] = initiators;
-
-  Json checks = {{"monitored", platform.monitor() != nullptr},
-                 {"line-accesses-checked", platform.monitor() == nullptr ? 0 : platform.monitor()->accesses_checked()},
-                 {"reads-compared-with-recording",
-                  platform.recorded_order() == nullptr ? 0 : platform.recorded_order()->reads_compared()},
-                 {"dirty-lines-left", dirty}};
-  out["checks"] = checks;
+  out["checks"] = checks(platform, played);
+  out["findings"] = findings(settings, platform, played);
   out["caution"] = caution;
   return out;
 }

@@ -4,13 +4,12 @@
 // Turns a finished simulation into the results document.
 #pragma once
 
-#include "platform.h"
+#include "played.h"
 #include "simulate.h"
 
 namespace earshot {
 
-// Call once, after sc_start() returned. Writes dirty lines back if the settings say so, and compares memory.
-// Throws what stopped the simulation, and Finding for violations and differing values.
-Json collect_results(const Settings& settings, const Table& table, Platform& platform);
+// Call once, after play(). Its "findings" say what the user must look at although there are results.
+Json collect_results(const Settings& settings, const Table& table, Platform& platform, const Played& played);
 
 }  // namespace earshot

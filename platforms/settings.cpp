@@ -12,18 +12,12 @@
 
 #include "earshot/protocol/nearest.h"
 #include "keys.h"
+#include "settings_checks.h"
 
 namespace earshot {
 namespace {
 
 namespace po = boost::program_options;
-
-// What was given for a key, and where.
-struct Given {
-  std::string text;
-  std::string where;     // "platform.ini:12" or "command line"
-  bool in_file = false;
-};
 
 po::options_description described_keys() {
   po::options_description description;
@@ -70,7 +64,7 @@ class Collector {
   void problem(const std::string& text) { problems_.push_back(text); }
   void give_up_if_problems() const;
 
-  std::map<std::string, Given> given;
+  GivenKeys given;
 
  private:
   void take(const po::parsed_options& parsed, bool in_file,
@@ -152,62 +146,6 @@ void Collector::give_up_if_problems() const {
   throw UsageError(text);
 }
 
-// What is wrong with a recording as far as its beginning tells; empty if nothing is.
-std::string problem_with_recording(const std::string& path) {
-  std::error_code ignored;
-  if (std::filesystem::exists(path, ignored) && !std::filesystem::is_regular_file(path, ignored))
-    return path + ": is no regular file, and a recording is read more than once";
-  try {
-    open_recording(path);
-    return {};
-  } catch (const RecordingError& error) {
-    return error.what();
-  }
-}
-
-void load_protocol(Settings& settings, Collector& collector) {
-  try {
-    settings.table = std::make_shared<const Table>(load_table(settings.protocol, settings.update_limit));
-  } catch (const TableError& error) {
-    const auto found = collector.given.find("caches.protocol");
-    collector.problem((found == collector.given.end() ? "default" : found->second.where) + ": caches.protocol: " +
-                      error.what());
-  }
-}
-
-// What no single key can tell.
-void check_together(const Settings& settings, Collector& collector) {
-  const auto where = [&](const char* key) {
-    const auto found = collector.given.find(key);
-    return (found == collector.given.end() ? std::string("default") : found->second.where) + ": ";
-  };
-  if (const auto found = collector.given.find("caches.update-limit");
-      settings.table != nullptr && settings.update_limit != 0 && !settings.table->counts())
-    collector.problem(found->second.where + ": caches.update-limit = " + found->second.text + ": protocol '" +
-                      settings.table->name() + "' does not count updates; leave the key out");
-  const std::vector<std::string> misshapen = settings.geometry.problems();
-  for (const std::string& problem : misshapen)  // each begins with the key's name
-    collector.problem(where(("caches." + problem.substr(0, problem.find(':'))).c_str()) + "caches." + problem);
-  for (const std::string& problem : AddressMap(settings.windows).problems(settings.geometry.line_bytes))
-    collector.problem(where("bus.windows") + "bus.windows: " + problem);
-  if (settings.recording.empty() && !settings.uses_pattern)
-    collector.problem("configuration: nothing to play; give workload.recording or workload.pattern");
-  if (!settings.recording.empty() && settings.uses_pattern)
-    collector.problem(where("workload.pattern") +
-                      "workload.pattern: a recording is given too; keep one of workload.recording, workload.pattern");
-  if (!settings.recording.empty())
-    if (const std::string problem = problem_with_recording(settings.recording); !problem.empty())
-      collector.problem(where("workload.recording") + "workload.recording: " + problem);
-  if (!settings.uses_pattern || !misshapen.empty()) return;
-  try {
-    make_pattern(settings.pattern);
-  } catch (const PatternError& error) {
-    std::istringstream lines(error.what());
-    for (std::string line; std::getline(lines, line);)
-      collector.problem(where("workload.pattern") + "workload.pattern: " + line);
-  }
-}
-
 }  // namespace
 
 Settings read_settings(const std::string& config_path, const std::vector<std::string>& arguments) {
@@ -236,14 +174,15 @@ Settings read_settings(const std::string& config_path, const std::vector<std::st
     if (!only_if_there || std::filesystem::exists(beside, ignored)) path = beside.string();
   };
   beside_file("workload.recording", settings.recording, false);
-  const std::vector<std::string>& built_in = builtin_tables();
-  if (std::find(built_in.begin(), built_in.end(), settings.protocol) == built_in.end())
-    beside_file("caches.protocol", settings.protocol, true);
+  const auto is_builtin = [](const std::vector<std::string>& names, const std::string& name) {
+    return std::find(names.begin(), names.end(), name) != names.end();
+  };
+  if (!is_builtin(builtin_tables(), settings.protocol)) beside_file("caches.protocol", settings.protocol, true);
+  if (!is_builtin(builtin_grades(), settings.grade)) beside_file("memory.grade", settings.grade, true);
 
   settings.pattern.initiators = settings.caches;
   settings.pattern.line_bytes = settings.geometry.line_bytes;
-  load_protocol(settings, collector);
-  check_together(settings, collector);
+  for (const std::string& what : complete(settings, collector.given)) collector.problem(what);
   collector.give_up_if_problems();
   return settings;
 }

@@ -13,7 +13,9 @@
 #include <vector>
 
 #include "earshot/bus/address_map.h"
+#include "earshot/bus/snooping_bus.h"
 #include "earshot/cache/geometry.h"
+#include "earshot/dram/dram_config.h"
 #include "earshot/protocol/table.h"
 #include "earshot/timing/picoseconds.h"
 #include "earshot/traffic/pattern.h"
@@ -27,13 +29,21 @@ class UsageError : public std::runtime_error {
 };
 
 enum class Order { recorded, concurrent };
+enum class MemoryKind { plain, dram };
 enum class Watch { where_recorded, always, never };  // the coherence monitor
 
 struct Settings {
+  BusTiming timing = BusTiming::annotated;
+
   // bus
+  BusStructure structure = BusStructure::split;
   Picoseconds bus_clock = 5000;
   unsigned bus_width = 0;
-  unsigned arbitration_cycles = 0, address_cycles = 0, snoop_cycles = 0, supply_cycles = 0;
+  unsigned arbitration_cycles = 0, address_cycles = 0, snoop_cycles = 0, supply_cycles = 0, turnaround_cycles = 0;
+  ArbiterConfig arbiter;
+  unsigned bus_outstanding = 1;
+  std::uint64_t stall_cycles = 0;
+  Picoseconds longest_wait = 0;   // for a grant, until it is a finding; 0: no limit
   std::vector<Window> windows;
 
   // caches
@@ -43,16 +53,24 @@ struct Settings {
   std::shared_ptr<const Table> table;  // the protocol, loaded; not yet proved
   Geometry geometry;
   Picoseconds hit_time = 0;
+  unsigned misses = 1, write_back_slots = 1;
 
   // memory
-  Picoseconds read_latency = 0, write_latency = 0, beat_time = 0;
+  MemoryKind memory_kind = MemoryKind::plain;
+  Picoseconds read_latency = 0, write_latency = 0, beat_time = 0;  // plain, and uncached windows
   unsigned beat_bytes = 0;
+  std::string grade;              // a built-in grade's name, or the path of a grade file
+  unsigned density = 0, device_width = 0;
+  DramConfig dram;                // its grade is loaded if memory_kind is dram
+  std::string command_log;        // path; empty for none
 
   // workload
   std::string recording;          // path; empty for a pattern
   bool uses_pattern = false;
   PatternConfig pattern;
   Order order = Order::recorded;
+  bool packed = false;            // addresses of a recording: see PackedAddresses
+  unsigned in_flight = 1;         // accesses of an initiator
   Picoseconds think = 0;
   Picoseconds quantum = 0;
 

@@ -24,9 +24,15 @@ void SnoopingBus::Arbitrated::request(BusTransaction& transaction) {
   request_meter_.enter(now);
   if (!held_) schedule(std::max(ready, address_free_));
   if (watching_ || bus_.config_.stall_cycles == 0) return;
+  watch_from_here();
+}
+
+// On an event of its own: what is cancelled stays in the kernel's queue until its time, so nothing near may be
+// notified in place of something far.
+void SnoopingBus::Arbitrated::watch_from_here() {
   watching_ = true;
   completions_seen_ = completions_;
-  agenda_.at<&Arbitrated::watch>(now + bus_.cycles(bus_.config_.stall_cycles), this, static_cast<void*>(nullptr));
+  stall_.notify(from_ps(bus_.cycles(bus_.config_.stall_cycles)));
 }
 
 void SnoopingBus::Arbitrated::schedule(Picoseconds time) {
@@ -191,56 +197,45 @@ void SnoopingBus::Arbitrated::snoop_ended(Active* active) {  // of an upgrade: n
   settle(*active);
 }
 
-// ---- Data bus
+// ---- Data bus: first ready, first served
 
+// `ready` may be to come; who gets ready earlier goes first, unless the transfer has begun.
 void SnoopingBus::Arbitrated::need_data_bus(Active& active, Picoseconds ready) {
   enter(active, Stage::data);
-  ready = next_edge(ready, bus_.period_);
-  if (ready == now_ps())
-    data_ready(&active);
-  else
-    agenda_.at<&Arbitrated::data_ready>(ready, this, &active);
+  active.ready = next_edge(ready, bus_.period_);
+  std::size_t place = transfers_.size();
+  while (place > 0 && transfers_[place - 1]->ready > active.ready && !(place == 1 && transfers_[0]->start <= now_ps()))
+    --place;
+  transfers_.insert(transfers_.begin() + static_cast<std::ptrdiff_t>(place), &active);
+  if (place == 0) plan_transfer();
 }
 
-void SnoopingBus::Arbitrated::data_ready(Active* active) {
-  const Picoseconds now = now_ps();
-  enter(*active, Stage::data_bus);
-  data_meter_.enter(now);
-  data_queue_.push_back(active);
-  if (transferring_ == nullptr && data_queue_.size() == 1) {
-    if (now >= data_free_)
-      next_transfer(nullptr);
-    else
-      agenda_.at<&Arbitrated::next_transfer>(data_free_, this, static_cast<Active*>(nullptr));
-  }
-}
-
-void SnoopingBus::Arbitrated::next_transfer(Active*) {
-  Active& active = *data_queue_.front();
-  data_queue_.pop_front();
-  transferring_ = &active;
-  const Picoseconds now = now_ps();
-  data_meter_.leave(now, active.since);
-  const std::uint64_t beats = bus_.beats(active.bytes);
-  const Picoseconds end = now + bus_.cycles(beats);
-  data_free_ = end + bus_.cycles(bus_.config_.turnaround_cycles);
-  bus_.totals_.kind[static_cast<std::size_t>(active.kind)].data_cycles += beats;
-  bus_.totals_.data_busy += data_free_ - now;
-  ++bus_.transfers_;
-  active.transaction->timeline.spend(LatencyPart::wait_for_grant, now);
-  active.transaction->timeline.spend(LatencyPart::transfer, end);
-  agenda_.at<&Arbitrated::transferred>(end, this, &active);
+// The first in line will have the data bus as soon as it is ready and the bus is free.
+void SnoopingBus::Arbitrated::plan_transfer() {
+  Active& active = *transfers_.front();
+  active.start = std::max(active.ready, data_free_);
+  active.end = active.start + bus_.cycles(bus_.beats(active.bytes));
+  agenda_.at<&Arbitrated::transferred>(active.end, this, &active);
 }
 
 void SnoopingBus::Arbitrated::transferred(Active* active) {
   const Picoseconds now = now_ps();
-  transferring_ = nullptr;
-  if (!data_queue_.empty()) {
-    if (now >= data_free_)
-      next_transfer(nullptr);
-    else
-      agenda_.at<&Arbitrated::next_transfer>(data_free_, this, static_cast<Active*>(nullptr));
-  }
+  if (transfers_.empty() || transfers_.front() != active || active->end != now) return;  // another went first
+  // All that were ready by the time this one began are known now.
+  for (; metered_ < transfers_.size() && transfers_[metered_]->ready <= active->start; ++metered_)
+    data_meter_.enter(transfers_[metered_]->ready);
+  data_meter_.leave(active->start, active->ready);
+  --metered_;
+  transfers_.erase(transfers_.begin());
+  const Picoseconds turnaround = bus_.cycles(bus_.config_.turnaround_cycles);
+  data_free_ = now + turnaround;
+  if (!transfers_.empty()) plan_transfer();
+
+  bus_.totals_.kind[static_cast<std::size_t>(active->kind)].data_cycles += bus_.beats(active->bytes);
+  bus_.totals_.data_busy += data_free_ - active->start;
+  ++bus_.transfers_;
+  active->transaction->timeline.spend(LatencyPart::wait_for_grant, active->start);
+  active->transaction->timeline.spend(LatencyPart::transfer, now);
   let_go(*active);
 
   BusTransaction& transaction = *active->transaction;
@@ -333,10 +328,11 @@ void SnoopingBus::Arbitrated::need_memory(Active& active, tlm::tlm_command comma
 
 void SnoopingBus::Arbitrated::answered(WindowAccess& access) {
   Active& active = *static_cast<Active*>(access.transaction);
-  // Data that has to go over the bus is looked at on the bus's next edge: one event for both.
-  const bool to_bus = active.kind == BusKind::io_read || (active.kind <= BusKind::read_exclusive && !active.effected);
-  const Picoseconds when = to_bus ? next_edge(access.ended, bus_.period_) : access.ended;
-  agenda_.at<&Arbitrated::memory_done>(std::max(when, now_ps()), this, &active);
+  const bool read = active.kind == BusKind::io_read || (active.kind <= BusKind::read_exclusive && !active.effected);
+  if (read && access.is_response_ok())
+    memory_done(&active);  // the data bus can be told now when there will be data
+  else
+    agenda_.at<&Arbitrated::memory_done>(access.ended, this, &active);
 }
 
 void SnoopingBus::Arbitrated::memory_done(Active* active) {
@@ -468,7 +464,7 @@ std::vector<BusQueue> SnoopingBus::Arbitrated::queues() const {
   return all;
 }
 
-void SnoopingBus::Arbitrated::watch(void*) {
+void SnoopingBus::Arbitrated::watch() {
   watching_ = false;
   if (requests_.size() == 0 && active_.empty()) return;
   if (completions_ == completions_seen_)
@@ -476,14 +472,11 @@ void SnoopingBus::Arbitrated::watch(void*) {
                                            std::to_string(bus_.config_.stall_cycles) + " bus cycles, at " +
                                            sc_core::sc_time_stamp().to_string() + ". Outstanding:\n" + waiting())
                                               .c_str());
-  watching_ = true;
-  completions_seen_ = completions_;
-  agenda_.at<&Arbitrated::watch>(now_ps() + bus_.cycles(bus_.config_.stall_cycles), this, static_cast<void*>(nullptr));
+  watch_from_here();
 }
 
 std::string SnoopingBus::Arbitrated::waiting() const {
-  static constexpr const char* stages[] = {"its snoop to end", "memory", "its data", "the data bus",
-                                           "memory to take the supplied line"};
+  static constexpr const char* stages[] = {"its snoop to end", "memory", "the data bus", "memory to take the supplied line"};
   std::ostringstream text;
   const auto what = [&](const char* kind, int port, std::uint64_t line) {
     text << "bus: " << kind << " of port " << port << ", line 0x" << std::hex << line << std::dec;

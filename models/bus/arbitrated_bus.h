@@ -6,7 +6,6 @@
 #pragma once
 
 #include <array>
-#include <deque>
 #include <memory>
 #include <string>
 #include <vector>
@@ -24,6 +23,8 @@ class SnoopingBus::Arbitrated {
   void start();  // at end of elaboration
   const sc_core::sc_event& due() const { return agenda_.due(); }
   void work() { agenda_.run(); }
+  const sc_core::sc_event& stall() const { return stall_; }
+  void watch();  // at stall()
 
   void request(BusTransaction& transaction);
   bool in_flight(std::uint64_t line) const { return requests_.locked(line); }
@@ -40,7 +41,7 @@ class SnoopingBus::Arbitrated {
 
  private:
   // What a granted transaction waits for.
-  enum class Stage : std::uint8_t { snoop, memory, data, data_bus, memory_write };
+  enum class Stage : std::uint8_t { snoop, memory, data, memory_write };
 
   struct Active {
     BusTransaction* transaction = nullptr;  // the requester's; null once finished
@@ -51,6 +52,7 @@ class SnoopingBus::Arbitrated {
     bool memory_takes_line = false;
     Stage stage = Stage::snoop;
     unsigned bytes = 0;                     // to move over the data bus
+    Picoseconds ready = 0, start = 0, end = 0;  // of that, once planned
     Picoseconds granted = 0;
     Picoseconds since = 0;                  // in this stage
     WindowAccess* access = nullptr;
@@ -66,8 +68,7 @@ class SnoopingBus::Arbitrated {
   void commit(Active& active, const Snoop& snoop);
   void snoop_ended(Active* active);
   void need_data_bus(Active& active, Picoseconds ready);
-  void data_ready(Active* active);
-  void next_transfer(Active* active);
+  void plan_transfer();
   void transferred(Active* active);
   void need_memory(Active& active, tlm::tlm_command command, std::uint8_t* data, unsigned length, Picoseconds ready);
   void memory_done(Active* active);
@@ -76,7 +77,7 @@ class SnoopingBus::Arbitrated {
   void let_go(Active& active);
   void bus_free(Active* active);
   void enter(Active& active, Stage stage);
-  void watch(void*);
+  void watch_from_here();
 
   Active& new_active();
 
@@ -87,9 +88,9 @@ class SnoopingBus::Arbitrated {
   Picoseconds next_arbitration_ = RequestQueue::never;
   bool held_ = false;                   // connected: between grant and last beat
   Picoseconds address_free_ = 0;        // split: the end of the address phase under way
-  Active* transferring_ = nullptr;
   Picoseconds data_free_ = 0;           // the end of the last transfer's turnaround
-  std::deque<Active*> data_queue_;
+  std::vector<Active*> transfers_;      // planned, by the time they are ready; only the first may have begun
+  std::size_t metered_ = 0;             // so many of them data_meter_ knows
   unsigned outstanding_ = 0;            // granted, not finished
 
   std::vector<std::unique_ptr<Active>> actives_;
@@ -105,6 +106,7 @@ class SnoopingBus::Arbitrated {
   std::uint64_t completions_ = 0;
   std::uint64_t completions_seen_ = 0;
   bool watching_ = false;
+  sc_core::sc_event stall_{"stall"};
 };
 
 }  // namespace earshot

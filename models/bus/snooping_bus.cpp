@@ -33,7 +33,8 @@ void report(const sc_core::sc_module& module, const std::vector<std::string>& fo
 }  // namespace
 
 SnoopingBus::SnoopingBus(sc_core::sc_module_name name, const SnoopingBusConfig& config)
-    : sc_module(name), config_(config), period_(to_ps(config.clock)), map_(config.windows) {
+    : sc_module(name), config_(config), period_(to_ps(config.clock)),
+      width_shift_(static_cast<unsigned>(__builtin_ctz(std::max(config.width_bytes, 1u)))), map_(config.windows) {
   report(*this, problems(config));
   for (const Window& window : map_.windows())
     targets_.push_back(std::make_unique<WindowPort>(window.name.c_str(), window,
@@ -45,6 +46,9 @@ SnoopingBus::SnoopingBus(sc_core::sc_module_name name, const SnoopingBusConfig& 
   SC_HAS_PROCESS(SnoopingBus);
   SC_METHOD(work);
   sensitive << arbitrated_->due();
+  dont_initialize();
+  SC_METHOD(watch);
+  sensitive << arbitrated_->stall();
   dont_initialize();
 }
 
@@ -80,6 +84,7 @@ void SnoopingBus::end_of_elaboration() {
 }
 
 void SnoopingBus::work() { arbitrated_->work(); }
+void SnoopingBus::watch() { arbitrated_->watch(); }
 
 void SnoopingBus::request(BusTransaction& transaction) { arbitrated_->request(transaction); }
 

@@ -136,6 +136,7 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface, private
 
   void end_of_elaboration() override;
   void work();
+  void watch();
 
   // WindowPort::Listener
   void answered(WindowAccess& access) override;
@@ -163,7 +164,7 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface, private
   void count(BusKind kind, Picoseconds requested, Picoseconds completed, Picoseconds wait);
   void count_supply(const BusTransaction& transaction);
   Picoseconds cycles(std::uint64_t count) const { return count * period_; }
-  std::uint64_t beats(std::uint64_t bytes) const { return (bytes + config_.width_bytes - 1) / config_.width_bytes; }
+  std::uint64_t beats(std::uint64_t bytes) const { return (bytes + config_.width_bytes - 1) >> width_shift_; }
   Snoop ask_others(const BusTransaction& transaction);
   void commit_others(const BusTransaction& transaction, PresenceIndex::Mask others);
 
@@ -187,6 +188,7 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface, private
 
   SnoopingBusConfig config_;
   Picoseconds period_;
+  unsigned width_shift_;             // log2 of the width
   AddressMap map_;
   std::vector<std::unique_ptr<WindowPort>> targets_;  // one a window, same order
   std::vector<SnoopInterface*> caches_;               // by port; set at end of elaboration

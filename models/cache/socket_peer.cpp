@@ -9,7 +9,7 @@ namespace {
 
 void find(const std::vector<sc_core::sc_object*>& objects, const sc_core::sc_interface* target, std::string& names) {
   for (sc_core::sc_object* const object : objects) {
-    const auto* const port = dynamic_cast<const sc_core::sc_port_base*>(object);
+    const auto* const port = dynamic_cast<const sc_core::sc_port_b<tlm::tlm_fw_transport_if<>>*>(object);
     if (port != nullptr && port->get_interface() == target) names += (names.empty() ? "" : ", ") + std::string(port->name());
     find(object->get_child_objects(), target, names);
   }

@@ -1,7 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// Private to this room: the grade files that the build embeds, in the order of every listing, and what a file covers.
+// Private to this room: the grade files that the build embeds, in the order of every listing, and what a file
+// covers.
 #pragma once
 
 #include <string>

@@ -21,11 +21,10 @@ DramChannel::DramChannel(const DramConfig& config, unsigned channel)
     : config_(config),
       channel_(channel),
       banks_(config.grade, config.ranks),
-      scan_(banks_.count()),
-      ranks_(config.ranks) {
-  writes_.write = true;
-  reads_.entries.reserve(config.read_queue);
-  writes_.entries.reserve(config.write_queue);
+      bank_states_(banks_.count()),
+      ranks_(config.ranks),
+      reads_(false, config.read_queue, banks_.count()),
+      writes_(true, config.write_queue, banks_.count()) {
   if (config.refresh == DramRefresh::off) return;
 
   const Grade& grade = config.grade;
@@ -52,69 +51,70 @@ void DramChannel::enqueue(const DramBurst& burst, Clocks now, std::vector<DramCo
 }
 
 bool DramChannel::merge(const DramBurst& burst) {
-  for (Entry& e : writes_.entries) {
-    if (e.number != burst.number) continue;
-    ++counts_.writes_merged;
-    if (burst.first <= e.last && e.first <= burst.last) {
-      e.first = static_cast<std::uint16_t>(std::min<unsigned>(e.first, burst.first));
-      e.last = static_cast<std::uint16_t>(std::max<unsigned>(e.last, burst.last));
-    } else if (burst.last - burst.first > static_cast<unsigned>(e.last - e.first)) {
-      e.first = static_cast<std::uint16_t>(burst.first);
-      e.last = static_cast<std::uint16_t>(burst.last);
-    }
-    hold(e);
-    return true;
+  const Slot slot = writes_.find(burst.number);
+  if (slot == BurstQueue::none) return false;
+  Entry& e = writes_[slot];
+  ++counts_.writes_merged;
+  if (burst.first <= e.last && e.first <= burst.last) {
+    e.first = static_cast<std::uint16_t>(std::min<unsigned>(e.first, burst.first));
+    e.last = static_cast<std::uint16_t>(std::max<unsigned>(e.last, burst.last));
+  } else if (burst.last - burst.first > static_cast<unsigned>(e.last - e.first)) {
+    e.first = static_cast<std::uint16_t>(burst.first);
+    e.last = static_cast<std::uint16_t>(burst.last);
   }
-  return false;
+  hold(slot);
+  return true;
 }
 
 bool DramChannel::in_queued_write(const DramBurst& burst) const {
-  return std::any_of(writes_.entries.begin(), writes_.entries.end(), [&](const Entry& e) {
-    return e.number == burst.number && e.first <= burst.first && burst.last <= e.last;
-  });
+  const Slot slot = writes_.find(burst.number);
+  return slot != BurstQueue::none && writes_[slot].first <= burst.first && burst.last <= writes_[slot].last;
 }
 
-void DramChannel::append(Queue& queue, const DramBurst& burst, Clocks now) {
+void DramChannel::append(BurstQueue& queue, const DramBurst& burst, Clocks now) {
   if (empty()) occupied_since_ = now;
   Entry e;
-  e.number = burst.number;
   e.row = burst.place.row;
   e.order = next_order_++;
-  e.arrived = now;
   e.id = burst.id;
   e.column = static_cast<unsigned>(burst.place.column);
   e.bank = banks_.number(burst.place.rank, burst.place.group, burst.place.bank);
   e.first = static_cast<std::uint16_t>(burst.first);
   e.last = static_cast<std::uint16_t>(burst.last);
-  if (queue.write) hold(e);
-  queue.entries.push_back(e);
-  queue.meter.enter(now);
-  ++scan_[e.bank].queued;
+  const Slot slot = queue.append(e, burst.number, now);
+  if (queue.write()) hold(slot);
+  ++bank_states_[e.bank].queued;
   ++ranks_[burst.place.rank].queued;
 }
 
 // A write, or what has just been merged into it, is younger than all queued reads of its burst.
-void DramChannel::hold(Entry& write) {
-  if (write.older_reads != 0) --writes_.held;
-  write.older_reads = static_cast<std::uint16_t>(
-      std::count_if(reads_.entries.begin(), reads_.entries.end(),
-                    [&](const Entry& read) { return read.number == write.number; }));
-  if (write.older_reads != 0) ++writes_.held;
+void DramChannel::hold(Slot write) {
+  Entry& e = writes_[write];
+  if (e.older_reads != 0) --held_;
+  e.older_reads = static_cast<std::uint16_t>(reads_.count(writes_.number(write)));
+  if (e.older_reads != 0) ++held_;
+  writes_.look_again(e.bank);
 }
 
 // Reads of one burst are served in order: those that a write waits for are the first to go.
 void DramChannel::release(std::uint64_t number) {
-  for (Entry& write : writes_.entries)
-    if (write.number == number && write.older_reads != 0 && --write.older_reads == 0) --writes_.held;
+  const Slot write = writes_.find(number);
+  if (write == BurstQueue::none || writes_[write].older_reads == 0) return;
+  if (--writes_[write].older_reads == 0) --held_;
+  writes_.look_again(writes_[write].bank);
 }
 
-void DramChannel::remove(Queue& queue, std::size_t entry, Clocks now) {
-  const Entry& e = queue.entries[entry];
-  queue.meter.leave(now, e.arrived);
-  --scan_[e.bank].queued;
-  --ranks_[banks_.rank_of(e.bank)].queued;
-  queue.entries.erase(queue.entries.begin() + static_cast<std::ptrdiff_t>(entry));
+void DramChannel::remove(BurstQueue& queue, Slot slot, Clocks now) {
+  const unsigned bank = queue[slot].bank;
+  queue.remove(slot, now);
+  --bank_states_[bank].queued;
+  --ranks_[banks_.rank_of(bank)].queued;
   if (empty()) counts_.occupied += now - occupied_since_;
+}
+
+void DramChannel::row_changed(unsigned bank) {
+  reads_.look_again(bank);
+  writes_.look_again(bank);
 }
 
 Clocks DramChannel::next_event() {
@@ -168,8 +168,8 @@ void DramChannel::issue(std::vector<DramCompletion>& completions) {
   command_bus_free_ = now + 1;
   if (choice_.priority == over_age) ++counts_.over_age;
   std::uint64_t row = 0;
-  if (choice_.entry != none) {
-    Entry& e = choice_.queue->entries[choice_.entry];
+  if (choice_.slot != BurstQueue::none) {
+    Entry& e = (*choice_.queue)[choice_.slot];
     row = e.row;
     if (e.found == Found::nothing_yet) {
       e.started = now;
@@ -182,16 +182,19 @@ void DramChannel::issue(std::vector<DramCompletion>& completions) {
     case DramCommand::activate:
       ++counts_.activates;
       banks_.activate(bank, row, now);
+      row_changed(bank);
       break;
     case DramCommand::precharge:
       ++counts_.precharges;
       row = banks_.row(bank);
       banks_.precharge(bank, now);
+      row_changed(bank);
       if (choice_.priority == refresh_first) ranks_[rank].begun = true;
       break;
     case DramCommand::precharge_all:
       counts_.precharges += banks_.open_banks(rank);
       banks_.precharge_all(rank, now);
+      for (unsigned b = bank; b < bank + banks_.banks_of_rank(); ++b) row_changed(b);
       ranks_[rank].begun = true;
       break;
     case DramCommand::refresh:
@@ -216,17 +219,21 @@ void DramChannel::issue(std::vector<DramCompletion>& completions) {
 }
 
 void DramChannel::issue_column(std::vector<DramCompletion>& completions) {
-  Queue& queue = *choice_.queue;
-  const Entry e = queue.entries[choice_.entry];
+  BurstQueue& queue = *choice_.queue;
+  const Entry e = queue[choice_.slot];
+  const std::uint64_t number = queue.number(choice_.slot);
   const Clocks now = cursor_;
-  const bool write = queue.write;
-  remove(queue, choice_.entry, now);
+  const bool write = queue.write();
+  remove(queue, choice_.slot, now);
   const bool close = config_.rows == DramRows::closed && last_of_its_row(e);
   const Clocks end = banks_.column(e.bank, write, close, now);
 
   ++(write ? counts_.write_bursts : counts_.read_bursts);
   ++(e.found == Found::hit ? counts_.row_hits : e.found == Found::closed ? counts_.row_closed : counts_.row_conflicts);
-  if (close) ++counts_.precharges;
+  if (close) {
+    ++counts_.precharges;
+    row_changed(e.bank);
+  }
   beats_ += config_.grade.burst_length;
   const Clocks begin = now + (write ? config_.grade.cwl : config_.grade.cl);
   counts_.data_bus_busy += end - std::max(begin, data_end_);  // an overlap would break the law of the beats
@@ -234,7 +241,7 @@ void DramChannel::issue_column(std::vector<DramCompletion>& completions) {
 
   if (!write) {
     completions.push_back({e.id, e.started, end});
-    if (writes_.held != 0) release(e.number);
+    if (held_ != 0) release(number);
   }
   log(write ? (close ? DramCommand::write_precharge : DramCommand::write)
             : (close ? DramCommand::read_precharge : DramCommand::read),
@@ -242,9 +249,10 @@ void DramChannel::issue_column(std::vector<DramCompletion>& completions) {
 }
 
 bool DramChannel::last_of_its_row(const Entry& entry) const {
-  const auto same = [&](const Entry& e) { return e.bank == entry.bank && e.row == entry.row; };
-  return std::none_of(reads_.entries.begin(), reads_.entries.end(), same) &&
-         std::none_of(writes_.entries.begin(), writes_.entries.end(), same);
+  for (const BurstQueue* queue : {&reads_, &writes_})
+    for (Slot slot = queue->oldest(); slot != BurstQueue::none; slot = queue->after(slot))
+      if ((*queue)[slot].bank == entry.bank && (*queue)[slot].row == entry.row) return false;
+  return true;
 }
 
 void DramChannel::pay(unsigned rank, Clocks now) {
@@ -281,8 +289,8 @@ DramCounts DramChannel::counts(Clocks now) {
 std::vector<std::string> DramChannel::broken_laws(Clocks now) const {
   std::vector<std::string> broken;
   const std::string where = "channel " + std::to_string(channel_) + ": ";
-  const auto little = [&](const Queue& queue, const char* name) {
-    if (!queue.meter.littles_law_holds(std::max(now, cursor_)))
+  const auto little = [&](const BurstQueue& queue, const char* name) {
+    if (!queue.meter().littles_law_holds(std::max(now, cursor_)))
       broken.push_back(where + "Little's law does not hold for the " + name + " queue");
   };
   little(reads_, "read");
@@ -293,15 +301,15 @@ std::vector<std::string> DramChannel::broken_laws(Clocks now) const {
   return broken;
 }
 
-std::string DramChannel::describe(const Queue& queue) {
-  const Entry& e = queue.entries.front();
+std::string DramChannel::describe(BurstQueue& queue) {
+  const Entry& e = queue[queue.oldest()];
   std::ostringstream text;
-  text << "channel " << channel_ << ", " << (queue.write ? "write" : "read") << " queue: " << queue.entries.size()
-       << " of " << (queue.write ? config_.write_queue : config_.read_queue) << " bursts; the head, rank "
+  text << "channel " << channel_ << ", " << (queue.write() ? "write" : "read") << " queue: " << queue.size()
+       << " of " << queue.capacity() << " bursts; the head, rank "
        << banks_.rank_of(e.bank) << " group " << banks_.group_of(e.bank) << " bank " << banks_.place_in_group(e.bank)
        << " row " << e.row << " column " << e.column << ", is there since clock " << e.arrived << " and waits for ";
-  const Choice next = next_command(queue.write ? writes_ : reads_, 0);
-  if (scan_[e.bank].shut == stamp_)
+  const Choice next = next_command(queue, queue.oldest());
+  if (bank_states_[e.bank].shut == choices_)
     text << "a refresh";
   else if (e.older_reads != 0)
     text << "older reads of its burst";
@@ -313,8 +321,8 @@ std::string DramChannel::describe(const Queue& queue) {
 std::vector<std::string> DramChannel::pending() {
   std::vector<std::string> lines;
   if (!empty() && !chosen_) choose();
-  for (const Queue* queue : {&reads_, &writes_})
-    if (!queue->entries.empty()) lines.push_back(describe(*queue));
+  for (BurstQueue* queue : {&reads_, &writes_})
+    if (!queue->empty()) lines.push_back(describe(*queue));
   return lines;
 }
 

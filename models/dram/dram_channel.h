@@ -22,13 +22,13 @@
 #include <string>
 #include <vector>
 
+#include "earshot/dram/burst_queue.h"
 #include "earshot/dram/command.h"
 #include "earshot/dram/dram_address_map.h"
 #include "earshot/dram/dram_banks.h"
 #include "earshot/dram/dram_config.h"
 #include "earshot/dram/dram_counts.h"
 #include "earshot/dram/refresh_debt.h"
-#include "earshot/timing/queue_meter.h"
 
 namespace earshot {
 
@@ -54,9 +54,7 @@ class DramChannel {
   // REQUIRES: config.problems() is empty, but for toy grades: as far as the problems are the grade's.
   explicit DramChannel(const DramConfig& config, unsigned channel = 0);
 
-  bool accepts(bool write) const {
-    return write ? writes_.entries.size() < config_.write_queue : reads_.entries.size() < config_.read_queue;
-  }
+  bool accepts(bool write) const { return !(write ? writes_ : reads_).full(); }
   // Appends to `completions` if it is complete at once: a write, or a read served from a queued write.
   // REQUIRES: accepts(burst.write); advance() has been called for every event before `now`.
   void enqueue(const DramBurst& burst, Clocks now, std::vector<DramCompletion>& completions);
@@ -70,8 +68,8 @@ class DramChannel {
   DramCounts counts(Clocks now);
   const std::vector<CommandRecord>& commands(Clocks now);  // if config.log_commands
   // In clocks. A read is queued until its column command is issued, and so is a write.
-  const QueueMeter& read_meter() const { return reads_.meter; }
-  const QueueMeter& write_meter() const { return writes_.meter; }
+  const QueueMeter& read_meter() const { return reads_.meter(); }
+  const QueueMeter& write_meter() const { return writes_.meter(); }
   Clocks data_bus_busy() const { return counts_.data_bus_busy; }
   Clocks data_end() const { return data_end_; }  // of the last burst
 
@@ -80,29 +78,13 @@ class DramChannel {
   std::vector<std::string> pending();
 
  private:
-  static constexpr std::size_t none = ~std::size_t{0};
-  enum class Found : std::uint8_t { nothing_yet, hit, closed, conflict };
+  using Slot = BurstQueue::Slot;
+  using Entry = BurstQueue::Entry;
+  using Found = BurstQueue::Found;
 
-  struct Entry {
-    std::uint64_t number = 0, row = 0, order = 0;
-    Clocks arrived = 0, started = 0;
-    unsigned id = 0;
-    unsigned column = 0;
-    unsigned bank = 0;  // of the channel
-    std::uint16_t first = 0, last = 0;
-    std::uint16_t older_reads = 0;  // a write: queued reads of its burst that must go before it
-    Found found = Found::nothing_yet;
-  };
-  struct Queue {
-    bool write = false;
-    std::vector<Entry> entries;  // in order of arrival
-    std::size_t held = 0;        // of them wait for older reads
-    QueueMeter meter;
-  };
-  // What the scan of the queues knows about a bank; valid where the stamp is that of the scan.
-  struct BankScan {
-    std::uint64_t hit = 0, miss = 0, shut = 0;
-    unsigned queued = 0;  // bursts, in both queues
+  struct BankState {
+    std::uint64_t shut = 0;  // the number of the latest choice for which refresh kept the bank for itself
+    unsigned queued = 0;     // bursts, in both queues
   };
   struct Rank {
     RefreshDebt debt;
@@ -110,27 +92,29 @@ class DramChannel {
     unsigned queued = 0;     // bursts
     bool begun = false;      // precharged for the refresh that comes next
   };
+  enum Priority : unsigned { refresh_first, over_age, first_kind, second_kind, third_kind, idle_last };
   // The command to issue next, if nothing arrives before.
   struct Choice {
     Clocks clock = never;
-    unsigned priority = 0;  // of those possible at one clock; the lowest goes
+    unsigned priority = 0;    // of those possible at one clock; the lowest goes
+    std::uint64_t order = 0;  // of arrival; the first goes
     DramCommand command = DramCommand::refresh;
     unsigned bank = 0;  // for a rank: its first
-    Queue* queue = nullptr;
-    std::size_t entry = none;
+    BurstQueue* queue = nullptr;
+    Slot slot = BurstQueue::none;
   };
-  enum Priority : unsigned { refresh_first, over_age, first_kind, second_kind, third_kind, idle_last };
 
-  bool empty() const { return reads_.entries.empty() && writes_.entries.empty(); }
+  bool empty() const { return reads_.empty() && writes_.empty(); }
   bool in_order() const { return config_.scheduling != DramScheduling::first_ready; }
 
   // dram_channel.cpp
   bool merge(const DramBurst& burst);
   bool in_queued_write(const DramBurst& burst) const;
-  void append(Queue& queue, const DramBurst& burst, Clocks now);
-  void hold(Entry& write);
+  void append(BurstQueue& queue, const DramBurst& burst, Clocks now);
+  void hold(Slot write);
   void release(std::uint64_t number);
-  void remove(Queue& queue, std::size_t entry, Clocks now);
+  void remove(BurstQueue& queue, Slot slot, Clocks now);
+  void row_changed(unsigned bank);
   void run_until(Clocks now, std::vector<DramCompletion>& completions);
   void skip_idle_refreshes(Clocks now);
   void issue(std::vector<DramCompletion>& completions);
@@ -138,19 +122,31 @@ class DramChannel {
   bool last_of_its_row(const Entry& entry) const;
   void pay(unsigned rank, Clocks now);
   void log(DramCommand command, unsigned bank, std::uint64_t row, std::uint64_t column);
-  std::string describe(const Queue& queue);
+  std::string describe(BurstQueue& queue);
 
   // dram_choice.cpp
   void choose();
   void choose_refresh();
   void choose_in_order();
-  void choose_first_ready(Queue& queue);
+  void choose_first_ready(BurstQueue& queue);
   void choose_idle_rows();
-  Queue& queue_to_serve();
-  Choice next_command(Queue& queue, std::size_t entry) const;
+  BurstQueue& queue_to_serve();
+  Slot oldest_free(const BurstQueue& queue) const;
+  Choice next_command(BurstQueue& queue, Slot slot) const;
   void consider(const Choice& choice) {
-    if (choice.clock < choice_.clock || (choice.clock == choice_.clock && choice.priority < choice_.priority))
-      choice_ = choice;
+    if (choice.clock > choice_.clock) return;
+    if (choice.clock == choice_.clock &&
+        (choice.priority > choice_.priority || (choice.priority == choice_.priority && choice.order > choice_.order)))
+      return;
+    choice_ = choice;
+  }
+  void consider_for(unsigned bank, DramCommand command, Clocks clock, Priority priority) {
+    Choice choice;
+    choice.clock = no_sooner(clock);
+    choice.priority = priority;
+    choice.command = command;
+    choice.bank = bank;
+    consider(choice);
   }
   void look_again_at(Clocks clock) { change_ = std::min(change_, clock); }
   Clocks no_sooner(Clocks clock) const { return std::max({clock, cursor_, command_bus_free_}); }
@@ -158,12 +154,13 @@ class DramChannel {
   const DramConfig config_;
   const unsigned channel_;
   DramBanks banks_;
-  std::vector<BankScan> scan_;
+  std::vector<BankState> bank_states_;
   std::vector<Rank> ranks_;
-  Queue reads_, writes_;
+  BurstQueue reads_, writes_;
+  unsigned held_ = 0;  // writes that wait for older reads
   bool draining_ = false;
   std::uint64_t next_order_ = 0;
-  std::uint64_t stamp_ = 0;
+  std::uint64_t choices_ = 0;
 
   Clocks cursor_ = 0;            // everything before has happened
   Clocks command_bus_free_ = 0;

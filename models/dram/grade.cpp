@@ -69,8 +69,8 @@ class Contradictions {
   }
   void not_below(const char* name, std::uint64_t value, const char* other, std::uint64_t bound) {
     if (value < bound) {
-      found_.push_back(std::string(name) + " of " + std::to_string(value) + " clocks is below " + other + " of " +
-                       std::to_string(bound));
+      found_.push_back(std::string(name) + " of " + std::to_string(value) + " clocks is below " + other +
+                       " of " + std::to_string(bound));
     }
   }
   void current_not_below(const char* name, double value, const char* other, double bound) {
@@ -113,9 +113,10 @@ void check_times(const Grade& grade, Contradictions& problems) {
   const struct {
     const char* name;
     unsigned value;
-  } positive[] = {{"CL", grade.cl},         {"CWL", grade.cwl},       {"tRCD", grade.trcd},     {"tRP", grade.trp},
-                  {"tRAS", grade.tras},     {"tRC", grade.trc},       {"tRRD_S", grade.trrd_s}, {"tFAW", grade.tfaw},
-                  {"tCCD_S", grade.tccd_s}, {"tWR", grade.twr},       {"tWTR_S", grade.twtr_s}, {"tRTP", grade.trtp},
+  } positive[] = {{"CL", grade.cl},         {"CWL", grade.cwl},       {"tRCD", grade.trcd},
+                  {"tRP", grade.trp},       {"tRAS", grade.tras},     {"tRC", grade.trc},
+                  {"tRRD_S", grade.trrd_s}, {"tFAW", grade.tfaw},     {"tCCD_S", grade.tccd_s},
+                  {"tWR", grade.twr},       {"tWTR_S", grade.twtr_s}, {"tRTP", grade.trtp},
                   {"tREFI", grade.trefi},   {"tRFC", grade.trfc},     {"read-to-write", grade.read_to_write}};
   for (const auto& [name, value] : positive) problems.least(name, value, 1);
   problems.not_below("tRPab", grade.trp_all, "tRP", grade.trp);
@@ -133,8 +134,9 @@ void check_times(const Grade& grade, Contradictions& problems) {
   problems.add_if(grade.trefi > 0 && grade.trefi <= grade.trfc,
                   "tREFI of " + std::to_string(grade.trefi) + " clocks is not above tRFC of " +
                       std::to_string(grade.trfc) + ": nothing but refresh would happen");
-  problems.add_if((grade.trefi_bank == 0) != (grade.trfc_bank == 0),
-                  grade.trefi_bank == 0 ? "tRFCpb is given, but not tREFIpb" : "tREFIpb is given, but not tRFCpb");
+  problems.add_if(
+      (grade.trefi_bank == 0) != (grade.trfc_bank == 0),
+      grade.trefi_bank == 0 ? "tRFCpb is given, but not tREFIpb" : "tREFIpb is given, but not tRFCpb");
   problems.add_if(grade.trefi_bank > 0 && grade.trefi_bank <= grade.trfc_bank,
                   "tREFIpb of " + std::to_string(grade.trefi_bank) + " clocks is not above tRFCpb of " +
                       std::to_string(grade.trfc_bank) + ": nothing but refresh would happen");

@@ -15,6 +15,7 @@ namespace {
 
 constexpr std::uint64_t most_clocks = 1'000'000;
 constexpr std::uint64_t most_count = 65'536;
+constexpr int most_nested = 8;
 
 enum class Kind { count, minimum, maximum };  // a plain number; clocks, rounded up; clocks, rounded down
 
@@ -68,8 +69,9 @@ const std::vector<Parameter>& parameters() {
 const std::map<std::string, double SupplyCurrents::*>& current_names() {
   using C = SupplyCurrents;
   static const std::map<std::string, double C::*> all = {
-      {"IDD0", &C::idd0},   {"IDD2N", &C::idd2n}, {"IDD3N", &C::idd3n}, {"IDD4R", &C::idd4r}, {"IDD4W", &C::idd4w},
-      {"IDD5B", &C::idd5b}, {"IPP0", &C::ipp0},   {"IPP3N", &C::ipp3n}, {"IPP5B", &C::ipp5b}};
+      {"IDD0", &C::idd0},   {"IDD2N", &C::idd2n}, {"IDD3N", &C::idd3n},
+      {"IDD4R", &C::idd4r}, {"IDD4W", &C::idd4w}, {"IDD5B", &C::idd5b},
+      {"IPP0", &C::ipp0},   {"IPP3N", &C::ipp3n}, {"IPP5B", &C::ipp5b}};
   return all;
 }
 
@@ -93,7 +95,8 @@ struct Line {
   std::string written() const {
     std::string text;
     for (const GradeWord& word : value) {
-      const bool glued = text.empty() || text.back() == '(' || word.text == "," || word.text == ")" || word.text == "(";
+      const bool glued =
+          text.empty() || text.back() == '(' || word.text == "," || word.text == ")" || word.text == "(";
       text += (glued ? "" : " ") + word.text;
     }
     return text;
@@ -149,16 +152,19 @@ class GradeReader {
   bool is_given(const std::string& name) const {
     if (lines_.count(name) != 0 || faulty_.count(name) != 0) return true;
     // of "tRRD_S": "tRRD"
-    return name.size() > 2 && name[name.size() - 2] == '_' && faulty_.count(name.substr(0, name.size() - 2)) != 0;
+    return name.size() > 2 && name[name.size() - 2] == '_' &&
+           faulty_.count(name.substr(0, name.size() - 2)) != 0;
   }
 
   void refuse_problems() const {
     if (problems_.empty()) return;
     std::vector<std::pair<int, std::string>> sorted = problems_;
-    std::stable_sort(sorted.begin(), sorted.end(), [](const auto& a, const auto& b) { return a.first < b.first; });
+    std::stable_sort(sorted.begin(), sorted.end(),
+                     [](const auto& a, const auto& b) { return a.first < b.first; });
     std::string text;
     for (const auto& [line, what] : sorted) {
-      text += (text.empty() ? "" : "\n") + origin_ + (line > 0 ? ":" + std::to_string(line) : "") + ": " + what;
+      text +=
+          (text.empty() ? "" : "\n") + origin_ + (line > 0 ? ":" + std::to_string(line) : "") + ": " + what;
     }
     throw GradeError(text);
   }
@@ -263,7 +269,8 @@ class GradeReader {
   void claim(const Line& line, const std::string& name) {
     const auto [first, fresh] = lines_.emplace(name, line.number);
     if (!fresh) {
-      throw LineError(name + " is set again; line " + std::to_string(first->second) + " holds for this device too");
+      throw LineError(name + " is set again; line " + std::to_string(first->second) +
+                      " holds for this device too");
     }
   }
 
@@ -286,7 +293,8 @@ class GradeReader {
     }
     if (chosen == 0) chosen = choices[0];
     if (std::find(choices.begin(), choices.end(), chosen) != choices.end()) return;
-    throw LineError(line.name + " " + std::to_string(chosen) + " is not covered, expected one of " + line.written());
+    throw LineError(line.name + " " + std::to_string(chosen) + " is not covered, expected one of " +
+                    line.written());
   }
 
   void read_parameter(const Line& line, const Parameter& parameter) {
@@ -308,6 +316,9 @@ class GradeReader {
       return static_cast<unsigned>(whole_number(line.only_word("one number"), most_count));
     }
     if (lines_.count("clock") == 0) throw LineError(line.name + " needs a clock line further up");
+    const auto nested = std::count_if(line.value.begin(), line.value.end(),
+                                      [](const GradeWord& word) { return word.text == "("; });
+    if (nested > most_nested) throw LineError(line.name + ": more than 8 brackets");
     std::size_t at = 0;
     const std::int64_t value = sum(line, parameter, at);
     if (at != line.value.size()) {
@@ -356,18 +367,24 @@ class GradeReader {
 
   std::int64_t clocks(const std::string& word, const Parameter& parameter) const {
     const Quantity quantity = quantity_of(word);
+    Clocks n = 0;
     if (quantity.unit == "nCK") {
-      if (quantity.numerator % quantity.denominator != 0) throw LineError("'" + word + "', expected whole clocks");
-      return static_cast<std::int64_t>(quantity.numerator / quantity.denominator);
+      if (quantity.numerator % quantity.denominator != 0)
+        throw LineError("'" + word + "', expected whole clocks");
+      n = quantity.numerator / quantity.denominator;
+    } else {
+      const Picoseconds time = time_of(quantity, word);
+      n = parameter.kind == Kind::maximum ? clocks_at_most(time, grade_.clock)
+                                          : clocks_at_least(time, grade_.clock, rounding_);
     }
-    const Picoseconds time = time_of(quantity, word);
-    const Clocks n = parameter.kind == Kind::maximum ? clocks_at_most(time, grade_.clock)
-                                                     : clocks_at_least(time, grade_.clock, rounding_);
+    if (n > most_clocks)
+      throw LineError("'" + word + "' is more than " + std::to_string(most_clocks) + " clocks");
     return static_cast<std::int64_t>(n);
   }
 
   std::int64_t named(const Line& line, const std::string& word) const {
-    if (word == "BL/2") return lines_.count("burst") == 0 && line.applies ? need_above(word) : grade_.burst_clocks();
+    if (word == "BL/2")
+      return lines_.count("burst") == 0 && line.applies ? need_above(word) : grade_.burst_clocks();
     for (const Parameter& parameter : parameters()) {
       if (word != parameter.name || parameter.kind == Kind::count) continue;
       const std::string claimed = parameter.fields.size() == 2 ? word + "_S" : word;
@@ -388,8 +405,8 @@ class GradeReader {
     }
     for (const Parameter& parameter : parameters()) {
       if (parameter.needed && !is_given(parameter.name)) {
-        add(0, std::string(parameter.name) + " is missing for density " + std::to_string(grade_.density_gbit) +
-                   ", width " + std::to_string(grade_.device_bits));
+        add(0, std::string(parameter.name) + " is missing for density " +
+                   std::to_string(grade_.density_gbit) + ", width " + std::to_string(grade_.device_bits));
       }
     }
     if (!problems_.empty()) return;
@@ -418,7 +435,8 @@ class GradeReader {
 
 }  // namespace
 
-Grade parse_grade(const std::string& text, const std::string& origin, unsigned density_gbit, unsigned device_bits) {
+Grade parse_grade(const std::string& text, const std::string& origin, unsigned density_gbit,
+                  unsigned device_bits) {
   return GradeReader(text, origin, density_gbit, device_bits).grade();
 }
 

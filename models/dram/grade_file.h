@@ -17,8 +17,8 @@
 //
 // A line is a name, a value, a condition or none, and the value's source or none, which was `read` or is from
 // `memory`. Of the lines of one name exactly one may hold for a device. A value in clocks is a number with a
-// unit (nCK, or ps, ns, us, which are rounded each by itself), a name that stands further up, BL/2 for half the
-// burst, the max( , ) of two values, or a sum or difference of those with blanks around the sign.
+// unit (nCK, or ps, ns, us, which are rounded each by itself), a name that stands further up, BL/2 for half
+// the burst, the max( , ) of two values, or a sum or difference of those with blanks around the sign.
 //
 //     needed      bank-groups banks-per-group page (bytes of a row of one device) burst (beats)
 //                 channel (data bits) CL CWL tRCD tRP tRAS tRC tRRD tFAW tCCD tWR tWTR tRTP read-to-write
@@ -45,8 +45,8 @@ class GradeError : public std::runtime_error {
   using std::runtime_error::runtime_error;
 };
 
-// The grade that `text` describes for a density and a device width, 0 for the usual ones. `origin` is the file's
-// name in messages. Throws GradeError.
+// The grade that `text` describes for a density and a device width, 0 for the usual ones. `origin` is the
+// file's name in messages. Throws GradeError.
 Grade parse_grade(const std::string& text, const std::string& origin, unsigned density_gbit = 0,
                   unsigned device_bits = 0);
 

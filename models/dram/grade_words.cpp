@@ -11,9 +11,13 @@ namespace {
 constexpr std::size_t most_digits = 9;
 constexpr Picoseconds longest_time = 1'000'000'000;
 
-bool is_digit(char c) { return c >= '0' && c <= '9'; }
+bool is_digit(char c) {
+  return c >= '0' && c <= '9';
+}
 
-bool is_blank(char c) { return c == ' ' || c == '\t' || c == '\r'; }
+bool is_blank(char c) {
+  return c == ' ' || c == '\t' || c == '\r';
+}
 
 // Appends the digits of `word` from `at` on to `number`; the number of them.
 std::size_t read_digits(const std::string& word, std::size_t& at, std::uint64_t& number) {
@@ -83,7 +87,10 @@ std::uint64_t whole_number(const std::string& word, std::uint64_t most) {
 }
 
 Picoseconds time_of(const Quantity& quantity, const std::string& word) {
-  const std::uint64_t unit = quantity.unit == "ps" ? 1 : quantity.unit == "ns" ? 1000 : quantity.unit == "us" ? 1'000'000 : 0;
+  const std::uint64_t unit = quantity.unit == "ps"   ? 1
+                             : quantity.unit == "ns" ? 1000
+                             : quantity.unit == "us" ? 1'000'000
+                                                     : 0;
   if (unit == 0) refuse(word, "nCK, ps, ns or us after the number");
   const std::uint64_t scaled = quantity.numerator * unit;
   if (scaled % quantity.denominator != 0) refuse(word, "a whole number of picoseconds");

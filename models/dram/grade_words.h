@@ -24,7 +24,8 @@ class LineError : public std::runtime_error {
   using std::runtime_error::runtime_error;
 };
 
-// The words of a line; brackets and commas are words of their own, quotes and comments are gone. Throws LineError.
+// The words of a line; brackets and commas are words of their own, quotes and comments are gone. Throws
+// LineError.
 std::vector<GradeWord> words_of(const std::string& line);
 
 // A number and its unit: "7.5ns" is 75 / 10 ns.

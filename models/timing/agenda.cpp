@@ -11,13 +11,12 @@ void Agenda::run() {
     ~Running() {
       agenda.running_ = false;
       agenda.armed_ = never;
-      if (!agenda.entries_.empty()) agenda.arm(agenda.entries_.front().time);
+      if (!agenda.entries_.empty()) agenda.arm(agenda.entries_.back().time);
     }
   } running{*this};
   running_ = true;
-  while (!entries_.empty() && entries_.front().time <= now) {
-    const Entry entry = entries_.front();
-    std::pop_heap(entries_.begin(), entries_.end());
+  while (!entries_.empty() && entries_.back().time <= now) {
+    const Entry entry = entries_.back();
     entries_.pop_back();
     entry.call(entry.owner, entry.item);
   }

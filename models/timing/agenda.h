@@ -9,7 +9,6 @@
 #pragma once
 
 #include <algorithm>
-#include <cstdint>
 #include <systemc>
 #include <vector>
 
@@ -22,7 +21,7 @@ class Agenda {
   // Calls (owner->*Method)(item) at `time`, which is not past. Callable from any process, also while run() runs.
   template <auto Method, typename Owner, typename Item>
   void at(Picoseconds time, Owner* owner, Item* item) {
-    push({time, next_++, owner, item, [](void* self, void* what) {
+    push({time, owner, item, [](void* self, void* what) {
             (static_cast<Owner*>(self)->*Method)(static_cast<Item*>(what));
           }});
   }
@@ -34,19 +33,16 @@ class Agenda {
  private:
   struct Entry {
     Picoseconds time;
-    std::uint64_t number;
     void* owner;
     void* item;
     void (*call)(void* owner, void* item);
-    bool operator<(const Entry& other) const {  // for a heap whose front is the earliest
-      return time != other.time ? time > other.time : number > other.number;
-    }
   };
   static constexpr Picoseconds never = ~Picoseconds{0};
 
   void push(const Entry& entry) {
-    entries_.push_back(entry);
-    std::push_heap(entries_.begin(), entries_.end());
+    auto place = entries_.end();
+    while (place != entries_.begin() && (place - 1)->time <= entry.time) --place;
+    entries_.insert(place, entry);
     if (!running_ && entry.time < armed_) arm(entry.time);
   }
   void arm(Picoseconds time) {
@@ -55,8 +51,7 @@ class Agenda {
   }
 
   sc_core::sc_event due_{"due"};
-  std::vector<Entry> entries_;  // a heap
-  std::uint64_t next_ = 0;
+  std::vector<Entry> entries_;  // the latest first: few at a time, mostly entered near the end
   Picoseconds armed_ = never;   // when due_ is notified
   bool running_ = false;
 };

@@ -6,6 +6,7 @@
 
 #include <cstdint>
 #include <systemc>
+#include <type_traits>
 
 namespace earshot {
 
@@ -15,7 +16,12 @@ using Picoseconds = std::uint64_t;
 inline Picoseconds to_ps(const sc_core::sc_time& time) { return time.value(); }
 inline sc_core::sc_time from_ps(Picoseconds ps) { return sc_core::sc_time::from_value(ps); }
 
-inline Picoseconds now_ps() { return sc_core::sc_time_stamp().value(); }
+// The kernel keeps its time in one place: asked for once, since the call costs more than the models can afford.
+inline Picoseconds now_ps() {
+  static_assert(std::is_reference_v<decltype(sc_core::sc_time_stamp())>, "the kernel returns a copy of its time");
+  static const sc_core::sc_time& now = sc_core::sc_time_stamp();
+  return now.value();
+}
 
 // The first edge at or after `time` of a clock with this period whose edge 0 is at time 0.
 inline Picoseconds next_edge(Picoseconds time, Picoseconds period) { return (time + period - 1) / period * period; }

@@ -12,26 +12,11 @@ namespace {
 
 constexpr std::uint64_t page_bytes = 4096;
 
-std::string text_of(const Access& access) {
-  std::ostringstream out;
-  out << "initiator " << access.initiator << ", " << name_of(access.op) << " of " << access.size << " bytes at 0x"
-      << std::hex << access.address;
-  return out.str();
-}
-
-// Bytes for a write whose value was not recorded: different for every write, the same in every run.
-void invent(std::uint32_t initiator, std::uint64_t number, std::uint8_t* bytes, std::size_t length) {
-  for (std::size_t i = 0; i < length; ++i) {
-    const std::uint64_t mixed = (number * 0x9E3779B97F4A7C15u) ^ (initiator * 0xD1B54A32D192ED03u) ^ (i / 8);
-    bytes[i] = static_cast<std::uint8_t>((mixed * 0xBF58476D1CE4E5B9u) >> (i % 8 * 8));
-  }
-}
-
 // Calls `step(delay)` with the local time until it returns false, synchronising when the quantum is used up and at
-// the end. Stores what stopped it early in `error` before it says so: hooks.failed() may end the simulation, and then
+// the end. Stores what stopped it early in `end` before it says so: hooks.failed() may end the simulation, and then
 // this process never goes on. Kernel reports are not for us and pass through.
 template <typename Step>
-void run_decoupled(const PlayerHooks& hooks, std::exception_ptr& error, Step step) {
+void run_decoupled(const PlayerHooks& hooks, PlayerEnd& end, Step step) {
   tlm_utils::tlm_quantumkeeper keeper;
   keeper.reset();
   try {
@@ -42,10 +27,14 @@ void run_decoupled(const PlayerHooks& hooks, std::exception_ptr& error, Step ste
   } catch (const sc_core::sc_report&) {
     throw;
   } catch (const std::exception&) {
-    error = std::current_exception();
+    end.error = std::current_exception();
     if (hooks.failed) hooks.failed();
   }
   keeper.sync();
+  if (end.error != nullptr) return;
+  end.at = sc_core::sc_time_stamp();
+  end.finished = true;
+  if (hooks.finished) hooks.finished();
 }
 
 }  // namespace
@@ -58,12 +47,11 @@ Player::Player(sc_core::sc_module_name name, std::uint32_t initiator, sc_core::s
 void Player::play() {
   if (source_ == nullptr) return;
   Access access;
-  run_decoupled(hooks_, error_, [&](sc_core::sc_time& delay) {
+  run_decoupled(hooks_, end_, [&](sc_core::sc_time& delay) {
     if (!source_->next(access)) return false;
     perform(access, delay);
     return true;
   });
-  finished_at_ = sc_core::sc_time_stamp();
 }
 
 void Player::perform(const Access& access, sc_core::sc_time& delay) {
@@ -74,24 +62,11 @@ void Player::perform(const Access& access, sc_core::sc_time& delay) {
     return;
   }
   delay += think_;
-  const bool write = access.op == AccessOp::write;
-  if (write && access.has_value)
-    std::memcpy(bytes_.data(), &access.value, sizeof access.value);  // a fixed size is quicker than access.size
-  else if (write)
-    invent(initiator_, performed_, bytes_.data(), access.size);
-
-  payload_.set_command(write ? tlm::TLM_WRITE_COMMAND : tlm::TLM_READ_COMMAND);
-  payload_.set_address(access.address);
-  payload_.set_data_ptr(bytes_.data());
-  payload_.set_data_length(access.size);
-  payload_.set_streaming_width(access.size);
-  payload_.set_byte_enable_ptr(nullptr);
-  payload_.set_dmi_allowed(false);
-  payload_.set_response_status(tlm::TLM_INCOMPLETE_RESPONSE);
+  make_payload(access, performed_, bytes_.data(), payload_);
+  under_way_ = &access;
   initiator_socket->b_transport(payload_, delay);
-  if (payload_.is_response_error())
-    throw PlayError("access " + std::to_string(performed_) + " of its initiator (" + text_of(access) +
-                    ") was answered with " + payload_.get_response_string());
+  under_way_ = nullptr;
+  if (payload_.is_response_error()) throw refusal(access, performed_, payload_);
   if (hooks_.done) hooks_.done();
 }
 
@@ -118,12 +93,11 @@ RecordedOrder::RecordedOrder(sc_core::sc_module_name name, std::vector<Player*> 
 
 void RecordedOrder::play() {
   Access access;
-  run_decoupled(hooks_, error_, [&](sc_core::sc_time& delay) {
+  run_decoupled(hooks_, end_, [&](sc_core::sc_time& delay) {
     if (!source_->next(access)) return false;
     step(access, delay);
     return true;
   });
-  finished_at_ = sc_core::sc_time_stamp();
 }
 
 void RecordedOrder::step(const Access& access, sc_core::sc_time& delay) {

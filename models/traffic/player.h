@@ -7,14 +7,14 @@
 // access at a time.
 //
 // Both use b_transport with temporal decoupling: they run ahead of simulation time by up to the global quantum
-// (tlm_utils::tlm_quantumkeeper). With a quantum of 0 they synchronise after every access.
+// (tlm_utils::tlm_quantumkeeper). With a quantum of 0 they synchronise after every access. In arbitrated timing every
+// access blocks until it is done; see NonBlockingPlayer for several in flight.
 #pragma once
 
 #include <array>
 #include <cstdint>
-#include <exception>
-#include <functional>
 #include <memory>
+#include <string>
 #include <systemc>
 #include <tlm>
 #include <tlm_utils/simple_initiator_socket.h>
@@ -22,25 +22,9 @@
 #include <unordered_map>
 #include <vector>
 
-#include "earshot/traffic/recording.h"
+#include "earshot/traffic/playing.h"
 
 namespace earshot {
-
-// What a player asks of the world around it that TLM-2.0 has no word for.
-struct PlayerHooks {
-  // Carries out AccessOp::replace for an initiator at the local time `delay` from now. Unset: a replace is skipped.
-  std::function<void(std::uint32_t initiator, std::uint64_t address, const sc_core::sc_time& delay)> replace;
-  // Called after every access, for progress. May be unset.
-  std::function<void()> done;
-  // Called when a player stops early because of an error(). May be unset; the runner's place to end the simulation.
-  std::function<void()> failed;
-};
-
-// An access that the platform answered with an error or has no cache for: what() names the access.
-class PlayError : public std::runtime_error {
- public:
-  using std::runtime_error::runtime_error;
-};
 
 class Player : public sc_core::sc_module {
  public:
@@ -59,8 +43,8 @@ class Player : public sc_core::sc_module {
   // Writes bytes by debug access: what memory held before the recording began.
   void preset(std::uint64_t address, const std::uint8_t* bytes, unsigned length);
 
-  sc_core::sc_time finished_at() const { return finished_at_; }
-  std::exception_ptr error() const { return error_; }  // why it stopped early; null if it did not
+  const PlayerEnd& end() const { return end_; }  // of what it plays of its own
+  std::string waiting() const { return under_way_ == nullptr ? "" : text_of(*under_way_); }  // the access under way
 
  private:
   void play();
@@ -72,8 +56,8 @@ class Player : public sc_core::sc_module {
   tlm::tlm_generic_payload payload_;
   std::vector<std::uint8_t> bytes_;
   std::uint64_t performed_ = 0;
-  sc_core::sc_time finished_at_;
-  std::exception_ptr error_;
+  const Access* under_way_ = nullptr;
+  PlayerEnd end_;
 };
 
 // Plays one stream through several players, one access at a time, in the stream's order.
@@ -85,8 +69,7 @@ class RecordedOrder : public sc_core::sc_module {
                 bool check_values, PlayerHooks hooks);
   const char* kind() const override { return "earshot::RecordedOrder"; }
 
-  sc_core::sc_time finished_at() const { return finished_at_; }
-  std::exception_ptr error() const { return error_; }
+  const PlayerEnd& end() const { return end_; }
   std::uint64_t reads_compared() const { return compared_; }
   std::uint64_t reads_that_differ() const { return different_; }
   const std::string& first_difference() const { return first_difference_; }
@@ -113,8 +96,7 @@ class RecordedOrder : public sc_core::sc_module {
   std::uint64_t compared_ = 0;
   std::uint64_t different_ = 0;
   std::string first_difference_;
-  sc_core::sc_time finished_at_;
-  std::exception_ptr error_;
+  PlayerEnd end_;
 };
 
 }  // namespace earshot

@@ -39,12 +39,13 @@ const Kinds writes = {Command::write, Command::write_precharge};
 const Kinds columns = {Command::read, Command::read_precharge, Command::write, Command::write_precharge};
 const Kinds openings = {Command::activate, Command::refresh_bank};
 const Kinds refreshes = {Command::refresh, Command::refresh_bank};
-const Kinds anything = {Command::activate,        Command::read,      Command::read_precharge, Command::write,
-                        Command::write_precharge, Command::precharge, Command::precharge_all,  Command::refresh,
-                        Command::refresh_bank};
+const Kinds anything = {
+    Command::activate,        Command::read,      Command::read_precharge, Command::write,
+    Command::write_precharge, Command::precharge, Command::precharge_all,  Command::refresh,
+    Command::refresh_bank};
 
-// JESD79-3, JESD79-4 and JESD209-4: timing parameters and command spacing; of refreshes of one bank, JESD209-4's
-// table of separations (from memory). Auto-precharge is dealt with in precharge_start().
+// JESD79-3, JESD79-4 and JESD209-4: timing parameters and command spacing; of refreshes of one bank,
+// JESD209-4's table of separations (from memory). Auto-precharge is dealt with in precharge_start().
 std::vector<PairRule> pair_rules(const Grade& g) {
   const Clocks burst = g.burst_length / 2;
   const Clocks write_data_end = g.cwl + burst;
@@ -78,34 +79,44 @@ std::vector<PairRule> pair_rules(const Grade& g) {
   };
 }
 
-bool same_rank(const CommandRecord& a, const CommandRecord& b) { return a.rank == b.rank; }
+bool same_rank(const CommandRecord& a, const CommandRecord& b) {
+  return a.rank == b.rank;
+}
 bool same_group(const CommandRecord& a, const CommandRecord& b) {
   return same_rank(a, b) && a.bank_group == b.bank_group;
 }
-bool same_bank(const CommandRecord& a, const CommandRecord& b) { return same_group(a, b) && a.bank == b.bank; }
+bool same_bank(const CommandRecord& a, const CommandRecord& b) {
+  return same_group(a, b) && a.bank == b.bank;
+}
 
 bool in_scope(Scope scope, const CommandRecord& a, const CommandRecord& b) {
   switch (scope) {
-    case Scope::bank: return same_bank(a, b);
-    case Scope::other_bank_of_group: return same_group(a, b) && !same_bank(a, b);
-    case Scope::group: return same_group(a, b);
-    case Scope::other_group: return same_rank(a, b) && !same_group(a, b);
-    case Scope::rank: return same_rank(a, b);
+    case Scope::bank:
+      return same_bank(a, b);
+    case Scope::other_bank_of_group:
+      return same_group(a, b) && !same_bank(a, b);
+    case Scope::group:
+      return same_group(a, b);
+    case Scope::other_group:
+      return same_rank(a, b) && !same_group(a, b);
+    case Scope::rank:
+      return same_rank(a, b);
   }
   return false;
 }
 
 std::string describe(const CommandRecord& c) {
-  return std::string(name_of(c.command)) + " at " + std::to_string(c.clock) + " (channel " + std::to_string(c.channel) +
-         " rank " + std::to_string(c.rank) + " group " + std::to_string(c.bank_group) + " bank " +
-         std::to_string(c.bank) + " row " + std::to_string(c.row) + ")";
+  return std::string(name_of(c.command)) + " at " + std::to_string(c.clock) + " (channel " +
+         std::to_string(c.channel) + " rank " + std::to_string(c.rank) + " group " +
+         std::to_string(c.bank_group) + " bank " + std::to_string(c.bank) + " row " + std::to_string(c.row) +
+         ")";
 }
 
 struct BankState {
   bool open = false;
-  CommandRecord activate;        // the latest, if any
+  CommandRecord activate;  // the latest, if any
   bool was_activated = false;
-  Clocks self_closed = 0;        // when the latest auto-precharge begins
+  Clocks self_closed = 0;  // when the latest auto-precharge begins
   bool closed_itself = false;
 };
 
@@ -114,11 +125,12 @@ class ChannelJudge {
   ChannelJudge(const Grade& grade, const LogRules& rules)
       : grade_(grade), rules_(rules), pair_rules_(pair_rules(grade)), banks_(rules.ranks * grade.banks()) {
     for (const PairRule& rule : pair_rules_) {
-      const bool after_refresh = rule.earlier.have(Command::refresh) || rule.earlier.have(Command::refresh_bank);
+      const bool after_refresh =
+          rule.earlier.have(Command::refresh) || rule.earlier.have(Command::refresh_bank);
       if (!after_refresh) window_ = std::max(window_, rule.least);
     }
-    window_ = std::max({window_, Clocks{grade.tfaw},
-                        Clocks{grade.cl} + grade.cwl + grade.burst_length + grade.rank_switch});
+    window_ = std::max(
+        {window_, Clocks{grade.tfaw}, Clocks{grade.cl} + grade.cwl + grade.burst_length + grade.rank_switch});
   }
 
   void judge(const CommandRecord& now) {
@@ -140,16 +152,19 @@ class ChannelJudge {
   std::vector<Broken> take() { return std::move(broken_); }
 
  private:
-  void add(const char* rule, const std::string& text) { broken_.push_back({rule, std::string(rule) + ": " + text}); }
+  void add(const char* rule, const std::string& text) {
+    broken_.push_back({rule, std::string(rule) + ": " + text});
+  }
 
   BankState& bank(const CommandRecord& c) {
     return banks_[(c.rank * grade_.bank_groups + c.bank_group) * grade_.banks_per_group + c.bank];
   }
 
   bool check_address(const CommandRecord& c) {
-    const std::uint64_t bursts = std::uint64_t{grade_.page_bytes} * 8 / (grade_.device_bits * grade_.burst_length);
-    const bool fits = c.rank < rules_.ranks && c.bank_group < grade_.bank_groups && c.bank < grade_.banks_per_group &&
-                      c.row < grade_.rows && c.column < bursts;
+    const std::uint64_t bursts =
+        std::uint64_t{grade_.page_bytes} * 8 / (grade_.device_bits * grade_.burst_length);
+    const bool fits = c.rank < rules_.ranks && c.bank_group < grade_.bank_groups &&
+                      c.bank < grade_.banks_per_group && c.row < grade_.rows && c.column < bursts;
     if (!fits) add("address", describe(c) + " is outside the device");
     return fits;
   }
@@ -181,12 +196,16 @@ class ChannelJudge {
     if (!openings.have(now.command)) return;
     unsigned recent = 1;
     for (const CommandRecord& before : past_) {
-      recent += openings.have(before.command) && same_rank(before, now) && now.clock - before.clock < grade_.tfaw;
+      recent +=
+          openings.have(before.command) && same_rank(before, now) && now.clock - before.clock < grade_.tfaw;
     }
-    if (recent > 4) add("tFAW", describe(now) + " is the fifth activate in less than " + std::to_string(grade_.tfaw));
+    if (recent > 4)
+      add("tFAW", describe(now) + " is the fifth activate in less than " + std::to_string(grade_.tfaw));
   }
 
-  Clocks data_begin(const CommandRecord& c) const { return c.clock + (reads.have(c.command) ? grade_.cl : grade_.cwl); }
+  Clocks data_begin(const CommandRecord& c) const {
+    return c.clock + (reads.have(c.command) ? grade_.cl : grade_.cwl);
+  }
 
   void check_data_bus(const CommandRecord& now) {
     if (!columns.have(now.command)) return;
@@ -205,11 +224,15 @@ class ChannelJudge {
 
   void check_bank_state(const CommandRecord& now) {
     if (columns.have(now.command)) {
-      if (!bank(now).open) add("open row", describe(now) + ": the bank is closed");
-      else if (bank(now).activate.row != now.row) add("open row", describe(now) + ": another row is open");
+      if (!bank(now).open)
+        add("open row", describe(now) + ": the bank is closed");
+      else if (bank(now).activate.row != now.row)
+        add("open row", describe(now) + ": another row is open");
     }
-    if (now.command == Command::activate && bank(now).open) add("closed bank", describe(now) + ": the bank is open");
-    if (now.command == Command::refresh_bank && bank(now).open) add("closed bank", describe(now) + ": the bank is open");
+    if (now.command == Command::activate && bank(now).open)
+      add("closed bank", describe(now) + ": the bank is open");
+    if (now.command == Command::refresh_bank && bank(now).open)
+      add("closed bank", describe(now) + ": the bank is open");
     if (now.command != Command::refresh) return;
     for (const BankState& state : banks_) {
       if (state.open && same_rank(state.activate, now)) {
@@ -231,10 +254,12 @@ class ChannelJudge {
     const bool rank_wide = now.command == Command::refresh;
     if (!rank_wide && now.command != Command::activate && now.command != Command::refresh_bank) return;
     for (const BankState& state : banks_) {
-      if (!state.closed_itself || !(rank_wide ? same_rank(state.activate, now) : same_bank(state.activate, now))) continue;
+      if (!state.closed_itself ||
+          !(rank_wide ? same_rank(state.activate, now) : same_bank(state.activate, now)))
+        continue;
       if (now.clock < state.self_closed + grade_.trp) {
-        add("auto-precharge", describe(now) + ": the bank precharges itself from " +
-                                  std::to_string(state.self_closed) + " on");
+        add("auto-precharge",
+            describe(now) + ": the bank precharges itself from " + std::to_string(state.self_closed) + " on");
       }
     }
   }
@@ -242,20 +267,25 @@ class ChannelJudge {
   void remember(const CommandRecord& now) {
     BankState& state = bank(now);
     switch (now.command) {
-      case Command::activate: state = {true, now, true, 0, false}; break;
+      case Command::activate:
+        state = {true, now, true, 0, false};
+        break;
       case Command::read_precharge:
       case Command::write_precharge:
         state.self_closed = precharge_start(now);
         state.closed_itself = true;
         state.open = false;
         break;
-      case Command::precharge: state.open = false; break;
+      case Command::precharge:
+        state.open = false;
+        break;
       case Command::precharge_all:
         for (BankState& each : banks_) {
           if (each.was_activated && same_rank(each.activate, now)) each.open = false;
         }
         break;
-      default: break;
+      default:
+        break;
     }
     if (refreshes.have(now.command)) {
       refreshes_.push_back(now);
@@ -267,11 +297,12 @@ class ChannelJudge {
     };
     past_.erase(past_.begin(), std::find_if_not(past_.begin(), past_.end(), old(window_)));
     const Clocks longest = std::max(grade_.trfc, grade_.trfc_bank);
-    refreshes_.erase(refreshes_.begin(), std::find_if_not(refreshes_.begin(), refreshes_.end(), old(longest)));
+    refreshes_.erase(refreshes_.begin(),
+                     std::find_if_not(refreshes_.begin(), refreshes_.end(), old(longest)));
   }
 
-  // JESD79-3F and -4B: a refresh may be postponed while no more than 8 are, and no two are more than 9 tREFI apart;
-  // 8 may be pulled in. Of one bank (JESD209-4): the same in rounds of all banks.
+  // JESD79-3F and -4B: a refresh may be postponed while no more than 8 are, and no two are more than 9 tREFI
+  // apart; 8 may be pulled in. Of one bank (JESD209-4): the same in rounds of all banks.
   void check_refreshes(unsigned rank, Clocks end) {
     const bool by_bank = rules_.refresh == DramRefresh::per_bank;
     const Clocks interval = by_bank ? grade_.trefi_bank : grade_.trefi;
@@ -284,16 +315,17 @@ class ChannelJudge {
     }
     const auto check_gap = [&](unsigned which, Clocks now) {
       if (now - latest[which] > Clocks{9} * grade_.trefi) {
-        add("9 tREFI", "rank " + std::to_string(rank) + " bank " + std::to_string(which) + " is not refreshed from " +
-                           std::to_string(latest[which]) + " to " + std::to_string(now));
+        add("9 tREFI", "rank " + std::to_string(rank) + " bank " + std::to_string(which) +
+                           " is not refreshed from " + std::to_string(latest[which]) + " to " +
+                           std::to_string(now));
       }
     };
     Clocks done = 0;
     const auto check_owed = [&](Clocks now) {
       const Clocks due = now == 0 ? 0 : (now - 1) / interval;  // before now
       if (due > done + allowed) {
-        add("postponed", std::to_string(due - done) + " refreshes of rank " + std::to_string(rank) + " are owed at " +
-                             std::to_string(now));
+        add("postponed", std::to_string(due - done) + " refreshes of rank " + std::to_string(rank) +
+                             " are owed at " + std::to_string(now));
       }
     };
     for (const CommandRecord& refresh : all_refreshes_) {
@@ -327,7 +359,8 @@ class ChannelJudge {
 
 }  // namespace
 
-std::vector<Broken> broken_rules(const std::vector<CommandRecord>& log, const Grade& grade, const LogRules& rules) {
+std::vector<Broken> broken_rules(const std::vector<CommandRecord>& log, const Grade& grade,
+                                 const LogRules& rules) {
   std::map<unsigned, ChannelJudge> channels;
   if (log.empty()) channels.try_emplace(0, grade, rules);
   Clocks end = rules.end;

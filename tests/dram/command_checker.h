@@ -1,8 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// A slow and obvious judge of command logs, written from the timing tables of the standards: it looks at pairs of
-// commands and knows nothing of scheduling. For tests.
+// A slow and obvious judge of command logs, written from the timing tables of the standards: it looks at
+// pairs of commands and knows nothing of scheduling. For tests.
 #pragma once
 
 #include <string>

@@ -1,8 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// The judge of command logs is itself judged: hand-made logs that are as tight as the standards allow pass, and
-// with one command moved by one clock exactly the one rule is named.
+// The judge of command logs is itself judged: hand-made logs that are as tight as the standards allow pass,
+// and with one command moved by one clock exactly the one rule is named.
 #include <catch2/catch.hpp>
 #include <set>
 
@@ -82,7 +82,9 @@ TEST_CASE("One clock too soon after an activate or a precharge is found", "[dram
         });
   Grade slow = ddr4();
   slow.trc = 60;
-  check(slow, {}, {{"tRC", {at(0, C::activate), at(39, C::precharge), at(60, C::activate)}, 2}});
+  check(slow, {},
+        {{"tRC", {at(0, C::activate), at(39, C::precharge), at(60, C::activate)}, 2},
+         {"tRC", {at(0, C::activate), at(39, C::precharge), at(60, C::refresh)}, 2}});
 }
 
 TEST_CASE("One clock too soon after a read or a write is found", "[dram]") {
@@ -213,7 +215,8 @@ TEST_CASE("Refreshes are at most 8 late, at most 8 early, and at most 9 tREFI ap
 TEST_CASE("Every bank is refreshed by itself where refreshes are of one bank", "[dram]") {
   const Grade lpddr4 = load_grade("lpddr4-3200");
   std::vector<CommandRecord> log;
-  for (Clocks i = 1; i <= 100; ++i) log.push_back(at(i * 780, C::refresh_bank, 0, static_cast<unsigned>(i % 8)));
+  for (Clocks i = 1; i <= 100; ++i)
+    log.push_back(at(i * 780, C::refresh_bank, 0, static_cast<unsigned>(i % 8)));
   const LogRules rules = {1, DramRefresh::per_bank};
   CHECK(names(broken_rules(log, lpddr4, rules)).empty());
   for (CommandRecord& refresh : log) refresh.bank %= 7;  // bank 7's go to bank 0

@@ -1,11 +1,12 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// The energy estimate against own arithmetic from currents that were read in the datasheets named in the grade
-// files, by the formulas of Micron TN-41-01 and TN-40-07 (from memory). No publisher printed these answers.
-#include <catch2/catch.hpp>
-
+// The energy estimate against own arithmetic from currents that were read in the datasheets named in the
+// grade files, by the formulas of Micron TN-41-01 and TN-40-07 (from memory). No publisher printed these
+// answers.
 #include "earshot/dram/energy.h"
+
+#include <catch2/catch.hpp>
 
 namespace earshot {
 namespace {
@@ -45,7 +46,8 @@ TEST_CASE("Energy of an 8Gb x16 DDR4-2400 device includes what VPP supplies", "[
   counts.activates = 1;
   // 44.38 + 2.5 mW for tRC = 46.16 ns; in whole clocks it is 46.667 ns, at a little less power
   CHECK(one_device(grade, counts).activate_pj / (56 / 1.2) == Approx(46.9).epsilon(0.002));
-  CHECK(one_device(grade, counts).activate_pj == Approx((80 * 56 - 47 * 39 - 34 * 17) * 1.2 / 1.2 + 1 * 2.5 * 56 / 1.2));
+  CHECK(one_device(grade, counts).activate_pj ==
+        Approx((80 * 56 - 47 * 39 - 34 * 17) * 1.2 / 1.2 + 1 * 2.5 * 56 / 1.2));
   counts = {};
   counts.read_bursts = 3;
   CHECK(one_device(grade, counts).read_pj == Approx(3 * 235.2 * 4 / 1.2));
@@ -74,7 +76,8 @@ TEST_CASE("All devices of a rank take part, and the total is the sum of its part
   counts.rank_clocks_precharged = 500;
   const EnergyEstimate one = one_device(grade, counts), four = estimate_energy(grade, counts);
   CHECK(four.total_pj() == Approx(4 * one.total_pj()));
-  CHECK(one.total_pj() == Approx(7 * 1826.25 + 11 * 772.5 + 13 * 885.0 + 2 * 49920.0 + 60000.0 + 500 * 1.25 * 37.5));
+  CHECK(one.total_pj() ==
+        Approx(7 * 1826.25 + 11 * 772.5 + 13 * 885.0 + 2 * 49920.0 + 60000.0 + 500 * 1.25 * 37.5));
   CHECK(estimate_energy(grade, counts, 32).total_pj() == Approx(2 * one.total_pj()));
 }
 
@@ -90,8 +93,9 @@ TEST_CASE("An estimate says that it is one, by which method and of which part", 
   const EnergyEstimate energy = estimate_energy(load_grade("ddr4-2400t", 8, 16), {});
   CHECK(energy.known);
   CHECK(energy.part == "MTA4ATF51264AZ, die Rev B");
-  CHECK(energy.note == "an estimate from the datasheet's largest currents, by the method of Micron TN-41-01 and "
-                       "TN-40-07, without power-down, drivers and terminations");
+  CHECK(energy.note ==
+        "an estimate from the datasheet's largest currents, by the method of Micron TN-41-01 and "
+        "TN-40-07, without power-down, drivers and terminations");
 }
 
 TEST_CASE("Without a part's currents there is no estimate, and it says why", "[dram]") {
@@ -100,8 +104,9 @@ TEST_CASE("Without a part's currents there is no estimate, and it says why", "[d
   const EnergyEstimate energy = estimate_energy(load_grade("ddr5-4800b"), counts);
   CHECK(!energy.known);
   CHECK(energy.total_pj() == 0);
-  CHECK(energy.note == "no estimate: the supply currents of a part of ddr5-4800b with 16 Gbit and 8 data bits are not "
-                       "known");
+  CHECK(energy.note ==
+        "no estimate: the supply currents of a part of ddr5-4800b with 16 Gbit and 8 data bits are not "
+        "known");
 }
 
 }  // namespace earshot

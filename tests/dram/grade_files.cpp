@@ -6,6 +6,8 @@
 #include <cstdio>
 #include <filesystem>
 #include <fstream>
+#include <iterator>
+#include <random>
 
 #include "earshot/dram/grade_file.h"
 
@@ -39,7 +41,8 @@ tREFI 7.8us
 tRFC 100ns
 )";
 
-// `small` with the first line that begins with `name` replaced; nothing else changes, so lines keep their numbers.
+// `small` with the first line that begins with `name` replaced; nothing else changes, so lines keep their
+// numbers.
 std::string with(const std::string& name, const std::string& line, std::string text = small) {
   const std::size_t at = text.find("\n" + name) + 1;
   REQUIRE(at != 0);
@@ -99,7 +102,9 @@ TEST_CASE("A clock is a frequency, a period or a fraction, and exact", "[dram]")
 }
 
 TEST_CASE("Values may be maxima, sums, differences and names that stand above", "[dram]") {
-  const auto tfaw = [](const std::string& value) { return parse_grade(with("tFAW", "tFAW " + value), "f").tfaw; };
+  const auto tfaw = [](const std::string& value) {
+    return parse_grade(with("tFAW", "tFAW " + value), "f").tfaw;
+  };
   CHECK(tfaw("max(16nCK, 20.1ns)") == 21);
   CHECK(tfaw("max(32nCK,20.1ns)") == 32);
   CHECK(tfaw("max( 5nCK , max(6nCK, 7nCK) )") == 7);
@@ -113,16 +118,21 @@ TEST_CASE("Values may be maxima, sums, differences and names that stand above", 
 TEST_CASE("The rounding rule of a file is its own choice", "[dram]") {
   const std::string slow = with("clock", "clock 1200MHz");
   CHECK(parse_grade(with("tRFC", "tRFC 350ns", slow), "f").trfc == 420);
-  CHECK(parse_grade(with("tRFC", "tRFC 350ns", with("clock", "clock 1200MHz\nrounding ddr4")), "f").trfc == 421);
-  CHECK(parse_grade(with("tRFC", "tRFC 410ns", with("clock", "clock 2400MHz\nrounding ddr5")), "f").trfc == 983);
-  CHECK(parse_grade(with("tRFC", "tRFC 410ns", with("clock", "clock 2400MHz\nrounding exact")), "f").trfc == 984);
+  CHECK(parse_grade(with("tRFC", "tRFC 350ns", with("clock", "clock 1200MHz\nrounding ddr4")), "f").trfc ==
+        421);
+  CHECK(parse_grade(with("tRFC", "tRFC 410ns", with("clock", "clock 2400MHz\nrounding ddr5")), "f").trfc ==
+        983);
+  CHECK(parse_grade(with("tRFC", "tRFC 410ns", with("clock", "clock 2400MHz\nrounding exact")), "f").trfc ==
+        984);
 }
 
 TEST_CASE("Of lines with conditions the one that holds for the device counts", "[dram]") {
   std::string text = with("density", "density 4 8 16");
   text = with("width", "width 8 16", text);
-  text = with("tRFC", "tRFC 1ns when density 4 8 width 8\ntRFC 2ns when density 4 8 width 16\n"
-                      "tRFC 3ns when density 16", text);
+  text = with("tRFC",
+              "tRFC 1ns when density 4 8 width 8\ntRFC 2ns when density 4 8 width 16\n"
+              "tRFC 3ns when density 16",
+              text);
   CHECK(parse_grade(text, "f").trfc == 1);
   CHECK(parse_grade(text, "f", 8, 8).trfc == 1);
   CHECK(parse_grade(text, "f", 8, 16).trfc == 2);
@@ -169,6 +179,8 @@ TEST_CASE("Mistakes in a line are told with the line and what was expected", "[d
       {"tFAW", "tFAW tABC", "f:18: tFAW: 'tABC' is neither a number with a unit nor the name of a time"},
       {"tFAW", "tFAW tRFC", "f:18: tRFC has no value further up"},
       {"tFAW", "tFAW 3nCK - 5nCK", "f:18: tFAW comes to -2 clocks, expected 0 to 1000000"},
+      {"tFAW", "tFAW 1000001nCK - 1000000nCK", "f:18: '1000001nCK' is more than 1000000 clocks"},
+      {"tFAW", "tFAW max(max(max(max(max(max(max(max(max(", "f:18: tFAW: more than 8 brackets"},
       {"tFAW", "tFAW", "f:18: tFAW: the value is missing"},
       {"tFAW", "tFAW 20ns \"unknown", "f:18: a quotation mark is not closed"},
       {"tFAW", "tFAW 20ns \"datasheet\"", "f:18: tFAW: expected read or memory after the source"},
@@ -179,7 +191,7 @@ TEST_CASE("Mistakes in a line are told with the line and what was expected", "[d
       {"tFAW", "tFAW 20ns when density 3", "f:18: tFAW: density 3 is not among those listed further up"},
       {"bank-groups", "bank-groups 0", "f:6: '0', expected a whole number of 1 to 65536"},
       {"bank-groups", "bank-groups -1", "f:6: '-1', expected a whole number of 1 to 65536"},
-            {"standard", "standard none", "f:2: standard: expected a text in quotation marks"},
+      {"standard", "standard none", "f:2: standard: expected a text in quotation marks"},
   };
   for (const auto& each : cases) {
     INFO(each.line);
@@ -188,21 +200,25 @@ TEST_CASE("Mistakes in a line are told with the line and what was expected", "[d
   CHECK(error_of(with("clock", "clock 100kHz"))
             .find("f:3: '100kHz', expected MHz, GHz, ps or ns after the number") == 0);
   CHECK(error_of(with("clock", "clock 0MHz")).find("f:3: '0MHz', expected a clock that is not 0") == 0);
-  CHECK(error_of(with("clock", "clock 1GHz\nrounding up")) == "f:4: rounding 'up', expected exact, ddr4 or ddr5");
+  CHECK(error_of(with("clock", "clock 1GHz\nrounding up")) ==
+        "f:4: rounding 'up', expected exact, ddr4 or ddr5");
   CHECK(error_of(small + "tFAW 21ns\n") == "f:26: tFAW is set again; line 18 holds for this device too");
   CHECK(error_of(small + "tRRD_L 9ns\n") == "f:26: tRRD_L is set again; line 17 holds for this device too");
 }
 
-TEST_CASE("All mistakes of a file are told at once, and an unknown name with those that are known", "[dram]") {
+TEST_CASE("All mistakes of a file are told at once, and an unknown name with those that are known",
+          "[dram]") {
   std::string text = with("tRCD", "tRDC 10ns");
   text = with("CL", "CL ten", text);
   const std::string error = error_of(text);
-  CHECK(error.find("f:13: 'tRDC' is not known; expected one of grade, standard, clock, rounding, density, width, "
-                   "bank-groups") != std::string::npos);
+  CHECK(error.find(
+            "f:13: 'tRDC' is not known; expected one of grade, standard, clock, rounding, density, width, "
+            "bank-groups") != std::string::npos);
   CHECK(error.find("f:11: CL: 'ten' is neither") != std::string::npos);
   CHECK(error.find("f: tRCD is missing for density 1, width 8") != std::string::npos);
-  CHECK(error_of(with("tRRD", "tRRD fast")) == "f:17: tRRD: 'fast' is neither a number with a unit nor the name of "
-                                               "a time");
+  CHECK(error_of(with("tRRD", "tRRD fast")) ==
+        "f:17: tRRD: 'fast' is neither a number with a unit nor the name of "
+        "a time");
   CHECK(error_of("").find("f: needs a line grade\nf: needs a line standard\nf: needs a line clock") == 0);
 }
 
@@ -221,7 +237,8 @@ TEST_CASE("Values that contradict each other are told with the line of the first
       {"CWL", "CWL 0nCK", "f:12: CWL is 0, expected at least 1"},
       {"tRCD", "tRCD 0ns", "f:13: tRCD is 0, expected at least 1"},
       {"burst", "burst 7", "f:9: burst of 7 beats, expected an even number: data moves on both edges"},
-      {"tREFI", "tREFI 100ns", "f:24: tREFI of 100 clocks is not above tRFC of 100: nothing but refresh would happen"},
+      {"tREFI", "tREFI 100ns",
+       "f:24: tREFI of 100 clocks is not above tRFC of 100: nothing but refresh would happen"},
       {"tRAS", "tRAS 9ns", "f:15: tRAS of 9 clocks is below tRCD of 10"},
       {"tCCD", "tCCD 3nCK", "f:19: tCCD_S of 3 clocks is below the burst of 4"},
       {"read-to-write", "read-to-write 5nCK",
@@ -255,16 +272,56 @@ TEST_CASE("A grade made by hand is judged by the same rules", "[dram]") {
 }
 
 TEST_CASE("A grade is found by name, else by path", "[dram]") {
-  const std::string path = (std::filesystem::temp_directory_path() / "earshot-grade-file-test.grade").string();
+  const std::string path =
+      (std::filesystem::temp_directory_path() / "earshot-grade-file-test.grade").string();
   std::ofstream(path) << small;
   CHECK(load_grade(path).trc == 40);
   std::ofstream(path) << with("tRC t", "tRC 39ns");
   CHECK_THROWS_WITH(load_grade(path), path + ":16: tRC of 39 clocks is below tRAS + tRP of 40");
   std::remove(path.c_str());
-  CHECK_THROWS_WITH(load_grade("ddr4-2400"),
-                    "ddr4-2400: neither a built-in grade nor a file; built-in are ddr3-1600k, ddr4-2400r, ddr4-2400t, "
-                    "ddr4-3200aa, lpddr4-3200, ddr5-4800b");
+  CHECK_THROWS_WITH(
+      load_grade("ddr4-2400"),
+      "ddr4-2400: neither a built-in grade nor a file; built-in are ddr3-1600k, ddr4-2400r, ddr4-2400t, "
+      "ddr4-3200aa, lpddr4-3200, ddr5-4800b");
   CHECK_THROWS_WITH(load_grade("/"), "/: is a directory, expected a grade file");
+}
+
+TEST_CASE("A mangled grade file is understood or refused with its lines", "[dram]") {
+  std::mt19937 random(3);
+  std::string original = small;
+  std::ifstream file(std::string(EARSHOT_SOURCE) + "/models/dram/grades/lpddr4-3200.grade");
+  original.append(std::istreambuf_iterator<char>(file), {});
+  const std::string letters = "()+-,/.\"# \n019nCKspuBL";
+  unsigned refused = 0;
+  for (unsigned i = 0; i < 4000; ++i) {
+    std::string text = i % 2 == 0 ? small : original.substr(small.size());
+    for (unsigned changes = 1 + static_cast<unsigned>(random() % 3); changes > 0; --changes) {
+      const std::size_t at = random() % text.size();
+      switch (random() % 4) {
+        case 0:
+          text.erase(at, 1 + random() % 4);
+          break;
+        case 1:
+          text.insert(at, 1, letters[random() % letters.size()]);
+          break;
+        case 2:
+          text[at] = letters[random() % letters.size()];
+          break;
+        default:
+          text.insert(at, text.substr(random() % text.size(), random() % 40));
+          break;
+      }
+    }
+    try {
+      CHECK(parse_grade(text, "f").problems().empty());
+    } catch (const GradeError& error) {
+      ++refused;
+      const std::string message = error.what();
+      CHECK(message.substr(0, 2) == "f:");
+    }
+  }
+  CHECK(refused > 1000);
+  CHECK(refused < 4000);
 }
 
 TEST_CASE("A file's range is what it covers, the usual one first", "[dram]") {

@@ -1,8 +1,9 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// The built-in grades against the standards' and datasheets' tables, in clocks. Each value's source, and whether
-// it was read there or is from memory, stands beside it in models/dram/grades/; the clocks are own arithmetic.
+// The built-in grades against the standards' and datasheets' tables, in clocks. Each value's source, and
+// whether it was read there or is from memory, stands beside it in models/dram/grades/; the clocks are own
+// arithmetic.
 #include <catch2/catch.hpp>
 #include <map>
 
@@ -33,14 +34,14 @@ struct ByWidth {
 };
 
 const ByWidth widths[] = {
-    {"ddr3-1600k", 4, 1024, 1, 5, 5, 24},    {"ddr3-1600k", 8, 1024, 1, 5, 5, 24},
-    {"ddr3-1600k", 16, 2048, 1, 6, 6, 32},   {"ddr4-2400r", 4, 512, 4, 4, 6, 16},
-    {"ddr4-2400r", 8, 1024, 4, 4, 6, 26},    {"ddr4-2400r", 16, 2048, 2, 7, 8, 36},
-    {"ddr4-2400t", 4, 512, 4, 4, 6, 16},     {"ddr4-2400t", 8, 1024, 4, 4, 6, 26},
-    {"ddr4-2400t", 16, 2048, 2, 7, 8, 36},   {"ddr4-3200aa", 4, 512, 4, 4, 8, 16},
-    {"ddr4-3200aa", 8, 1024, 4, 4, 8, 34},   {"ddr4-3200aa", 16, 2048, 2, 9, 11, 48},
+    {"ddr3-1600k", 4, 1024, 1, 5, 5, 24},     {"ddr3-1600k", 8, 1024, 1, 5, 5, 24},
+    {"ddr3-1600k", 16, 2048, 1, 6, 6, 32},    {"ddr4-2400r", 4, 512, 4, 4, 6, 16},
+    {"ddr4-2400r", 8, 1024, 4, 4, 6, 26},     {"ddr4-2400r", 16, 2048, 2, 7, 8, 36},
+    {"ddr4-2400t", 4, 512, 4, 4, 6, 16},      {"ddr4-2400t", 8, 1024, 4, 4, 6, 26},
+    {"ddr4-2400t", 16, 2048, 2, 7, 8, 36},    {"ddr4-3200aa", 4, 512, 4, 4, 8, 16},
+    {"ddr4-3200aa", 8, 1024, 4, 4, 8, 34},    {"ddr4-3200aa", 16, 2048, 2, 9, 11, 48},
     {"lpddr4-3200", 16, 2048, 1, 16, 16, 64}, {"ddr5-4800b", 4, 1024, 8, 8, 12, 32},
-    {"ddr5-4800b", 8, 1024, 8, 8, 12, 32},   {"ddr5-4800b", 16, 2048, 4, 8, 12, 40},
+    {"ddr5-4800b", 8, 1024, 8, 8, 12, 32},    {"ddr5-4800b", 16, 2048, 4, 8, 12, 40},
 };
 
 struct ByDensity {
@@ -49,13 +50,13 @@ struct ByDensity {
 };
 
 const ByDensity densities[] = {
-    {"ddr3-1600k", 1, 88, 0},      {"ddr3-1600k", 2, 128, 0},     {"ddr3-1600k", 4, 208, 0},
-    {"ddr3-1600k", 8, 280, 0},     {"ddr4-2400r", 4, 312, 0},     {"ddr4-2400r", 8, 420, 0},
-    {"ddr4-2400r", 16, 660, 0},    {"ddr4-2400t", 4, 312, 0},     {"ddr4-2400t", 8, 420, 0},
-    {"ddr4-2400t", 16, 660, 0},    {"ddr4-3200aa", 4, 416, 0},    {"ddr4-3200aa", 8, 560, 0},
-    {"ddr4-3200aa", 16, 880, 0},   {"lpddr4-3200", 2, 208, 96},   {"lpddr4-3200", 4, 288, 144},
-    {"lpddr4-3200", 8, 448, 224},  {"lpddr4-3200", 16, 608, 304}, {"ddr5-4800b", 8, 468, 0},
-    {"ddr5-4800b", 16, 708, 0},    {"ddr5-4800b", 24, 984, 0},    {"ddr5-4800b", 32, 984, 0},
+    {"ddr3-1600k", 1, 88, 0},     {"ddr3-1600k", 2, 128, 0},     {"ddr3-1600k", 4, 208, 0},
+    {"ddr3-1600k", 8, 280, 0},    {"ddr4-2400r", 4, 312, 0},     {"ddr4-2400r", 8, 420, 0},
+    {"ddr4-2400r", 16, 660, 0},   {"ddr4-2400t", 4, 312, 0},     {"ddr4-2400t", 8, 420, 0},
+    {"ddr4-2400t", 16, 660, 0},   {"ddr4-3200aa", 4, 416, 0},    {"ddr4-3200aa", 8, 560, 0},
+    {"ddr4-3200aa", 16, 880, 0},  {"lpddr4-3200", 2, 208, 96},   {"lpddr4-3200", 4, 288, 144},
+    {"lpddr4-3200", 8, 448, 224}, {"lpddr4-3200", 16, 608, 304}, {"ddr5-4800b", 8, 468, 0},
+    {"ddr5-4800b", 16, 708, 0},   {"ddr5-4800b", 24, 984, 0},    {"ddr5-4800b", 32, 984, 0},
 };
 
 // Command spacing; the formulas are those of the grade files.
@@ -139,7 +140,8 @@ TEST_CASE("Command spacing comes from the standards' formulas", "[dram]") {
   }
 }
 
-TEST_CASE("DDR5 writes to one bank group are further apart, most of all where ECC makes them read first", "[dram]") {
+TEST_CASE("DDR5 writes to one bank group are further apart, most of all where ECC makes them read first",
+          "[dram]") {
   CHECK(load_grade("ddr5-4800b", 16, 8).tccd_l_wr == 24);
   CHECK(load_grade("ddr5-4800b", 16, 4).tccd_l_wr == 48);
   CHECK(load_grade("ddr4-2400t").tccd_l_wr == 6);
@@ -156,7 +158,8 @@ TEST_CASE("Every value of every built-in grade has a source, and none contradict
         CHECK(grade.problems().empty());
         CHECK(grade.burst_clocks() <= grade.tccd_s);
         for (const GradeSource& source : grade.sources) {
-          if (source.parameter == "standard" || source.parameter == "density" || source.parameter == "width") continue;
+          if (source.parameter == "standard" || source.parameter == "density" || source.parameter == "width")
+            continue;
           INFO(source.parameter);
           CHECK(!source.source.empty());
           ++(source.read ? read : from_memory);
@@ -170,9 +173,9 @@ TEST_CASE("Every value of every built-in grade has a source, and none contradict
 
 TEST_CASE("Peak bandwidth is two transfers a clock of the channel's width", "[dram]") {
   // MB/s: the speed bins' transfer rates times the usual width of a channel
-  const std::map<std::string, std::uint64_t> peak = {{"ddr3-1600k", 12800},  {"ddr4-2400r", 19200},
-                                                     {"ddr4-2400t", 19200},  {"ddr4-3200aa", 25600},
-                                                     {"lpddr4-3200", 6400},  {"ddr5-4800b", 19200}};
+  const std::map<std::string, std::uint64_t> peak = {{"ddr3-1600k", 12800}, {"ddr4-2400r", 19200},
+                                                     {"ddr4-2400t", 19200}, {"ddr4-3200aa", 25600},
+                                                     {"lpddr4-3200", 6400}, {"ddr5-4800b", 19200}};
   for (const auto& [name, want] : peak) {
     const Grade grade = load_grade(name);
     CHECK(grade.clock.clocks * 2 * 1'000'000 / grade.clock.picoseconds * grade.channel_bits / 8 == want);

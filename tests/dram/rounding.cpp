@@ -1,12 +1,13 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// Times to clocks. DDR4's and DDR5's rules (JESD79-4B section 13.5, JESD79-5 section 13.2) are from memory; what
-// they give, and what plain rounding of a printed period would give, is own arithmetic.
+// Times to clocks. DDR4's and DDR5's rules (JESD79-4B section 13.5, JESD79-5 section 13.2) are from memory;
+// what they give, and what plain rounding of a printed period would give, is own arithmetic.
+#include "earshot/dram/rounding.h"
+
 #include <catch2/catch.hpp>
 
 #include "earshot/dram/grade_file.h"
-#include "earshot/dram/rounding.h"
 
 namespace earshot {
 namespace {
@@ -19,7 +20,7 @@ const ExactClock printed_0416 = {1, 416};
 struct Vector {
   const char* what;
   Picoseconds time;
-  Clocks plain;       // by the period as printed
+  Clocks plain;  // by the period as printed
   Clocks exact;
   Clocks guard_band;  // JEDEC
 };
@@ -28,8 +29,8 @@ struct Vector {
 
 TEST_CASE("Minima of DDR4-2400 round up by the exact clock and by JEDEC's rule", "[dram]") {
   const Vector vectors[] = {
-      {"tCCD_L", 5000, 7, 6, 6},   {"tWR", 15000, 19, 18, 18},      {"tWTR_L, tRTP", 7500, 10, 9, 9},
-      {"tWTR_S", 2500, 4, 3, 3},   {"tFAW x16", 30000, 37, 36, 36}, {"tRFC 8 Gb", 350000, 421, 420, 421},
+      {"tCCD_L", 5000, 7, 6, 6},     {"tWR", 15000, 19, 18, 18},      {"tWTR_L, tRTP", 7500, 10, 9, 9},
+      {"tWTR_S", 2500, 4, 3, 3},     {"tFAW x16", 30000, 37, 36, 36}, {"tRFC 8 Gb", 350000, 421, 420, 421},
       {"tRCD R", 13320, 16, 16, 16}, {"tRCD T", 14160, 17, 17, 17},
   };
   for (const Vector& vector : vectors) {
@@ -42,7 +43,9 @@ TEST_CASE("Minima of DDR4-2400 round up by the exact clock and by JEDEC's rule",
 
 TEST_CASE("Minima of DDR5-4800 round up by the exact clock and by JEDEC's rule", "[dram]") {
   const Vector vectors[] = {
-      {"tRRD_L, tCCD_L", 5000, 13, 12, 12}, {"tFAW x8", 13333, 33, 32, 32}, {"tWR", 30000, 73, 72, 72},
+      {"tRRD_L, tCCD_L", 5000, 13, 12, 12},
+      {"tFAW x8", 13333, 33, 32, 32},
+      {"tWR", 30000, 73, 72, 72},
       {"tRCD", 16000, 39, 39, 39},
       // JEDEC's rule forgives 0.3 % of the time, here a whole clock
       {"tRFC 32 Gb", 410000, 986, 984, 983},
@@ -74,7 +77,8 @@ TEST_CASE("Maxima round down", "[dram]") {
   CHECK(clocks_at_most(488'000, {1, 625}) == 780);     // 780.8: of one bank
 }
 
-TEST_CASE("Both rules give every built-in DDR4 and DDR5 grade the same clocks, but for long refreshes", "[dram]") {
+TEST_CASE("Both rules give every built-in DDR4 and DDR5 grade the same clocks, but for long refreshes",
+          "[dram]") {
   for (const std::string name : {"ddr4-2400r", "ddr4-2400t", "ddr4-3200aa", "ddr5-4800b"}) {
     const bool ddr5 = name == "ddr5-4800b";
     const GradeRange range = grade_range(name);

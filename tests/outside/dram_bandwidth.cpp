@@ -1,8 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// Sustained bandwidth against the bounds that follow from the timing parameters, as fractions of the data bus and in
-// GB/s. The parameters' sources stand in models/dram/grades/; the bounds are own arithmetic.
+// Sustained bandwidth against the bounds that follow from the timing parameters, as fractions of the data bus
+// and in GB/s. The parameters' sources stand in models/dram/grades/; the bounds are own arithmetic.
 #include <catch2/catch.hpp>
 #include <random>
 
@@ -28,10 +28,13 @@ double clocks_per_burst(DramConfig config, const std::vector<DramRequest>& reque
   return static_cast<double>(columns.back() - columns[half]) / static_cast<double>(columns.size() - 1 - half);
 }
 
-double fraction(const Grade& grade, double clocks) { return grade.burst_clocks() / clocks; }
+double fraction(const Grade& grade, double clocks) {
+  return grade.burst_clocks() / clocks;
+}
 
 double gigabytes_per_second(const Grade& grade, double of_peak) {
-  const double transfers = 2e12 * static_cast<double>(grade.clock.clocks) / static_cast<double>(grade.clock.picoseconds);
+  const double transfers =
+      2e12 * static_cast<double>(grade.clock.clocks) / static_cast<double>(grade.clock.picoseconds);
   return of_peak * transfers * grade.channel_bits / 8 / 1e9;
 }
 
@@ -61,11 +64,15 @@ DramConfig closing(const Grade& grade) {
 
 }  // namespace
 
-TEST_CASE("Row hits fill the data bus, in one bank group only as far as tCCD_L lets them", "[outside][dram]") {
+TEST_CASE("Row hits fill the data bus, in one bank group only as far as tCCD_L lets them",
+          "[outside][dram]") {
   const struct {
     const char* name;
     double same_group;
-  } table[] = {{"ddr3-1600k", 1.0}, {"ddr4-2400t", 0.6667}, {"ddr4-3200aa", 0.5}, {"lpddr4-3200", 1.0},
+  } table[] = {{"ddr3-1600k", 1.0},
+               {"ddr4-2400t", 0.6667},
+               {"ddr4-3200aa", 0.5},
+               {"lpddr4-3200", 1.0},
                {"ddr5-4800b", 0.6667}};
   for (const auto& want : table) {
     INFO(want.name);
@@ -85,12 +92,16 @@ TEST_CASE("New rows in all banks by turns go as fast as tFAW, tRRD and tRC allow
   const struct {
     const char* name;
     double of_peak, gb_per_s;
-  } table[] = {{"ddr3-1600k", 0.6667, 8.533}, {"ddr4-2400t", 0.6154, 11.815}, {"ddr4-3200aa", 0.4706, 12.047},
-               {"lpddr4-3200", 0.5, 3.2},     {"ddr5-4800b", 1.0, 19.2}};
+  } table[] = {{"ddr3-1600k", 0.6667, 8.533},
+               {"ddr4-2400t", 0.6154, 11.815},
+               {"ddr4-3200aa", 0.4706, 12.047},
+               {"lpddr4-3200", 0.5, 3.2},
+               {"ddr5-4800b", 1.0, 19.2}};
   for (const auto& want : table) {
     INFO(want.name);
     const Grade grade = load_grade(want.name);
-    const double measured = fraction(grade, clocks_per_burst(closing(grade), new_rows(grade, grade.banks(), false)));
+    const double measured =
+        fraction(grade, clocks_per_burst(closing(grade), new_rows(grade, grade.banks(), false)));
     CHECK(measured == Approx(want.of_peak).epsilon(2e-4));
     CHECK(gigabytes_per_second(grade, measured) == Approx(want.gb_per_s).epsilon(2e-4));
   }
@@ -105,10 +116,12 @@ TEST_CASE("With wide windows tRRD, then the banks' tRC, limit new rows", "[outsi
     INFO(want.name);
     Grade grade = load_grade(want.name);
     grade.tfaw = 1;
-    const double both = fraction(grade, clocks_per_burst(closing(grade), new_rows(grade, grade.banks(), false)));
+    const double both =
+        fraction(grade, clocks_per_burst(closing(grade), new_rows(grade, grade.banks(), false)));
     CHECK(both == Approx(std::min(want.trrd, want.trc)).epsilon(1e-3));
     grade.trrd_s = grade.trrd_l = 1;
-    const double banks = fraction(grade, clocks_per_burst(closing(grade), new_rows(grade, grade.banks(), false)));
+    const double banks =
+        fraction(grade, clocks_per_burst(closing(grade), new_rows(grade, grade.banks(), false)));
     CHECK(banks == Approx(want.trc).epsilon(1e-3));
   }
 }
@@ -133,12 +146,13 @@ TEST_CASE("New rows in random banks stay below the bound, and near it with a dee
   }
 }
 
-TEST_CASE("New rows in one bank are read once in tRC, and written once in as long as a write takes", "[outside][dram]") {
+TEST_CASE("New rows in one bank are read once in tRC, and written once in as long as a write takes",
+          "[outside][dram]") {
   const struct {
     const char* name;
     double read, write;    // clocks
     double read_gb_per_s;  // 0: not computed
-  } table[] = {{"ddr3-1600k", 39, 46, 1.3128}, {"ddr4-2400r", 55, 70, 0}, {"ddr4-2400t", 56, 72, 1.3714},
+  } table[] = {{"ddr3-1600k", 39, 46, 1.3128},  {"ddr4-2400r", 55, 70, 0},   {"ddr4-2400t", 56, 72, 1.3714},
                {"ddr4-3200aa", 74, 92, 1.3838}, {"lpddr4-3200", 97, 109, 0}, {"ddr5-4800b", 116, 196, 0}};
   for (const auto& want : table) {
     INFO(want.name);
@@ -161,13 +175,18 @@ TEST_CASE("k reads of a row share the cost of opening it", "[outside][dram]") {
   const struct {
     const char* name;
     double of_8, of_16;
-  } table[] = {{"ddr3-1600k", 0.5714, 0.7273}, {"ddr4-2400t", 0.3765, 0.4812}, {"ddr4-3200aa", 0.2857, 0.3636},
-               {"lpddr4-3200", 0.5079, 0.6737}, {"ddr5-4800b", 0.3556, 0.4638}};
+  } table[] = {{"ddr3-1600k", 0.5714, 0.7273},
+               {"ddr4-2400t", 0.3765, 0.4812},
+               {"ddr4-3200aa", 0.2857, 0.3636},
+               {"lpddr4-3200", 0.5079, 0.6737},
+               {"ddr5-4800b", 0.3556, 0.4638}};
   for (const auto& want : table) {
     INFO(want.name);
     const Grade grade = load_grade(want.name);
-    CHECK(fraction(grade, clocks_per_burst(quiet(grade), hits_per_row(grade, 8))) == Approx(want.of_8).epsilon(2e-4));
-    CHECK(fraction(grade, clocks_per_burst(quiet(grade), hits_per_row(grade, 16))) == Approx(want.of_16).epsilon(2e-4));
+    CHECK(fraction(grade, clocks_per_burst(quiet(grade), hits_per_row(grade, 8))) ==
+          Approx(want.of_8).epsilon(2e-4));
+    CHECK(fraction(grade, clocks_per_burst(quiet(grade), hits_per_row(grade, 16))) ==
+          Approx(want.of_16).epsilon(2e-4));
   }
 }
 

@@ -1,7 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// A DRAM channel driven by hand, without a kernel. Every command it issues is judged when its log is asked for.
+// A DRAM channel driven by hand, without a kernel. Every command it issues is judged when its log is asked
+// for.
 #pragma once
 
 #include <algorithm>
@@ -40,10 +41,19 @@ class DrivenChannel {
     burst.place = request.place;
     burst.number = map_.burst(request.place);
     burst.last = config_.burst_bytes();
-    done_.push_back(0);
+    done_.push_back(not_done);
     channel_.enqueue(burst, now_, completions_);
     note();
     return burst.id;
+  }
+
+  // As soon after `clock` as the channel takes it; when that was.
+  Clocks put_when_accepted(const DramRequest& request, Clocks clock) {
+    while (channel_.next_event() < clock) step();
+    now_ = std::max(now_, clock);
+    while (!channel_.accepts(request.write)) step();
+    put(request, now_);
+    return now_;
   }
 
   // Until nothing is queued.
@@ -53,10 +63,7 @@ class DrivenChannel {
 
   // All of them, each as soon as the channel takes it.
   void stream(const std::vector<DramRequest>& requests) {
-    for (const DramRequest& request : requests) {
-      while (!channel_.accepts(request.write)) step();
-      put(request, now_);
-    }
+    for (const DramRequest& request : requests) put_when_accepted(request, 0);
     finish();
   }
 
@@ -68,6 +75,10 @@ class DrivenChannel {
   }
 
   Clocks done(unsigned id) const { return done_[id]; }
+  bool all_done() const {
+    return std::all_of(done_.begin(), done_.end(), [](Clocks done) { return done != not_done; });
+  }
+  Clocks now() const { return now_; }
   DramChannel& channel() { return channel_; }
 
   std::vector<CommandRecord> legal_log(Clocks end = 0) {
@@ -95,6 +106,8 @@ class DrivenChannel {
     for (const DramCompletion& completion : completions_) done_[completion.id] = completion.done;
     completions_.clear();
   }
+
+  static constexpr Clocks not_done = ~Clocks{0};
 
   const DramConfig config_;
   const DramAddressMap map_;

@@ -2,8 +2,8 @@
 // SPDX-License-Identifier: Apache-2.0
 //
 // Latency of one read at an idle device, from the command to the data: hit CL, closed tRCD + CL, conflict
-// tRP + tRCD + CL, and BL/2 more to the end of the last beat. The inputs are those of the grades, whose sources
-// stand in models/dram/grades/ (DDR5's are from memory); the sums are own arithmetic.
+// tRP + tRCD + CL, and BL/2 more to the end of the last beat. The inputs are those of the grades, whose
+// sources stand in models/dram/grades/ (DDR5's are from memory); the sums are own arithmetic.
 #include <catch2/catch.hpp>
 
 #include "outside/dram_drive.h"
@@ -30,7 +30,8 @@ const Latencies table[] = {
 
 }  // namespace
 
-TEST_CASE("An idle device answers hits, closed banks and conflicts after the standards' latencies", "[outside][dram]") {
+TEST_CASE("An idle device answers hits, closed banks and conflicts after the standards' latencies",
+          "[outside][dram]") {
   for (const Latencies& want : table) {
     for (const DramScheduling scheduling :
          {DramScheduling::one_at_a_time, DramScheduling::first_come, DramScheduling::first_ready}) {

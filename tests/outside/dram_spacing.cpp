@@ -1,7 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// How far apart commands come, as vendors print it in figures, with grades that have those figures' latencies.
+// How far apart commands come, as vendors print it in figures, with grades that have those figures'
+// latencies.
 #include <catch2/catch.hpp>
 
 #include "earshot/dram/grade_file.h"
@@ -12,10 +13,12 @@ namespace {
 
 // Two bank groups. What the figures leave open is small, so that it never decides.
 Grade figure(const std::string& latencies) {
-  return parse_grade("grade figure\nstandard \"none\"\nclock 1200MHz\ndensity 4\nwidth 8\nbank-groups 2\n"
-                     "banks-per-group 4\npage 1024\nchannel 64\ntRCD 11nCK\ntRAS 20nCK\ntRRD 4nCK\ntFAW 16nCK\n"
-                     "tWR 10nCK\ntREFI 7.8us\ntRFC 260ns\n" + latencies + "tRC tRAS + tRP\n",
-                     "figure");
+  return parse_grade(
+      "grade figure\nstandard \"none\"\nclock 1200MHz\ndensity 4\nwidth 8\nbank-groups 2\n"
+      "banks-per-group 4\npage 1024\nchannel 64\ntRCD 11nCK\ntRAS 20nCK\ntRRD 4nCK\ntFAW 16nCK\n"
+      "tWR 10nCK\ntREFI 7.8us\ntRFC 260ns\n" +
+          latencies + "tRC tRAS + tRP\n",
+      "figure");
 }
 
 // From one column command to the next, both hits: in bank 0, or the second one in the other group.
@@ -40,7 +43,9 @@ Clocks read_to_write(const Grade& grade) {
   if (grade.bank_groups > 1) CHECK(column_to_column(grade, false, true, true) == same);
   return same;
 }
-Clocks write_to_read(const Grade& grade, bool other_group) { return column_to_column(grade, true, false, other_group); }
+Clocks write_to_read(const Grade& grade, bool other_group) {
+  return column_to_column(grade, true, false, other_group);
+}
 
 const std::string rest = "tCCD 4nCK\ntRTP 6nCK\ntRP 11nCK\n";
 const std::string one_clock_preamble = "read-to-write CL + BL/2 + 2nCK - CWL\n";
@@ -52,7 +57,8 @@ TEST_CASE("A write follows a read as far as in Micron's DDR4 figures 142 to 145"
   CHECK(read_to_write(figure("burst 8\nCL 11nCK\nCWL 9nCK\n" + wtr + one_clock_preamble)) == 8);
   // BC4, in a model without burst chop: bursts of 4
   CHECK(read_to_write(figure("burst 4\nCL 11nCK\nCWL 9nCK\n" + wtr + one_clock_preamble)) == 6);
-  CHECK(read_to_write(figure("burst 4\nCL 11nCK\nCWL 10nCK\n" + wtr + "read-to-write CL + BL/2 + 3nCK - CWL\n")) == 6);
+  CHECK(read_to_write(
+            figure("burst 4\nCL 11nCK\nCWL 10nCK\n" + wtr + "read-to-write CL + BL/2 + 3nCK - CWL\n")) == 6);
 }
 
 TEST_CASE("A write follows a read as far as in figure 70 of a DDR3 datasheet", "[outside][dram]") {
@@ -93,15 +99,18 @@ TEST_CASE("A read, a precharge and an activate follow each other as in Micron's 
 
 TEST_CASE("Bursts of one kind follow each other at tCCD", "[outside][dram]") {
   // Micron DDR4: tCCD_S = 4: WR T0, WR T4
-  const Grade grade = figure("burst 8\nCL 11nCK\nCWL 9nCK\ntWTR 4nCK\ntRTP 6nCK\ntRP 11nCK\ntCCD_S 4nCK\n"
-                             "tCCD_L 6nCK\n" + one_clock_preamble);
+  const Grade grade = figure(
+      "burst 8\nCL 11nCK\nCWL 9nCK\ntWTR 4nCK\ntRTP 6nCK\ntRP 11nCK\ntCCD_S 4nCK\n"
+      "tCCD_L 6nCK\n" +
+      one_clock_preamble);
   CHECK(column_to_column(grade, true, true, true) == 4);
   CHECK(column_to_column(grade, true, true, false) == 6);
   CHECK(column_to_column(grade, false, false, true) == 4);
   CHECK(column_to_column(grade, false, false, false) == 6);
 }
 
-TEST_CASE("In the built-in grades reads and writes follow each other by the standards' formulas", "[outside][dram]") {
+TEST_CASE("In the built-in grades reads and writes follow each other by the standards' formulas",
+          "[outside][dram]") {
   const struct {
     const char* name;
     Clocks read_to_write, write_to_read_other, write_to_read_same;

@@ -19,6 +19,7 @@
 #include "earshot/cache/invalidating_cache.h"
 #include "earshot/cache/updating_cache.h"
 #include "earshot/dram/plain_memory.h"
+#include "four_phases.h"
 #include "platform.h"
 
 namespace earshot {
@@ -84,7 +85,7 @@ class Initiator : public sc_core::sc_module {
 // `count` caches on one bus with a memory, and an initiator for each.
 struct Machine {
   Machine(const std::string& name, const std::string& protocol, int count, std::uint64_t cache_bytes)
-      : bus((name + "_bus").c_str(), bus_config()), memory((name + "_memory").c_str(), PlainMemoryConfig{}) {
+      : bus((name + "_bus").c_str(), bus_config(BusTiming::annotated)), memory((name + "_memory").c_str(), PlainMemoryConfig{}) {
     bus.window_socket("memory").bind(memory.target_socket);
     CacheConfig config;
     config.geometry.size_bytes = cache_bytes;
@@ -100,8 +101,9 @@ struct Machine {
       caches.back()->bus_socket.bind(bus.cache_socket);
     }
   }
-  static SnoopingBusConfig bus_config() {
+  static SnoopingBusConfig bus_config(BusTiming timing) {
     SnoopingBusConfig config;
+    config.timing = timing;
     config.windows = {{"memory", 0, 0, true, 0}};
     return config;
   }
@@ -128,6 +130,24 @@ struct Machine {
  private:
   sc_core::sc_time round_start_, round_end_;
   std::size_t rounds_ = 0;
+};
+
+// One cache in arbitrated timing before a walker.
+struct ArbitratedMachine {
+  ArbitratedMachine() {
+    bus.window_socket("memory").bind(memory.target_socket);
+    cache.bus_socket.bind(bus.cache_socket);
+    walker.socket.bind(cache.cpu_socket);
+  }
+  static CacheConfig cache_config() {
+    CacheConfig config;
+    config.table = std::make_shared<const Table>(load_table("dirty-owner-update"));
+    return config;
+  }
+  SnoopingBus bus{"arbitrated_bus", Machine::bus_config(BusTiming::arbitrated)};
+  PlainMemory memory{"arbitrated_memory", PlainMemoryConfig{}};
+  UpdatingCache cache{"arbitrated_cache", cache_config()};
+  Walker walker{"walker"};
 };
 
 // Fork a child that replays the recording once; returns the seconds its simulation took.
@@ -177,12 +197,17 @@ void measure_replay() {
     concurrent = std::min(concurrent, replay_seconds(read_settings("", {source, "--workload.order=concurrent"})));
     recorded = std::min(recorded, replay_seconds(read_settings("", {source, "--monitor=off"})));
   }
+  double arbitrated = 1e9;
+  for (int i = 0; i < 3; ++i)
+    arbitrated = std::min(arbitrated, replay_seconds(read_settings("", {"--workload.recording=" + path, "--timing=arbitrated",
+                                                                        "--workload.order=concurrent"})));
   std::remove(path.c_str());
   const double each = 1e9 / static_cast<double>(accesses);
   std::printf("demo recording, binary: decode %.1f ns an access, replay concurrent %.1f ns, recorded order %.1f ns\n",
               decode * each, concurrent * each, recorded * each);
   std::printf("  %-64s %5.2f  (at most 6)\n", "replay, concurrent / decode only", concurrent / decode);
-  std::printf("  %-64s %5.2f  (at most 6)\n\n", "replay, recorded order without monitor / decode only", recorded / decode);
+  std::printf("  %-64s %5.2f  (at most 6)\n", "replay, recorded order without monitor / decode only", recorded / decode);
+  std::printf("  %-64s %5.2f  (at most 8)\n\n", "replay, concurrent, arbitrated / annotated", arbitrated / concurrent);
 }
 
 // Remembers the time of every benchmark besides printing it.
@@ -213,6 +238,13 @@ int sc_main(int argc, char* argv[]) {
   Machine two("two", "dirty-owner-update", 2, 16 * 1024);
   Machine few("few", "mesi", 2, 1024);
   Machine many("many", "mesi", 64, 1024);
+  BareInitiator bare_initiator("bare_initiator");
+  BareTarget bare_target("bare_target");
+  bare_initiator.socket.bind(bare_target.target_socket);
+  WaitingInitiator waiting_initiator("waiting_initiator");
+  WaitingTarget waiting_target("waiting_target");
+  waiting_initiator.socket.bind(waiting_target.target_socket);
+  ArbitratedMachine arbitrated;
   sc_core::sc_start(sc_core::SC_ZERO_TIME);
 
   const auto add = [](const char* name, auto body) {
@@ -249,6 +281,17 @@ int sc_main(int argc, char* argv[]) {
   add("private_2_caches", private_data(few));
   add("private_64_caches", private_data(many));
 
+  constexpr std::uint64_t batch = 2000;
+  add("four_phases", [&](benchmark::State& state) {
+    for (auto _ : state) bare_initiator.run(batch);
+  });
+  add("four_phases_waiting", [&](benchmark::State& state) {
+    for (auto _ : state) waiting_initiator.run(batch);
+  });
+  add("arbitrated_miss", [&](benchmark::State& state) {
+    for (auto _ : state) arbitrated.walker.run(batch);
+  });
+
   benchmark::Initialize(&argc, argv);
   Ratios ratios;
   benchmark::RunSpecifiedBenchmarks(&ratios);
@@ -256,6 +299,10 @@ int sc_main(int argc, char* argv[]) {
   ratios.print("read hit / read of a plain memory on a simple socket", "read_hit", "read_plain_memory", 1.5);
   ratios.print("bus transaction (miss in memory) / read hit", "bus_read", "read_hit", 25);
   ratios.print("bus transaction (update of another copy) / read hit", "bus_update", "read_hit", 25);
+  ratios.print("arbitrated miss / bare four phases, queues read by processes", "arbitrated_miss", "four_phases_waiting",
+               1.5);
+  std::printf("  %-64s %5.2f  (for comparison)\n", "arbitrated miss / bare four phases, queues that call back",
+              ratios.times.at("arbitrated_miss") / ratios.times.at("four_phases"));
   ratios.print("an access to private data, 64 caches / 2 caches", "private_64_caches", "private_2_caches", 1.3);
   return 0;
 }

@@ -1,0 +1,87 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+#include "earshot/dram/burst_queue.h"
+
+#include <algorithm>
+
+namespace earshot {
+
+namespace {
+constexpr std::uint64_t nobody = ~std::uint64_t{0};
+}
+
+BurstQueue::BurstQueue(bool write, unsigned capacity, unsigned banks)
+    : write_(write), entries_(capacity), numbers_(capacity, nobody), by_bank_(banks) {
+  for (unsigned slot = capacity; slot > 0; --slot) free_.push_back(static_cast<Slot>(slot - 1));
+}
+
+BurstQueue::Slot BurstQueue::append(const Entry& entry, std::uint64_t number, Clocks now) {
+  const Slot slot = free_.back();
+  free_.pop_back();
+  ++size_;
+  meter_.enter(now);
+  numbers_[slot] = number;
+  Entry& e = entries_[slot] = entry;
+  e.arrived = now;
+  e.younger = e.bank_younger = none;
+
+  e.older = youngest_;
+  (youngest_ == none ? oldest_ : entries_[youngest_].younger) = slot;
+  youngest_ = slot;
+
+  Bank& bank = by_bank_[e.bank];
+  if (bank.oldest == none) {
+    bank.place = static_cast<unsigned>(banks_.size());
+    banks_.push_back(e.bank);
+  }
+  e.bank_older = bank.youngest;
+  (bank.youngest == none ? bank.oldest : entries_[bank.youngest].bank_younger) = slot;
+  bank.youngest = slot;
+  bank.pick_known = false;
+  return slot;
+}
+
+void BurstQueue::remove(Slot slot, Clocks now) {
+  const Entry& e = entries_[slot];
+  meter_.leave(now, e.arrived);
+  (e.older == none ? oldest_ : entries_[e.older].younger) = e.younger;
+  (e.younger == none ? youngest_ : entries_[e.younger].older) = e.older;
+
+  Bank& bank = by_bank_[e.bank];
+  (e.bank_older == none ? bank.oldest : entries_[e.bank_older].bank_younger) = e.bank_younger;
+  (e.bank_younger == none ? bank.youngest : entries_[e.bank_younger].bank_older) = e.bank_older;
+  bank.pick_known = false;
+  if (bank.oldest == none) {
+    by_bank_[banks_.back()].place = bank.place;
+    banks_[bank.place] = banks_.back();
+    banks_.pop_back();
+  }
+  numbers_[slot] = nobody;
+  free_.push_back(slot);
+  --size_;
+}
+
+BurstQueue::Slot BurstQueue::find(std::uint64_t number) const {
+  if (empty()) return none;
+  const auto found = std::find(numbers_.begin(), numbers_.end(), number);
+  return found == numbers_.end() ? none : static_cast<Slot>(found - numbers_.begin());
+}
+
+unsigned BurstQueue::count(std::uint64_t number) const {
+  return empty() ? 0 : static_cast<unsigned>(std::count(numbers_.begin(), numbers_.end(), number));
+}
+
+void BurstQueue::choose_pick(Bank& bank, std::uint64_t open_row) {
+  bank.pick_known = true;
+  bank.pick = none;
+  for (Slot slot = bank.oldest; slot != none; slot = entries_[slot].bank_younger) {
+    const Entry& e = entries_[slot];
+    if (e.older_reads != 0) continue;
+    if (bank.pick == none) bank.pick = slot;
+    if (e.row != open_row) continue;
+    bank.pick = slot;
+    return;
+  }
+}
+
+}  // namespace earshot

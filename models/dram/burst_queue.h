@@ -1,0 +1,91 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+//
+// A BurstQueue holds the bursts of one direction that wait for a channel: in order of arrival, and by bank. An entry
+// keeps its slot until it is removed. Kernel-free.
+#pragma once
+
+#include <cstdint>
+#include <vector>
+
+#include "earshot/timing/exact_clock.h"
+#include "earshot/timing/queue_meter.h"
+
+namespace earshot {
+
+class BurstQueue {
+ public:
+  using Slot = std::uint16_t;
+  static constexpr Slot none = 0xffff;
+  static constexpr unsigned longest = 4096;
+
+  enum class Found : std::uint8_t { nothing_yet, hit, closed, conflict };  // when its first command was issued
+  struct Entry {
+    std::uint64_t row = 0, order = 0;
+    Clocks arrived = 0, started = 0;
+    unsigned id = 0;
+    unsigned column = 0;
+    unsigned bank = 0;  // of the channel
+    std::uint16_t first = 0, last = 0;  // [first, last): bytes
+    std::uint16_t older_reads = 0;  // a write: queued reads of its burst that must go before it; it is held
+    Found found = Found::nothing_yet;
+
+   private:
+    friend BurstQueue;
+    Slot older = none, younger = none;            // of all
+    Slot bank_older = none, bank_younger = none;  // of its bank
+  };
+
+  BurstQueue(bool write, unsigned capacity, unsigned banks);
+
+  bool write() const { return write_; }
+  unsigned capacity() const { return static_cast<unsigned>(entries_.size()); }
+  unsigned size() const { return size_; }
+  bool empty() const { return size_ == 0; }
+  bool full() const { return free_.empty(); }
+  Entry& operator[](Slot slot) { return entries_[slot]; }
+  const Entry& operator[](Slot slot) const { return entries_[slot]; }
+
+  // REQUIRES: it is not full. Returns the slot. `number` names the burst.
+  Slot append(const Entry& entry, std::uint64_t number, Clocks now);
+  void remove(Slot slot, Clocks now);
+
+  Slot oldest() const { return oldest_; }
+  Slot after(Slot slot) const { return entries_[slot].younger; }
+  std::uint64_t number(Slot slot) const { return numbers_[slot]; }
+  Slot find(std::uint64_t number) const;  // any entry of this burst
+  unsigned count(std::uint64_t number) const;
+
+  const std::vector<unsigned>& banks() const { return banks_; }  // those with bursts
+  // The burst that a bank should serve: the oldest that hits the open row, else the oldest; held ones do not count.
+  Slot pick(unsigned bank, std::uint64_t open_row) {
+    Bank& b = by_bank_[bank];
+    if (!b.pick_known) choose_pick(b, open_row);
+    return b.pick;
+  }
+  // The bank's open row has changed, or which of its bursts are held.
+  void look_again(unsigned bank) { by_bank_[bank].pick_known = false; }
+
+  const QueueMeter& meter() const { return meter_; }
+
+ private:
+  struct Bank {
+    Slot oldest = none, youngest = none;
+    Slot pick = none;
+    bool pick_known = false;
+    unsigned place = 0;  // in banks_
+  };
+  void choose_pick(Bank& bank, std::uint64_t open_row);
+
+  bool write_;
+  unsigned size_ = 0;
+  std::vector<Entry> entries_;
+  std::vector<std::uint64_t> numbers_;  // by slot, apart for quick search; nobody: free
+  std::vector<Slot> free_;
+  std::vector<Bank> by_bank_;
+  std::vector<unsigned> banks_;
+  Slot oldest_ = none, youngest_ = none;
+  QueueMeter meter_;
+};
+
+}  // namespace earshot

@@ -1,0 +1,134 @@
+// Copyright the Earshot authors.
+// SPDX-License-Identifier: Apache-2.0
+#include "played.h"
+
+#include <algorithm>
+
+#include "simulate.h"
+
+namespace earshot {
+namespace {
+
+constexpr const char* stall_id = "/earshot/bus/stall";
+
+// sc_start(), with what stopped it turned into what it means: an exception that leaves a method process reaches us as
+// a report.
+template <typename... Duration>
+void simulate_on(Platform& platform, Duration... duration) {
+  try {
+    sc_core::sc_start(duration...);
+  } catch (const sc_core::sc_report& report) {
+    if (platform.monitor() != nullptr && !platform.monitor()->violation().empty())
+      throw Finding(platform.monitor()->violation());
+    if (std::string(report.get_msg_type()) != stall_id) throw;
+    throw Finding(std::string(report.get_msg()) + "\nAll that waits:\n" + platform.waiting());
+  }
+}
+
+[[noreturn]] void hangs(const Platform& platform) {
+  throw Finding("nothing can happen any more, at " + sc_core::sc_time_stamp().to_string() +
+                ", but not everything is done. What waits:\n" + platform.waiting());
+}
+
+[[noreturn]] void unusable(const Settings& settings, const PlayError& error) {
+  std::string text = (settings.recording.empty() ? "the pattern" : settings.recording) + ": " + error.what();
+  const bool addressed = text.find("TLM_ADDRESS_ERROR_RESPONSE") != std::string::npos;
+  if (addressed && !settings.recording.empty() && !settings.packed && settings.memory_kind == MemoryKind::dram)
+    text += "; no window holds that address: workload.addresses = packed moves a recording's pages together";
+  throw UsageError(text);
+}
+
+// Until the last player finished and all it caused is done. Returns when that was.
+Picoseconds play_all(const Settings& settings, Platform& platform) {
+  simulate_on(platform);
+  Picoseconds elapsed = 0;
+  try {
+    elapsed = platform.finished_at();
+  } catch (const CoherenceViolation& violation) {
+    throw Finding(violation.what());
+  } catch (const PlayError& error) {
+    unusable(settings, error);
+  }
+  if (!platform.all_finished()) hangs(platform);
+  while (!platform.waiting().empty()) {
+    if (!sc_core::sc_pending_activity()) hangs(platform);
+    simulate_on(platform, from_ps(settings.bus_clock));
+  }
+  elapsed = std::max(elapsed, platform.bus().busy_until());
+  for (const WindowMemory* memory : platform.cached_memories()) elapsed = std::max(elapsed, memory->busy_until());
+  // Annotated times may lie ahead of simulation time.
+  if (elapsed > now_ps()) simulate_on(platform, from_ps(elapsed - now_ps()));
+  return elapsed;
+}
+
+void check_values(Platform& platform) {
+  const RecordedOrder* order = platform.recorded_order();
+  if (order == nullptr || order->reads_that_differ() == 0) return;
+  throw Finding(std::to_string(order->reads_that_differ()) + " of " + std::to_string(order->reads_compared()) +
+                " reads returned another value than the recording has. " +
+                (platform.monitor() == nullptr
+                     ? "Run with monitor = on to see whether an access was incoherent. First: "
+                     : "Every access was coherent, so the recording is not in the order its values came about. "
+                       "First: ") +
+                order->first_difference());
+}
+
+std::vector<MeteredQueue> queues_of(Platform& platform) {
+  std::vector<MeteredQueue> queues;
+  for (const BusQueue& queue : platform.bus().queues()) queues.push_back({"bus", queue.name, *queue.meter});
+  for (const auto& cache : platform.caches()) {
+    if (cache->miss_queue() == nullptr) continue;
+    const std::string owner = "cache " + std::to_string(cache->port());
+    queues.push_back({owner, "misses", *cache->miss_queue()});
+    queues.push_back({owner, "write-back slots", *cache->write_back_queue()});
+    queues.push_back({owner, "accesses without a place", *cache->access_queue()});
+  }
+  return queues;
+}
+
+void finish(const Settings& settings, Platform& platform, Played& played) {
+  if (settings.flush_at_end) {
+    platform.request_flush();
+    simulate_on(platform);
+    if (!platform.flushed()) hangs(platform);
+  }
+  for (const auto& cache : platform.caches()) played.dirty_lines += cache->owned_lines();
+  if (platform.monitor() != nullptr) platform.monitor()->check_memory();
+}
+
+}  // namespace
+
+Played play(const Settings& settings, Platform& platform) {
+  Played played;
+  played.elapsed = play_all(settings, platform);
+  check_values(platform);
+  played.bus = platform.bus().totals();
+  played.queues = queues_of(platform);
+  for (const auto& cache : platform.caches()) played.caches.push_back(cache->totals());
+  for (const WindowMemory* memory : platform.cached_memories()) {
+    played.memory_busy.push_back(memory->busy_time());
+    played.dram.push_back(memory->dram() == nullptr ? DramCounts{} : memory->dram()->counts());
+  }
+  try {
+    finish(settings, platform, played);
+  } catch (const CoherenceViolation& violation) {
+    throw Finding(violation.what());
+  }
+  return played;
+}
+
+std::vector<std::string> broken_laws(Platform& platform) {
+  std::vector<std::string> broken = platform.bus().broken_laws();
+  const auto add = [&](const std::vector<std::string>& more) { broken.insert(broken.end(), more.begin(), more.end()); };
+  for (const auto& cache : platform.caches()) {
+    add(cache->broken_laws());
+    const CacheTotals totals = cache->totals();
+    if (totals.parts.total() != totals.latency().sum())
+      broken.push_back(std::string(cache->name()) + ": the parts of its accesses' latencies are not their sum");
+  }
+  for (const WindowMemory* memory : platform.cached_memories())
+    if (memory->dram() != nullptr) add(memory->dram()->broken_laws());
+  return broken;
+}
+
+}  // namespace earshot
