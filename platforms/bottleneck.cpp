@@ -12,13 +12,17 @@ Bottleneck find_bottleneck(const std::vector<Resource>& resources, const Load& l
   Bottleneck found;
   found.resource = busiest.name;
   if (load.elapsed == 0 || load.accesses == 0 || busiest.busy == 0) return found;
+  const auto elapsed = static_cast<double>(load.elapsed);
   const auto accesses = static_cast<double>(load.accesses);
-  const auto think = static_cast<double>(load.think);
-  found.utilisation = static_cast<double>(busiest.busy) / static_cast<double>(load.elapsed);
+  // What one initiator takes for an access: it thinks before each, and its latencies overlap.
+  const auto cycle = [&](Picoseconds latencies) {
+    const auto think = static_cast<double>(load.think);
+    return std::max(think, (think + static_cast<double>(latencies) / accesses) / load.in_flight);
+  };
+  found.utilisation = static_cast<double>(busiest.busy) / elapsed;
   found.demand_ps = static_cast<double>(busiest.busy) / accesses;
-  // What one initiator alone takes for an access: it thinks before each, its latencies overlap.
-  const double alone = std::max(think, (think + static_cast<double>(load.uncontended) / accesses) / load.in_flight);
-  found.initiators_at_saturation = alone / found.demand_ps;
+  found.initiators_at_work = accesses * cycle(load.latency) / elapsed;
+  found.initiators_at_saturation = cycle(load.uncontended) / found.demand_ps;
   return found;
 }
 

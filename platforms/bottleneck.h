@@ -27,7 +27,8 @@ struct Resource {
 struct Load {
   Picoseconds elapsed = 0;
   std::uint64_t accesses = 0;
-  Picoseconds uncontended = 0;   // the sum of all accesses' latencies without what they waited for each other
+  Picoseconds latency = 0;       // the sum of all accesses' latencies
+  Picoseconds uncontended = 0;   // of that: without what they waited for each other
   Picoseconds think = 0;         // before each access
   unsigned in_flight = 1;        // accesses of one initiator at once
 };
@@ -35,7 +36,8 @@ struct Load {
 struct Bottleneck {
   std::string resource;
   double utilisation = 0;
-  double demand_ps = 0;             // for each access
+  double demand_ps = 0;                 // for each access
+  double initiators_at_work = 0;        // at once, on average: throughput times R + Z (Little's law)
   double initiators_at_saturation = 0;  // N*, in initiators; 0: nothing was busy
 };
 

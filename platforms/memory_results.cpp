@@ -10,10 +10,6 @@
 namespace earshot {
 namespace {
 
-double period_ps(const Grade& grade) {
-  return static_cast<double>(grade.clock.picoseconds) / static_cast<double>(grade.clock.clocks);
-}
-
 Json energy(const DramConfig& config, const DramCounts& counts) {
   const EnergyEstimate estimate = estimate_energy(config.grade, counts, config.channel_bits);
   Json out = {{"estimated", estimate.known}, {"method", estimate.note}};
@@ -28,21 +24,9 @@ Json energy(const DramConfig& config, const DramCounts& counts) {
   return out;
 }
 
-Json queues(const DramController& dram, Picoseconds elapsed) {
-  Json out = Json::array();
-  if (dram.config().pace == DramPace::annotated) return out;
-  out.push_back(queue_json("requests without a place", dram.entry_meter(), elapsed, 1));
-  const double clock = period_ps(dram.config().grade);
-  for (unsigned channel = 0; channel < dram.config().channels; ++channel) {
-    const std::string of = " of channel " + std::to_string(channel);
-    out.push_back(queue_json("reads" + of, dram.read_meter(channel), elapsed, clock));
-    out.push_back(queue_json("writes" + of, dram.write_meter(channel), elapsed, clock));
-  }
-  return out;
-}
-
-Json dram_results(const WindowMemory& memory, const DramCounts& counts, Picoseconds busy, Picoseconds elapsed) {
+Json dram_results(const WindowMemory& memory, const Played& played, std::size_t index) {
   const DramConfig& config = memory.dram()->config();
+  const DramCounts& counts = played.dram[index];
   return {{"window", memory.window().name},
           {"grade", config.grade.name},
           {"standard", config.grade.standard},
@@ -64,9 +48,9 @@ Json dram_results(const WindowMemory& memory, const DramCounts& counts, Picoseco
           {"refreshes", counts.refreshes},
           {"bank-refreshes", counts.bank_refreshes},
           {"most-postponed-refreshes", counts.most_postponed},
-          {"data-bus-utilisation", share(busy, elapsed)},
+          {"data-bus-utilisation", share(played.memory_busy[index], played.elapsed)},
           {"energy", energy(config, counts)},
-          {"queues", queues(*memory.dram(), elapsed)}};
+          {"queues", queues_json(played, memory.dram()->name())}};
 }
 
 }  // namespace
@@ -82,7 +66,7 @@ Json memory_results(const Platform& platform, const SnoopingBusTotals& totals, c
   for (std::size_t i = 0; i < platform.cached_memories().size(); ++i) {
     const WindowMemory& memory = *platform.cached_memories()[i];
     if (memory.dram() != nullptr)
-      drams.push_back(dram_results(memory, played.dram[i], played.memory_busy[i], played.elapsed));
+      drams.push_back(dram_results(memory, played, i));
   }
   out["dram"] = drams;
   return out;

@@ -171,21 +171,24 @@ Picoseconds Platform::finished_at() const {
   return last;
 }
 
-std::string Platform::waiting() const {
-  std::ostringstream text;
-  for (const auto& player : players_)
-    if (const std::string access = player->waiting(); !access.empty())
-      text << player->name() << ": waits for its access: " << access << '\n';
-  for (const auto& player : non_blocking_players_) {
-    std::istringstream accesses(player->waiting());
-    for (std::string access; std::getline(accesses, access);)
-      text << player->name() << ": waits for its access: " << access << '\n';
-  }
-  text << bus_->waiting();
+std::string Platform::players_waiting() const {
+  std::string text;
+  const auto add = [&](const sc_core::sc_object& player, const std::string& accesses) {
+    std::istringstream lines(accesses);
+    for (std::string line; std::getline(lines, line);)
+      text += std::string(player.name()) + ": waits for its access: " + line + "\n";
+  };
+  for (const auto& player : players_) add(*player, player->waiting());
+  for (const auto& player : non_blocking_players_) add(*player, player->waiting());
+  return text;
+}
+
+std::string Platform::memories_waiting() const {
+  std::string text;
   for (const WindowMemory* memory : cached_memories_)
     if (memory->dram() != nullptr)
-      for (const std::string& line : memory->dram()->pending()) text << line << '\n';
-  return text.str();
+      for (const std::string& line : memory->dram()->pending()) text += line + "\n";
+  return text;
 }
 
 void Platform::flush() {

@@ -36,9 +36,10 @@ class Platform {
   // When the last player finished; rethrows what stopped one early.
   Picoseconds finished_at() const;
   bool all_finished() const { return playing_ == 0; }
-  // Who has not finished and what it waits for, then what bus, caches and memories wait for, a line each; empty if
-  // nothing is under way.
-  std::string waiting() const;
+  // What players, bus and caches, memories wait for, a line each; empty if nothing is under way.
+  std::string waiting() const { return players_waiting() + bus_->waiting() + memories_waiting(); }
+  std::string players_waiting() const;
+  std::string memories_waiting() const;
 
   // Has every cache write back what it owns when the simulation goes on; sc_start() returns when that is done.
   void request_flush() { flush_.notify(sc_core::SC_ZERO_TIME); }

@@ -21,7 +21,7 @@ void simulate_on(Platform& platform, Duration... duration) {
     if (platform.monitor() != nullptr && !platform.monitor()->violation().empty())
       throw Finding(platform.monitor()->violation());
     if (std::string(report.get_msg_type()) != stall_id) throw;
-    throw Finding(std::string(report.get_msg()) + "\nAll that waits:\n" + platform.waiting());
+    throw Finding(report.get_msg() + platform.players_waiting() + platform.memories_waiting());
   }
 }
 
@@ -73,16 +73,29 @@ void check_values(Platform& platform) {
                 order->first_difference());
 }
 
+void add_queues(const DramController& dram, std::vector<MeteredQueue>& queues) {
+  const ExactClock& clock = dram.config().grade.clock;
+  const double period = static_cast<double>(clock.picoseconds) / static_cast<double>(clock.clocks);
+  queues.push_back({dram.name(), "requests without a place", dram.entry_meter()});
+  for (unsigned channel = 0; channel < dram.config().channels; ++channel) {
+    const std::string of = " of channel " + std::to_string(channel);
+    queues.push_back({dram.name(), "reads" + of, dram.read_meter(channel), period});
+    queues.push_back({dram.name(), "writes" + of, dram.write_meter(channel), period});
+  }
+}
+
 std::vector<MeteredQueue> queues_of(Platform& platform) {
   std::vector<MeteredQueue> queues;
-  for (const BusQueue& queue : platform.bus().queues()) queues.push_back({"bus", queue.name, *queue.meter});
+  for (const BusQueue& queue : platform.bus().queues())
+    queues.push_back({platform.bus().name(), queue.name, *queue.meter});
+  if (queues.empty()) return queues;  // annotated: nothing queues
   for (const auto& cache : platform.caches()) {
-    if (cache->miss_queue() == nullptr) continue;
-    const std::string owner = "cache " + std::to_string(cache->port());
-    queues.push_back({owner, "misses", *cache->miss_queue()});
-    queues.push_back({owner, "write-back slots", *cache->write_back_queue()});
-    queues.push_back({owner, "accesses without a place", *cache->access_queue()});
+    queues.push_back({cache->name(), "misses", *cache->miss_queue()});
+    queues.push_back({cache->name(), "write-back slots", *cache->write_back_queue()});
+    queues.push_back({cache->name(), "accesses without a place", *cache->access_queue()});
   }
+  for (const WindowMemory* memory : platform.cached_memories())
+    if (memory->dram() != nullptr) add_queues(*memory->dram(), queues);
   return queues;
 }
 

@@ -14,9 +14,10 @@ namespace earshot {
 
 // One queue, as it was.
 struct MeteredQueue {
-  std::string owner;  // "bus", "cache 2"
+  std::string owner;   // the module's name: "bus", "cache2", "memory_ram"
   std::string name;
   QueueMeter meter;
+  double unit_ps = 1;  // what it counts time in
 };
 
 struct Played {

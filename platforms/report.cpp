@@ -3,7 +3,6 @@
 #include "report.h"
 
 #include <algorithm>
-#include <array>
 #include <cstdarg>
 #include <cstdio>
 #include <filesystem>
@@ -95,20 +94,22 @@ std::string decision(const Json& results) {
 }
 
 std::string saturation(const Json& results) {
-  struct Resource {
-    const char* name;
-    double busy;
-  };
-  std::array<Resource, 3> resources{{{"the address bus", real(results.at("bus"), "address-utilisation")},
-                                     {"the data bus", real(results.at("bus"), "data-utilisation")},
-                                     {"memory", real(results.at("memory"), "utilisation")}}};
-  std::stable_sort(resources.begin(), resources.end(),
-                   [](const Resource& a, const Resource& b) { return a.busy > b.busy; });
-  std::string text = "First to saturate is " + std::string(resources[0].name) +
-                     format(", %.1f %% busy now", 100 * resources[0].busy);
-  for (std::size_t i = 1; i < resources.size(); ++i)
-    text += format("; %s %.1f %%", resources[i].name, 100 * resources[i].busy);
-  text += format(". The run takes %.3f us", real(results, "elapsed-ns") / 1000);
+  const Json& first = results.at("bottleneck");
+  const std::string name = first.at("resource").get<std::string>();
+  const double busy = real(first, "utilisation");
+  std::string text = "First to saturate is the " + name + format(", %.1f %% busy now", 100 * busy);
+  if (busy >= 0.95)
+    text += ": it is saturated.";
+  else if (busy > 0)
+    text += format(": it bears %.*f times this load.", busy > 0.1 ? 1 : 0, 1 / busy);
+  if (!first.at("initiators-at-saturation").is_null())
+    text += format(" %.1f initiators are at work at once, on average; about %.1f like these saturate it.",
+                   real(first, "initiators-at-work"), real(first, "initiators-at-saturation"));
+  std::string others;
+  for (const Json& one : first.at("resources"))
+    if (const std::string other = one.at("resource").get<std::string>(); other != name)
+      others += (others.empty() ? " The others: " : ", ") + other + format(" %.1f %%", 100 * real(one, "utilisation"));
+  text += others + format("%s The run takes %.3f us", others.empty() ? "" : ".", real(results, "elapsed-ns") / 1000);
   if (results.contains("baseline"))
     text += format(", the baseline %.3f us", real(results.at("baseline"), "elapsed-ns") / 1000);
   return wrapped(text + ".", 2);
@@ -138,6 +139,18 @@ std::string latency_table(const Json& results) {
   return out + format("    %-16s %10.3f ns\n", "together", mean);
 }
 
+std::string kind_table(const Json& results) {
+  std::string out = "  Kind of access          count    mean ns     p95 ns     p99 ns     max ns\n";
+  for (const auto& [kind, one] : results.at("latency").at("kinds").items()) {
+    if (count(one, "count") == 0) continue;
+    out += format("    %-16s %10s %10.2f %10.1f %10.1f %10.1f%s\n", kind.c_str(), counted(one, "count").c_str(),
+                  real(one, "mean-ns"), real(one, "p95-ns"), real(one, "p99-ns"), real(one, "max-ns"),
+                  kind == "write-back" ? " *" : "");
+  }
+  const bool written_back = count(results.at("latency").at("kinds").at("write-back"), "count") > 0;
+  return out + (written_back ? "    * of these no access waits for the end\n" : "");
+}
+
 std::string bus_table(const Json& results) {
   const Json& bus = results.at("bus");
   std::string out = "  Bus transaction       count    mean ns    waiting  address cycles  data cycles\n";
@@ -149,6 +162,42 @@ std::string bus_table(const Json& results) {
                   counted(cost, "address-cycles").c_str(), counted(cost, "data-cycles").c_str());
   }
   return out;
+}
+
+std::string dram_lines(const Json& results) {
+  std::string out;
+  for (const Json& dram : results.at("memory").at("dram")) {
+    const double hits = real(dram, "row-hits"), closed = real(dram, "row-closed"), conflicts = real(dram, "row-conflicts");
+    const double all = std::max(1.0, hits + closed + conflicts);
+    std::string text = "DRAM " + dram.at("grade").get<std::string>() + ", " + counted(dram, "channels") + " x " +
+                       counted(dram, "channel-bits") + " bits";
+    if (results.at("memory").at("dram").size() > 1) text += ", window " + dram.at("window").get<std::string>();
+    text += ": of " + counted(dram, "read-bursts") + " reads and " + counted(dram, "write-bursts") + " writes " +
+            format("%.1f %% found their row open, %.1f %% the bank closed, %.1f %% another row; ", 100 * hits / all,
+                   100 * closed / all, 100 * conflicts / all) +
+            counted(dram, "refreshes") + " refreshes";
+    if (const std::uint64_t banks = count(dram, "bank-refreshes"); banks > 0)
+      text += ", " + with_commas(banks) + " of single banks";
+    const Json& energy = dram.at("energy");
+    if (energy.at("estimated").get<bool>())
+      text += format(". Energy, an estimate: %.1f uJ (%.1f uJ of it standby) with the currents of ",
+                     real(energy, "total-nj") / 1000, real(energy, "background-nj") / 1000) +
+              energy.at("part").get<std::string>();
+    else
+      text += ". Energy: " + energy.at("method").get<std::string>();
+    out += wrapped(text + ".", 2) + "\n";
+  }
+  return out;
+}
+
+std::string grant_table(const Json& results) {
+  const Json& grants = results.at("bus").at("grants");
+  if (grants.empty()) return {};
+  std::string out = "  Initiator      grants   mean wait ns   longest wait ns\n";
+  for (const Json& one : grants)
+    out += format("    %-7llu %11s %14.2f %17.1f\n", static_cast<unsigned long long>(count(one, "initiator")),
+                  counted(one, "grants").c_str(), real(one, "mean-wait-ns"), real(one, "longest-wait-ns"));
+  return out + "\n";
 }
 
 std::string initiator_table(const Json& results) {
@@ -178,6 +227,8 @@ std::string checks(const Json& results) {
   if (at_end > 0) text += "; " + with_commas(at_end) + " dirty lines were written back at the end (counted above)";
   if (dirty > 0)
     text += "; " + with_commas(dirty) + " lines are still dirty in caches";
+  if (count(done, "queues-checked") > 0)
+    text += "; Little's law holds in " + counted(done, "queues-checked") + " queues";
   return wrapped(text + ".", 2);
 }
 
@@ -185,7 +236,8 @@ std::string checks(const Json& results) {
 
 std::string text_answer(const Json& results) {
   return headline(results) + "\n" + decision(results) + "\n" + saturation(results) + "\n" + supplies(results) + "\n" +
-         latency_table(results) + "\n" + bus_table(results) + "\n" + initiator_table(results) + "\n" +
+         latency_table(results) + "\n" + kind_table(results) + "\n" + bus_table(results) + "\n" + dram_lines(results) +
+         initiator_table(results) + "\n" + grant_table(results) +
          checks(results) + "\n" + wrapped(results.at("caution").get<std::string>(), 2);
 }
 

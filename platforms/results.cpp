@@ -63,13 +63,6 @@ Json latency(const CacheTotals& totals) {
   return out;
 }
 
-Json queues(const Played& played, const std::string& owner) {
-  Json out = Json::array();
-  for (const MeteredQueue& queue : played.queues)
-    if (queue.owner == owner) out.push_back(queue_json(queue.name, queue.meter, played.elapsed, 1));
-  return out;
-}
-
 Json grants(const SnoopingBusTotals& totals) {
   Json out = Json::array();
   for (std::size_t port = 0; port < totals.ports.size(); ++port) {
@@ -102,7 +95,7 @@ Json bus(const SnoopingBusTotals& totals, const Played& played) {
           {"data-utilisation", share(played.bus.data_busy, played.elapsed)},
           {"wait-ns", ns(wait)},
           {"costs", costs},
-          {"queues", queues(played, "bus")},
+          {"queues", queues_json(played, "bus")},
           {"grants", grants(played.bus)}};
 }
 
@@ -128,7 +121,8 @@ Load load_of(const Settings& settings, const Played& played) {
   const Picoseconds unavoidable =
       transactions * (settings.arbitration_cycles * settings.bus_clock + settings.bus_clock / 2);
   const Picoseconds waited = wait - std::min(wait, unavoidable) + all.parts[LatencyPart::memory_queue];
-  load.uncontended = all.parts.total() + io - waited;
+  load.latency = all.parts.total() + io;
+  load.uncontended = load.latency - waited;
   return load;
 }
 
@@ -157,6 +151,7 @@ Json bottleneck(const Settings& settings, const Platform& platform, const Played
               {"utilisation", found.utilisation},
               {"headroom", 1 - found.utilisation},
               {"demand-ns", found.demand_ps / 1000},
+              {"initiators-at-work", found.initiators_at_work},
               {"initiators-at-saturation", nullptr},
               {"resources", all}};
   if (found.initiators_at_saturation > 0) out["initiators-at-saturation"] = found.initiators_at_saturation;
@@ -166,17 +161,13 @@ Json bottleneck(const Settings& settings, const Platform& platform, const Played
 Json checks(Platform& platform, const Played& played) {
   std::uint64_t latencies = 0;
   for (const CacheTotals& one : played.caches) latencies += one.latency().count();
-  std::uint64_t queues = played.queues.size();
-  if (!played.queues.empty())
-    for (const WindowMemory* memory : platform.cached_memories())
-      if (memory->dram() != nullptr) queues += 1 + 2 * memory->dram()->config().channels;
   return {{"monitored", platform.monitor() != nullptr},
           {"line-accesses-checked", platform.monitor() == nullptr ? 0 : platform.monitor()->accesses_checked()},
           {"reads-compared-with-recording",
            platform.recorded_order() == nullptr ? 0 : platform.recorded_order()->reads_compared()},
           {"dirty-lines-left", played.dirty_lines},
           {"latencies-checked", latencies},
-          {"queues-checked", queues}};
+          {"queues-checked", played.queues.size()}};
 }
 
 std::string in_ns(Picoseconds time) {
@@ -213,7 +204,7 @@ Json collect_results(const Settings& settings, const Table& table, Platform& pla
     initiators.push_back({{"initiator", i},
                           {"accesses", accesses(played.caches[i])},
                           {"latency", latency(played.caches[i])},
-                          {"queues", queues(played, "cache " + std::to_string(i))}});
+                          {"queues", queues_json(played, platform.caches()[i]->name())}});
   }
   out["accesses"] = accesses(all);
   out["bottleneck"] = bottleneck(settings, platform, played);

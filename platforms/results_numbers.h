@@ -4,7 +4,7 @@
 // How the results document writes times, shares and queues. Internal to the results.
 #pragma once
 
-#include "earshot/timing/queue_meter.h"
+#include "played.h"
 #include "simulate.h"
 
 namespace earshot {
@@ -19,14 +19,20 @@ inline double share(Picoseconds busy, Picoseconds elapsed) {
   return elapsed == 0 ? 0.0 : static_cast<double>(busy) / static_cast<double>(elapsed);
 }
 
-// `unit_ps`: what the meter counts time in.
-inline Json queue_json(const std::string& name, const QueueMeter& meter, Picoseconds elapsed, double unit_ps) {
-  return {{"name", name},
-          {"arrivals", meter.arrivals()},
-          {"mean-present", meter.mean_present(static_cast<Picoseconds>(static_cast<double>(elapsed) / unit_ps))},
-          {"mean-stay-ns", meter.mean_stay() * unit_ps / 1000},
-          {"longest-stay-ns", static_cast<double>(meter.longest()) * unit_ps / 1000},
-          {"most", meter.most()}};
+// The queues of one module.
+inline Json queues_json(const Played& played, const std::string& owner) {
+  Json out = Json::array();
+  for (const MeteredQueue& queue : played.queues) {
+    if (queue.owner != owner) continue;
+    const auto elapsed = static_cast<Picoseconds>(static_cast<double>(played.elapsed) / queue.unit_ps);
+    out.push_back({{"name", queue.name},
+                   {"arrivals", queue.meter.arrivals()},
+                   {"mean-present", queue.meter.mean_present(elapsed)},
+                   {"mean-stay-ns", queue.meter.mean_stay() * queue.unit_ps / 1000},
+                   {"longest-stay-ns", static_cast<double>(queue.meter.longest()) * queue.unit_ps / 1000},
+                   {"most", queue.meter.most()}});
+  }
+  return out;
 }
 
 }  // namespace earshot

@@ -178,11 +178,12 @@ void Checks::dram() {
   settings_.dram.log_commands = !settings_.command_log.empty();
   settings_.dram.pace = settings_.timing == BusTiming::arbitrated ? DramPace::event_driven : DramPace::annotated;
   const std::vector<std::string> found = settings_.dram.problems();
+  const bool only_low = is_given("memory.write-low") && !is_given("memory.write-high");
   for (const std::string& what : found)
     renamed(what,
             {{"channels", "memory.channels"}, {"ranks", "memory.ranks"}, {"channel width", "memory.channel-width"},
              {"read queue", "memory.read-queue"}, {"write queue", "memory.write-queue"},
-             {"write marks", "memory.write-high"}, {"age cap", "memory.age-cap"}, {"refresh", "memory.refresh"},
+             {"write marks", only_low ? "memory.write-low" : "memory.write-high"}, {"age cap", "memory.age-cap"}, {"refresh", "memory.refresh"},
              {"address map", "memory.address-map"}, {"bank hashing", "memory.bank-hash"}},
             "memory.grade");
   if (found.empty()) capacity();

@@ -12,14 +12,17 @@
 #include <csignal>
 #include <cstdio>
 
+#include "command_log.h"
 #include "earshot/protocol/prover.h"
 #include "platform.h"
 #include "results.h"
+#include "whole_file.h"
 
 namespace earshot {
 namespace {
 
 constexpr const char* baseline_protocol = "write-through-update";
+const std::string in_baseline = "in the baseline run: ";
 
 // A built-in table is proved by the tests; a user's own is proved here before it may run.
 void require_soundness(const Settings& settings) {
@@ -68,9 +71,13 @@ Json run(const Settings& settings, bool progress) {
   sc_core::sc_report_handler::set_actions("/OSCI/SystemC", sc_core::SC_INFO, sc_core::SC_DO_NOTHING);
   sc_core::sc_set_stop_mode(sc_core::SC_STOP_IMMEDIATE);
   Platform platform(settings, settings.table, hooks);
-  sc_core::sc_start();
-  return collect_results(settings, *settings.table, platform);
+  const Played played = play(settings, platform);
+  if (!settings.command_log.empty()) write_whole_file(settings.command_log, command_log(platform));
+  return collect_results(settings, *settings.table, platform, played);
 }
+
+// A finding of the baseline run, for the document its process sends.
+constexpr const char* finding_field = "finding";
 
 // The same input under the baseline protocol, in a process of its own: a SystemC kernel simulates once.
 class BaselineRun {
@@ -94,9 +101,14 @@ class BaselineRun {
     settings.update_limit = 0;
     settings.table = std::make_shared<const Table>(load_table(baseline_protocol));
     settings.monitor = Watch::never;
+    settings.command_log.clear();
+    settings.dram.log_commands = false;
+    settings.longest_wait = 0;
     std::string text;
     try {
       text = run(settings, false).dump(-1, ' ', false, Json::error_handler_t::replace);
+    } catch (const Finding& finding) {
+      text = Json{{finding_field, finding.what()}}.dump(-1, ' ', false, Json::error_handler_t::replace);
     } catch (const std::exception& error) {
       text = Json{{"error", error.what()}}.dump(-1, ' ', false, Json::error_handler_t::replace);
     }
@@ -123,8 +135,10 @@ class BaselineRun {
     finished_ = true;
     Json results = Json::parse(text, nullptr, false);
     if (results.is_discarded()) throw std::runtime_error("the baseline run ended without a result");
+    if (results.contains(finding_field))
+      throw Finding(in_baseline + results[finding_field].get<std::string>());
     if (results.contains("error"))
-      throw UsageError("in the baseline run: " + results["error"].get<std::string>() +
+      throw UsageError(in_baseline + results["error"].get<std::string>() +
                        "\n(baseline = off leaves it out)");
     return results;
   }
@@ -147,6 +161,7 @@ Json baseline_summary(const Json& results) {
 
 Json simulate(const Settings& settings, bool progress) {
   require_soundness(settings);
+  if (!settings.command_log.empty()) check_writable(settings.command_log);
   if (!settings.baseline) return run(settings, progress);
   if (settings.protocol == baseline_protocol) {
     Json results = run(settings, progress);
@@ -155,7 +170,9 @@ Json simulate(const Settings& settings, bool progress) {
   }
   BaselineRun baseline(settings);
   Json results = run(settings, progress);
-  results["baseline"] = baseline_summary(baseline.results());
+  const Json other = baseline.results();
+  results["baseline"] = baseline_summary(other);
+  for (const Json& finding : other.at("findings")) results["findings"].push_back(in_baseline + finding.get<std::string>());
   return results;
 }
 

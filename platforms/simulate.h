@@ -27,7 +27,8 @@ constexpr const char* caution =
 
 // The results as one JSON document (fields: README.md). A table file is proved for 2 and 3 caches before it runs.
 // With settings.baseline, write-through-update plays the same input in a second process, and the document has a
-// "baseline". Once per process. `progress`: say on stderr how far it is, if that is a terminal.
+// "baseline"; its "findings" are what the user must look at although there are results: exit status 1. Writes the
+// command log, if there is to be one. Once per process. `progress`: say on stderr how far it is, if that is a terminal.
 // Throws UsageError, Finding, RecordingError.
 Json simulate(const Settings& settings, bool progress);
 

@@ -62,6 +62,10 @@ int simulate_verb(const std::vector<std::string>& words) {
   const Json results = simulate(settings, !quiet);
   if (!json_path.empty()) write_whole_file(json_path, json_text(results));
   if (!quiet) std::fputs(text_answer(results).c_str(), stdout);
+  std::fflush(stdout);  // the answer before the findings
+  std::string found;
+  for (const Json& finding : results.at("findings")) found += (found.empty() ? "" : "\n") + finding.get<std::string>();
+  if (!found.empty()) throw Finding(found);
   return 0;
 }
 

@@ -50,11 +50,20 @@ void SnoopingBus::Arbitrated::arbitrate(void*) {
     const std::vector<Contender>& contenders = requests_.contenders(now);
     if (contenders.empty()) break;
     const std::uint64_t cycle = now / bus_.period_;
-    if (const std::uint64_t next = arbiter_->next_cycle(contenders, cycle); next > cycle) {
+    const std::uint64_t next = arbiter_->next_cycle(contenders, cycle);
+    if (next > cycle) {
       schedule(bus_.cycles(next));
       break;
     }
-    if (grant(requests_.take(arbiter_->choose(contenders, cycle))) && held_) return;
+    const std::size_t chosen = arbiter_->choose(contenders, cycle);
+    if (next < cycle || chosen >= contenders.size()) {
+      SC_REPORT_ERROR("/earshot/bus/arbiter", (std::string(bus_.name()) + ": the arbiter chose " + std::to_string(chosen) +
+                                               " of " + std::to_string(contenders.size()) + " contenders for cycle " +
+                                               std::to_string(next) + " in cycle " + std::to_string(cycle))
+                                                  .c_str());
+      return;
+    }
+    if (grant(requests_.take(chosen)) && held_) return;
   }
   if (requests_.size() == 0 || outstanding_ == bus_.config_.outstanding) return;  // finish() comes back
   if (now < address_free_) schedule(address_free_);
@@ -84,7 +93,7 @@ bool SnoopingBus::Arbitrated::grant(const RequestQueue::Request& request) {
   active.line = transaction.line;
   active.port = port;
   active.granted = now;
-  if (transaction.io == nullptr) requests_.lock(active.line);
+  requests_.lock(transaction);
   ++outstanding_;
   outstanding_meter_.enter(now);
   bus_.totals_.kind[static_cast<std::size_t>(active.kind)].address_cycles += bus_.config_.address_cycles;
@@ -357,10 +366,11 @@ void SnoopingBus::Arbitrated::memory_done(Active* active) {
   const bool accepted = status == tlm::TLM_OK_RESPONSE;
 
   if (transaction == nullptr) {  // memory has taken a supplied line
-    if (!accepted)
-      SC_REPORT_ERROR("/earshot/bus/memory", (std::string(bus_.name()) + ": memory refuses a line it let be read")
-                                                 .c_str());
-    ++bus_.totals_.block_writes;
+    if (accepted)
+      ++bus_.totals_.block_writes;
+    else
+      SC_REPORT_ERROR("/earshot/bus/memory",
+                      (std::string(bus_.name()) + ": memory refuses a line it let be read").c_str());
     settle(*active);
     return;
   }
@@ -420,8 +430,10 @@ void SnoopingBus::Arbitrated::settle(Active& active) {
   if (active.kind < BusKind::io_read) {
     requests_.unlock(active.line);
     bus_.caches_[static_cast<std::size_t>(active.port)]->settled(active.line);
-    if (requests_.size() > 0 && !held_) schedule(next_edge(std::max(now_ps(), address_free_), bus_.period_));
+  } else {
+    requests_.unlock_uncached(active.port);
   }
+  if (requests_.size() > 0 && !held_) schedule(next_edge(std::max(now_ps(), address_free_), bus_.period_));
   last_end_ = now_ps();
   active_.erase(std::find(active_.begin(), active_.end(), &active));
   unused_.push_back(&active);
@@ -436,18 +448,24 @@ PresenceIndex::Mask SnoopingBus::Arbitrated::requesters(std::uint64_t line) cons
   return ports;
 }
 
-void SnoopingBus::Arbitrated::debug_write(std::uint64_t address, const std::uint8_t* bytes, unsigned length) {
+void SnoopingBus::Arbitrated::debug(bool write, std::uint64_t address, std::uint8_t* bytes, unsigned length) {
   for (Active* active : active_) {
     std::uint64_t first = active->line;
     std::uint64_t size = 0;
-    if (active->kind == BusKind::write_through && active->transaction != nullptr) {
+    if (active->memory_takes_line) {
+      size = bus_.line_bytes_;
+    } else if (write && active->kind == BusKind::write_through && active->transaction != nullptr) {
       first += active->transaction->offset;
       size = active->transaction->length;
-    } else if (active->memory_takes_line) {
-      size = bus_.line_bytes_;
     }
-    for (std::uint64_t i = 0; i < size; ++i)
-      if (first + i - address < length) active->buffer[i] = bytes[first + i - address];
+    for (std::uint64_t i = 0; i < size; ++i) {
+      const std::uint64_t at = first + i - address;
+      if (at >= length) continue;
+      if (write)
+        active->buffer[i] = bytes[at];
+      else
+        bytes[at] = active->buffer[i];
+    }
   }
 }
 
@@ -489,7 +507,7 @@ std::string SnoopingBus::Arbitrated::waiting() const {
   requests_.for_each([&](const RequestQueue::Request& request, bool held_up) {
     what("request", request.transaction->requester, request.transaction->line);
     text << " asked for at " << from_ps(request.since) << ", waits for "
-         << (held_up                                           ? "the transaction of its line to end"
+         << (held_up                                           ? "the transaction before it to end"
              : outstanding_ >= bus_.config_.outstanding ? "one of the outstanding transactions to end"
                                                                : "its grant")
          << '\n';

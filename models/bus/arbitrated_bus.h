@@ -32,8 +32,9 @@ class SnoopingBus::Arbitrated {
 
   // The ports whose transaction for the line is under way: they may have bytes of it that no copy has yet.
   PresenceIndex::Mask requesters(std::uint64_t line) const;
-  // A debugger wrote memory: what is on its way there or to other copies must not undo it.
-  void debug_write(std::uint64_t address, const std::uint8_t* bytes, unsigned length);
+  // A debugger wrote memory: what is on its way there or to other copies must not undo it. Or it has read memory: what
+  // is on its way there counts already.
+  void debug(bool write, std::uint64_t address, std::uint8_t* bytes, unsigned length);
 
   Picoseconds busy_until() const { return last_end_; }
   std::vector<BusQueue> queues() const;

@@ -53,6 +53,13 @@ Picoseconds RequestQueue::next_ready(Picoseconds now) const {
   return next;
 }
 
+void RequestQueue::lock(const BusTransaction& transaction) {
+  if (transaction.io == nullptr)
+    locked_.push_back(transaction.line);
+  else
+    uncached_ |= std::uint64_t{1} << transaction.requester;
+}
+
 void RequestQueue::unlock(std::uint64_t line) {
   const auto found = std::find(locked_.begin(), locked_.end(), line);
   *found = locked_.back();

@@ -2,7 +2,8 @@
 // SPDX-License-Identifier: Apache-2.0
 //
 // A RequestQueue holds what the ports of a bus ask for and knows which of it may be granted: a request is ready from
-// some time on, and only one transaction for a line may be under way; later ones wait here. Kernel-free.
+// some time on, and only one transaction for a line, and one uncached access of a port, may be under way; later ones
+// wait here. Kernel-free.
 #pragma once
 
 #include <cstdint>
@@ -31,8 +32,10 @@ class RequestQueue {
   // When the next request becomes ready that is not yet at `now` and whose line is free; `never` if none.
   Picoseconds next_ready(Picoseconds now) const;
 
-  void lock(std::uint64_t line) { locked_.push_back(line); }
+  // A transaction is under way / has ended.
+  void lock(const BusTransaction& transaction);
   void unlock(std::uint64_t line);
+  void unlock_uncached(int port) { uncached_ &= ~(std::uint64_t{1} << port); }
   bool locked(std::uint64_t line) const;
 
   std::size_t size() const { return size_; }
@@ -45,14 +48,16 @@ class RequestQueue {
 
  private:
   bool held_up(const Request& request) const {
-    return request.transaction->io == nullptr && locked(request.transaction->line);
+    const BusTransaction& transaction = *request.transaction;
+    return transaction.io == nullptr ? locked(transaction.line) : (uncached_ >> transaction.requester & 1) != 0;
   }
   std::size_t oldest(std::size_t port, Picoseconds now) const;
 
   std::vector<std::vector<Request>> ports_;  // each in the order of asking
   std::uint64_t asking_ = 0;                 // one bit for a port that has requests
   std::size_t size_ = 0;
-  std::vector<std::uint64_t> locked_;
+  std::vector<std::uint64_t> locked_;        // lines
+  std::uint64_t uncached_ = 0;               // one bit for a port with an uncached access under way
   std::vector<Contender> contenders_;
   std::vector<std::size_t> places_;          // of the contenders, in their ports
 };

@@ -184,7 +184,7 @@ unsigned SnoopingBus::debug(tlm::tlm_generic_payload& payload) {
   if (!window.cached) return done;
 
   // Memory's bytes are in place; now the copies: an owner's win on a read, all are overwritten by a write.
-  if (arbitrated_ != nullptr && payload.is_write()) arbitrated_->debug_write(address, payload.get_data_ptr(), done);
+  if (arbitrated_ != nullptr) arbitrated_->debug(payload.is_write(), address, payload.get_data_ptr(), done);
   for (unsigned at = 0; at < done;) {
     const std::uint64_t line = (address + at) / line_bytes_ * line_bytes_;
     const unsigned offset = static_cast<unsigned>(address + at - line);

@@ -19,7 +19,9 @@
 // at its grant, in the state the line is in then. Targets are called with nb_transport; one is told of a fetch at the
 // grant, for the instant at which the snoop ends. If memory refuses a line, other caches may have lost clean copies
 // of it. If nothing completes for stall_cycles while something is outstanding, SC_REPORT_ERROR "/earshot/bus/stall"
-// lists every queue, its head and what that waits for.
+// lists every queue, its head and what that waits for. (So a sc_start() without an end runs up to stall_cycles past
+// the last transaction; 0 switches the watch off.) A line that memory let be read but refuses to take from its owner's
+// answer is SC_REPORT_ERROR "/earshot/bus/memory", an impossible choice of a user's arbiter "/earshot/bus/arbiter".
 //
 // Configuration errors are reported from the constructor (SC_REPORT_ERROR, id "/earshot/bus/config", all in one
 // message); a cache whose line differs, arbitration that does not fit the number of caches, or a wrong time resolution

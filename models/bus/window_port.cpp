@@ -57,6 +57,7 @@ void WindowPort::begin(WindowAccess& access) {
   access.asked = now;
   access.sent = std::max(now, access.ready);
   access.requesting = true;
+  access.answered = false;
   busy_ = true;
   at_target_.push_back(&access);
   access.set_address(access.get_address() - window_.base + window_.target_base);
@@ -65,15 +66,19 @@ void WindowPort::begin(WindowAccess& access) {
   sc_core::sc_time time = from_ps(access.sent - now);
   const tlm::tlm_sync_enum answer = socket->nb_transport_fw(access, phase, time);
   const Picoseconds when = now + to_ps(time);
-  if (answer == tlm::TLM_COMPLETED) {
+  if (answer == tlm::TLM_ACCEPTED) return;
+  if (!at_target(access) || access.answered) {
+    misuse("answers BEGIN_REQ with more than TLM_ACCEPTED after it has sent BEGIN_RESP");
+  } else if (answer == tlm::TLM_COMPLETED) {
     end_request(access, now);
     respond(access, when);
   } else if (answer == tlm::TLM_UPDATED && phase == tlm::END_REQ) {
     end_request(access, when);
   } else if (answer == tlm::TLM_UPDATED && phase == tlm::BEGIN_RESP) {
     end_request(access, when);
+    access.answered = true;
     agenda_.at<&WindowPort::end_response>(when, this, &access);
-  } else if (answer != tlm::TLM_ACCEPTED) {
+  } else {
     misuse("answers BEGIN_REQ with TLM_UPDATED and neither END_REQ nor BEGIN_RESP");
   }
 }
@@ -91,6 +96,10 @@ void WindowPort::end_request(WindowAccess& access, Picoseconds when) {
 void WindowPort::next_request(WindowAccess*) {
   busy_ = false;
   send_next();
+}
+
+bool WindowPort::at_target(const WindowAccess& access) const {
+  return std::find(at_target_.begin(), at_target_.end(), &access) != at_target_.end();
 }
 
 void WindowPort::respond(WindowAccess& access, Picoseconds when) {
@@ -112,6 +121,7 @@ void WindowPort::end_response(WindowAccess* access) {
 
 tlm::tlm_sync_enum WindowPort::nb_transport_bw(tlm::tlm_generic_payload& payload, tlm::tlm_phase& phase,
                                                sc_core::sc_time& time) {
+  if (phase > tlm::END_RESP) return tlm::TLM_ACCEPTED;  // an ignorable phase of somebody's own (15.2.5)
   const Picoseconds when = now_ps() + to_ps(time);
   if (phase == tlm::END_REQ) {
     WindowAccess& access = known(payload, "END_REQ");
@@ -122,6 +132,10 @@ tlm::tlm_sync_enum WindowPort::nb_transport_bw(tlm::tlm_generic_payload& payload
   }
   if (phase == tlm::BEGIN_RESP) {
     WindowAccess& access = known(payload, "BEGIN_RESP");
+    if (access.answered) {
+      misuse("sends BEGIN_RESP twice for one access");
+      return tlm::TLM_ACCEPTED;
+    }
     end_request(access, when);  // BEGIN_RESP implies END_REQ
     respond(access, when);
     send_next();

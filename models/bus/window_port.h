@@ -38,6 +38,7 @@ struct WindowAccess : tlm::tlm_generic_payload {
   Picoseconds sent = 0;           // the begin of its request phase, at or after `ready`
   Picoseconds ended = 0;          // when the target was done
   bool requesting = false;        // its request phase has not ended
+  bool answered = false;          // the target has sent its response
 };
 
 // Accesses by the handful, reused when everybody who has acquired one has released it.
@@ -84,6 +85,7 @@ class WindowPort : public sc_core::sc_module, private tlm::tlm_bw_transport_if<>
   void begin(WindowAccess& access);
   void end_request(WindowAccess& access, Picoseconds when);
   void next_request(WindowAccess* access);
+  bool at_target(const WindowAccess& access) const;
   void respond(WindowAccess& access, Picoseconds when);
   void end_response(WindowAccess* access);
   WindowAccess& known(tlm::tlm_generic_payload& payload, const char* phase);

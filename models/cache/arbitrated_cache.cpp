@@ -29,7 +29,7 @@ CoherentCache::Arbitrated::Arbitrated(CoherentCache& cache) : cache_(cache), age
 // ---- Accesses and their phases
 
 CoherentCache::Arbitrated::Access& CoherentCache::Arbitrated::start(tlm::tlm_generic_payload& payload, bool blocking,
-                                                                    Picoseconds when) {
+                                                                    Request request, Picoseconds when) {
   if (unused_accesses_.empty()) {
     accesses_.push_back(std::make_unique<Access>());
     unused_accesses_.push_back(accesses_.back().get());
@@ -40,6 +40,7 @@ CoherentCache::Arbitrated::Access& CoherentCache::Arbitrated::start(tlm::tlm_gen
   access.blocking = blocking;
   access.done = false;
   access.write = payload.is_write();
+  access.request = request;
   access.start = access.accounted = when;
   access.progress = Progress{};
   return access;
@@ -47,7 +48,7 @@ CoherentCache::Arbitrated::Access& CoherentCache::Arbitrated::start(tlm::tlm_gen
 
 void CoherentCache::Arbitrated::recycle(Access& access) { unused_accesses_.push_back(&access); }
 
-void CoherentCache::Arbitrated::block(tlm::tlm_generic_payload& payload) {
+void CoherentCache::Arbitrated::block(tlm::tlm_generic_payload& payload, Request request) {
   // A killed process takes its payload with it: what is under way for it goes on without.
   struct Caller {
     Arbitrated& engine;
@@ -56,13 +57,14 @@ void CoherentCache::Arbitrated::block(tlm::tlm_generic_payload& payload) {
       access.payload = nullptr;
       if (access.done) engine.recycle(access);
     }
-  } caller{*this, start(payload, true, now_ps() - cache_.hit_ps_)};
+  } caller{*this, start(payload, true, request, now_ps() - lookup_time(request))};
   look_up(&caller.access);
   while (!caller.access.done) sc_core::wait(done_);
 }
 
 tlm::tlm_sync_enum CoherentCache::Arbitrated::forward(tlm::tlm_generic_payload& payload, tlm::tlm_phase& phase,
                                                       sc_core::sc_time& time) {
+  if (phase > tlm::END_RESP) return tlm::TLM_ACCEPTED;  // an ignorable phase of somebody's own (15.2.5)
   if (phase == tlm::BEGIN_REQ) {
     if (requesting_ != nullptr) return misuse("BEGIN_REQ before the END_REQ of its last request");
     if (std::find(non_blocking_.begin(), non_blocking_.end(), &payload) != non_blocking_.end())
@@ -70,18 +72,16 @@ tlm::tlm_sync_enum CoherentCache::Arbitrated::forward(tlm::tlm_generic_payload& 
     if (payload.has_mm()) payload.acquire();
     non_blocking_.push_back(&payload);
     const Picoseconds when = now_ps() + to_ps(time);
-    Access& access = start(payload, false, when);
+    const Request request = cache_.request_of(payload);
+    Access& access = start(payload, false, request, when);
     requesting_ = &access;
-    agenda_.at<&Arbitrated::look_up>(when + cache_.hit_ps_, this, &access);
+    agenda_.at<&Arbitrated::look_up>(when + lookup_time(request), this, &access);
     return tlm::TLM_ACCEPTED;
   }
   if (phase == tlm::END_RESP) {
-    if (responding_ == nullptr || responding_->payload != &payload)
+    if (responding_ == nullptr || responding_->payload != &payload || response_ending_)
       return misuse("END_RESP for an access that has no BEGIN_RESP outstanding");
-    if (time == sc_core::SC_ZERO_TIME)
-      response_ended(responding_);
-    else
-      agenda_.at<&Arbitrated::response_ended>(now_ps() + to_ps(time), this, responding_);
+    end_response(time);
     return tlm::TLM_COMPLETED;
   }
   std::ostringstream text;
@@ -98,8 +98,8 @@ tlm::tlm_sync_enum CoherentCache::Arbitrated::misuse(const std::string& what) co
 }
 
 void CoherentCache::Arbitrated::look_up(Access* access) {
-  access->progress.parts[LatencyPart::hit] += cache_.hit_ps_;
-  access->accounted += cache_.hit_ps_;
+  access->progress.parts[LatencyPart::hit] += lookup_time(access->request);
+  access->accounted += lookup_time(access->request);
   if (access->piece.length == 0)
     begin(*access);
   else
@@ -110,7 +110,7 @@ void CoherentCache::Arbitrated::look_up(Access* access) {
 void CoherentCache::Arbitrated::begin(Access& access) {
   tlm::tlm_generic_payload& payload = *access.payload;
   payload.set_dmi_allowed(false);
-  switch (cache_.request_of(payload)) {
+  switch (access.request) {
     case Request::nothing:
       complete(access);
       return;
@@ -122,23 +122,9 @@ void CoherentCache::Arbitrated::begin(Access& access) {
       access.progress.status = tlm::TLM_ADDRESS_ERROR_RESPONSE;
       complete(access);
       return;
-    case Request::uncached: {
-      if (unused_uncached_.empty()) {
-        uncached_.push_back(std::make_unique<Uncached>());
-        uncached_.back()->what = Job::What::uncached;
-        uncached_.back()->requester = cache_.port_;
-        unused_uncached_.push_back(uncached_.back().get());
-      }
-      Uncached& job = *unused_uncached_.back();
-      unused_uncached_.pop_back();
-      job.access = &access;
-      job.kind = payload.is_write() ? BusKind::io_write : BusKind::io_read;
-      job.line = payload.get_address();
-      job.io = &payload;
-      end_request(access);
-      cache_.bus_socket->request(job);
+    case Request::uncached:
+      begin_uncached(access);
       return;
-    }
     case Request::cached:
       access.pieces = Pieces(payload, cache_.store_.line_bytes());
       if (access.pieces.next(access.piece))
@@ -146,6 +132,44 @@ void CoherentCache::Arbitrated::begin(Access& access) {
       else
         complete(access);
   }
+}
+
+void CoherentCache::Arbitrated::begin_uncached(Access& access) {
+  if (unused_uncached_.empty()) {
+    uncached_.push_back(std::make_unique<Uncached>());
+    uncached_.back()->what = Job::What::uncached;
+    uncached_.back()->requester = cache_.port_;
+    unused_uncached_.push_back(uncached_.back().get());
+  }
+  Uncached& job = *unused_uncached_.back();
+  unused_uncached_.pop_back();
+  job.access = &access;
+  tlm::tlm_generic_payload& payload = *access.payload;
+  job.kind = payload.is_write() ? BusKind::io_write : BusKind::io_read;
+  job.line = payload.get_address();
+  job.io = &payload;
+  if (access.blocking) {
+    job.data.resize(payload.get_data_length());
+    job.enables.resize(payload.get_byte_enable_length());
+    job.copy.set_data_ptr(job.data.data());
+    job.copy.set_byte_enable_ptr(job.enables.empty() ? nullptr : job.enables.data());
+    job.copy.deep_copy_from(payload);
+    job.io = &job.copy;
+  }
+  end_request(access);
+  cache_.bus_socket->request(job);
+}
+
+void CoherentCache::Arbitrated::finish_uncached(Uncached& job) {
+  Access& access = *job.access;
+  access.progress.parts.add(job.timeline.since(access.accounted));
+  access.progress.status = job.status;
+  if (access.blocking) {
+    if (access.payload != nullptr) access.payload->update_original_from(job.copy);
+    job.copy.free_all_extensions();
+  }
+  unused_uncached_.push_back(&job);
+  complete(access);
 }
 
 void CoherentCache::Arbitrated::next_piece(Access& access) {
@@ -157,11 +181,11 @@ void CoherentCache::Arbitrated::next_piece(Access& access) {
 
 void CoherentCache::Arbitrated::complete(Access& access) {
   access.piece.length = 0;
-  const bool ignored = access.payload != nullptr && access.payload->get_command() == tlm::TLM_IGNORE_COMMAND;
-  if (!ignored) {
-    if (access.progress.parts.total() != now_ps() - access.start) ++parts_wrong_;
+  if (access.progress.parts.total() != now_ps() - access.start) ++parts_wrong_;
+  if (access.request == Request::uncached)
+    ++(access.progress.status == tlm::TLM_OK_RESPONSE ? cache_.totals_.uncached : cache_.totals_.errors);
+  else if (access.request != Request::nothing)
     cache_.count(access.write, access.progress);
-  }
   if (access.payload != nullptr) access.payload->set_response_status(access.progress.status);
   access.done = true;
   if (!access.blocking) {
@@ -182,15 +206,24 @@ void CoherentCache::Arbitrated::send_response() {
   tlm::tlm_phase phase = tlm::BEGIN_RESP;
   sc_core::sc_time time;
   const tlm::tlm_sync_enum answer = cache_.cpu_socket->nb_transport_bw(*access.payload, phase, time);
-  if (answer == tlm::TLM_ACCEPTED || responding_ != &access) return;  // END_RESP comes, or came within the call
+  if (answer == tlm::TLM_ACCEPTED) return;  // END_RESP comes, or came within the call
+  if (responding_ != &access || response_ending_) {
+    misuse("an answer to BEGIN_RESP other than TLM_ACCEPTED after END_RESP");
+    return;
+  }
   if (answer == tlm::TLM_UPDATED && phase != tlm::END_RESP) {
     misuse("TLM_UPDATED in answer to BEGIN_RESP with a phase other than END_RESP");
     return;
   }
+  end_response(time);
+}
+
+void CoherentCache::Arbitrated::end_response(const sc_core::sc_time& time) {
+  response_ending_ = true;
   if (time == sc_core::SC_ZERO_TIME)
-    response_ended(&access);
+    response_ended(responding_);
   else
-    agenda_.at<&Arbitrated::response_ended>(now_ps() + to_ps(time), this, &access);
+    agenda_.at<&Arbitrated::response_ended>(now_ps() + to_ps(time), this, responding_);
 }
 
 void CoherentCache::Arbitrated::response_ended(Access* access) {
@@ -199,18 +232,20 @@ void CoherentCache::Arbitrated::response_ended(Access* access) {
   *place = non_blocking_.back();
   non_blocking_.pop_back();
   responding_ = nullptr;
+  response_ending_ = false;
   recycle(*access);
   if (payload.has_mm()) payload.release();
   if (responding_ == nullptr && !responses_.empty()) send_response();
 }
 
-// The access has its place: the initiator may send the next one.
+// The access has its place, in its last line: the initiator may send the next one, which cannot pass it.
 void CoherentCache::Arbitrated::end_request(Access& access) {
-  if (requesting_ != &access) return;
+  if (requesting_ != &access || !access.pieces.last()) return;
   requesting_ = nullptr;
   tlm::tlm_phase phase = tlm::END_REQ;
   sc_core::sc_time time;
-  cache_.cpu_socket->nb_transport_bw(*access.payload, phase, time);
+  if (cache_.cpu_socket->nb_transport_bw(*access.payload, phase, time) != tlm::TLM_ACCEPTED)
+    misuse("an answer to END_REQ other than TLM_ACCEPTED");
 }
 
 // ---- Lookup
@@ -248,17 +283,29 @@ bool CoherentCache::Arbitrated::admit(Access& access) {
     next_piece(access);
     return true;
   }
-  if (unused_misses_.empty() || leaving(line) != nullptr) return false;
+  for (const auto& victim : victims_)
+    if (victim->used && victim->line == line) return victim->refused && refuse(access, victim->status);
+  if (unused_misses_.empty()) return false;
   Slot* place = slot;
   if (place == nullptr && (row.bus == BusKind::read || row.bus == BusKind::read_exclusive)) {
     place = store.victim(line);
-    if (place == nullptr || (owned(*place) && free_slot() == nullptr)) return false;
+    if (place == nullptr) return false;
+    if (owned(*place) && free_slot() == nullptr)
+      return slots_lost() && refuse(access, tlm::TLM_GENERIC_ERROR_RESPONSE);
   }
   charge_wait(access);
   end_request(access);
   Miss& miss = new_miss(access, place);
   cache_.bus_socket->request(miss);
   if (slot == nullptr && place != nullptr && place->state != absent) depart(*place);  // asked for behind the fetch
+  return true;
+}
+
+// Memory's refusal of an earlier write-back stands in the way for good.
+bool CoherentCache::Arbitrated::refuse(Access& access, tlm::tlm_response_status status) {
+  charge_wait(access);
+  access.progress.status = status;
+  complete(access);
   return true;
 }
 
@@ -307,6 +354,9 @@ std::string CoherentCache::Arbitrated::waiting() const {
              : unused_misses_.empty()               ? "every miss is in use"
                                                     : "no way or write-back slot is free")
          << '\n';
+  if (responding_ != nullptr)
+    text << cache_.name() << ": a response waits for the initiator's END_RESP, " << responses_.size()
+         << " more behind it\n";
   return text.str();
 }
 

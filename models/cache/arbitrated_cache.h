@@ -23,8 +23,8 @@ class CoherentCache::Arbitrated {
  public:
   explicit Arbitrated(CoherentCache& cache);
 
-  // CPU side. block(): the access has been looked up already; waits until it is done.
-  void block(tlm::tlm_generic_payload& payload);
+  // CPU side. block(): the access has been looked up already, if it is to be; waits until it is done.
+  void block(tlm::tlm_generic_payload& payload, Request request);
   tlm::tlm_sync_enum forward(tlm::tlm_generic_payload& payload, tlm::tlm_phase& phase, sc_core::sc_time& time);
   // No earlier access to the line is under way.
   bool idle_for(std::uint64_t line) const { return waiting_.empty() && (in_use_.empty() || find_miss(line) == nullptr); }
@@ -34,6 +34,7 @@ class CoherentCache::Arbitrated {
   void effected(BusTransaction& transaction);
   void finished(BusTransaction& transaction);
   Slot* leaving(std::uint64_t line, std::uint8_t*& bytes);
+  void snooped(std::uint64_t line);  // a victim, which may have changed state
   const Slot* leaving(std::uint64_t line) const;
   // The bytes of a line that is on its way to memory (`owner`) or from it; null if it is neither.
   std::uint8_t* in_flight(std::uint64_t line, bool& owner);
@@ -54,6 +55,7 @@ class CoherentCache::Arbitrated {
     bool blocking = false;
     bool done = false;
     bool write = false;
+    Request request = Request::nothing;
     Pieces pieces;
     Piece piece;                  // the one under way
     Picoseconds start = 0;
@@ -83,16 +85,23 @@ class CoherentCache::Arbitrated {
   };
   struct Uncached : Job {
     Access* access = nullptr;
+    // Of a blocking access: its process may be killed, and the payload with it.
+    tlm::tlm_generic_payload copy;
+    std::vector<std::uint8_t> data, enables;
   };
 
   // CPU side.
-  Access& start(tlm::tlm_generic_payload& payload, bool blocking, Picoseconds when);
+  Access& start(tlm::tlm_generic_payload& payload, bool blocking, Request request, Picoseconds when);
+  Picoseconds lookup_time(Request request) const { return request == Request::cached ? cache_.hit_ps_ : 0; }
   void look_up(Access* access);
   void begin(Access& access);
+  void begin_uncached(Access& access);
+  void finish_uncached(Uncached& job);
   void next_piece(Access& access);
   void complete(Access& access);
   void recycle(Access& access);
   void send_response();
+  void end_response(const sc_core::sc_time& time);
   void response_ended(Access* access);
   void end_request(Access& access);
   tlm::tlm_sync_enum misuse(const std::string& what) const;
@@ -100,6 +109,7 @@ class CoherentCache::Arbitrated {
   // Lookup.
   void settle_in(Access& access);
   bool admit(Access& access);
+  bool refuse(Access& access, tlm::tlm_response_status status);
   void charge_wait(Access& access);
   void retry();
 
@@ -110,11 +120,13 @@ class CoherentCache::Arbitrated {
   void advance(Miss& miss);
   void release(Miss& miss);
   void miss_finished(Miss& miss);
+  void charge(Miss& miss);
   void perform(Access& access, Slot* slot, std::uint8_t* bytes);
   void start_over(Miss& miss);
 
   // Victims.
-  WriteBack* free_slot();
+  WriteBack* free_slot() const;
+  bool slots_lost() const;
   bool owned(const Slot& slot) const;
   void depart(Slot& slot);
   bool write_back_granted(WriteBack& victim);
@@ -139,6 +151,7 @@ class CoherentCache::Arbitrated {
   // nb_transport: at most one request and one response phase at a time.
   Access* requesting_ = nullptr;
   Access* responding_ = nullptr;
+  bool response_ending_ = false;                // END_RESP is there, its time to come
   std::deque<Access*> responses_;
   std::vector<const tlm::tlm_generic_payload*> non_blocking_;  // in flight
 

@@ -24,15 +24,8 @@ void CoherentCache::Arbitrated::finished(BusTransaction& transaction) {
     case Job::What::write_back:
       write_back_finished(static_cast<WriteBack&>(job));
       return;
-    case Job::What::uncached: {
-      Uncached& uncached = static_cast<Uncached&>(job);
-      Access& access = *uncached.access;
-      access.progress.parts.add(job.timeline.since(access.accounted));
-      unused_uncached_.push_back(&uncached);
-      ++(job.status == tlm::TLM_OK_RESPONSE ? cache_.totals_.uncached : cache_.totals_.errors);
-      access.progress.status = job.status;
-      complete(access);
-    }
+    case Job::What::uncached:
+      finish_uncached(static_cast<Uncached&>(job));
   }
 }
 
@@ -60,6 +53,7 @@ CoherentCache::Arbitrated::Miss& CoherentCache::Arbitrated::new_miss(Access& fir
 
 // The bus is granted: what the table says for the state the line is in now. False: the bus is not needed.
 bool CoherentCache::Arbitrated::judge(Miss& miss) {
+  charge(miss);
   while (!miss.chain.empty() && miss.chain.front()->payload == nullptr) {  // nobody waits for it any more
     Access& access = *miss.chain.front();
     miss.chain.pop_front();
@@ -76,8 +70,6 @@ bool CoherentCache::Arbitrated::judge(Miss& miss) {
   const Row& row = cache_.table_->row(miss.judged, event, false);
   if (!row.defined) cache_.no_row(miss.judged, event, miss.line);
   if (!row.uses_bus) {
-    access.progress.parts.add(miss.timeline.since(access.accounted));
-    access.accounted = now_ps();
     cache_.set_state(*slot, miss.line, row.next);
     perform(access, slot, cache_.store_.bytes(*slot));
     miss.performed = true;
@@ -113,19 +105,28 @@ void CoherentCache::Arbitrated::effected(BusTransaction& transaction) {
   miss.performed = true;
   if (miss.kind == BusKind::write_through) {  // the requester's own copy takes what memory and the others took
     access.piece.data = const_cast<std::uint8_t*>(miss.word);
+    if (slot != nullptr && slot->state != absent) cache_.store_.touch(*slot);
     cache_.perform(access.piece, bytes);
   } else {
     perform(access, slot, bytes);
   }
 }
 
-void CoherentCache::Arbitrated::miss_finished(Miss& miss) {
-  const AccessKind kind = kind_of(miss);
-  const bool fetched = miss.kind == BusKind::read || miss.kind == BusKind::read_exclusive;
+// Every access has waited for what the transaction's time went into since it joined.
+void CoherentCache::Arbitrated::charge(Miss& miss) {
   for (Access* access : miss.chain) {
     access->progress.parts.add(miss.timeline.since(access->accounted));
     access->accounted = now_ps();
+  }
+}
+
+void CoherentCache::Arbitrated::miss_finished(Miss& miss) {
+  const AccessKind kind = kind_of(miss);
+  const bool fetched = miss.kind == BusKind::read || miss.kind == BusKind::read_exclusive;
+  charge(miss);
+  for (Access* access : miss.chain) {
     if (fetched || access == miss.chain.front()) access->progress.kind = std::max(access->progress.kind, kind);
+    if (fetched) access->progress.hit = false;
   }
   if (miss.status != tlm::TLM_OK_RESPONSE) {
     miss.chain.front()->progress.status = miss.status;
@@ -136,7 +137,6 @@ void CoherentCache::Arbitrated::miss_finished(Miss& miss) {
 
 // The first access is done, if it has been performed; the next ones follow as far as they need no bus.
 void CoherentCache::Arbitrated::advance(Miss& miss) {
-  const Picoseconds now = now_ps();
   for (;;) {
     if (miss.performed) {
       miss.performed = false;
@@ -158,8 +158,6 @@ void CoherentCache::Arbitrated::advance(Miss& miss) {
       return;
     }
     if (row.uses_bus || slot == nullptr) break;
-    access.progress.parts.add(miss.timeline.since(access.accounted));  // joined after the last transaction began
-    access.accounted = now;
     cache_.set_state(*slot, miss.line, row.next);
     perform(access, slot, cache_.store_.bytes(*slot));
     miss.performed = true;
@@ -191,10 +189,25 @@ bool CoherentCache::Arbitrated::owned(const Slot& slot) const {
   return slot.state != absent && cache_.table_->row(slot.state, Event::replace, false).uses_bus;
 }
 
-CoherentCache::Arbitrated::WriteBack* CoherentCache::Arbitrated::free_slot() {
+CoherentCache::Arbitrated::WriteBack* CoherentCache::Arbitrated::free_slot() const {
   for (const auto& victim : victims_)
     if (!victim->used) return victim.get();
   return nullptr;
+}
+
+// Memory has refused what is in every slot: none will become free by itself.
+bool CoherentCache::Arbitrated::slots_lost() const {
+  return std::all_of(victims_.begin(), victims_.end(),
+                     [](const auto& victim) { return victim->used && victim->refused; });
+}
+
+// A refused victim that another cache has come to own, or has overwritten, is rid of.
+void CoherentCache::Arbitrated::snooped(std::uint64_t line) {
+  for (const auto& victim : victims_) {
+    if (!victim->used || victim->line != line || !victim->refused || owned(victim->slot)) continue;
+    cache_.set_state(victim->slot, line, absent);
+    release(*victim);
+  }
 }
 
 Slot* CoherentCache::Arbitrated::leaving(std::uint64_t line, std::uint8_t*& bytes) {
@@ -299,7 +312,9 @@ void CoherentCache::Arbitrated::replace(std::uint64_t line) {
   for (;; wait_for_change()) {
     Slot* const slot = cache_.store_.find(line);
     if (find_miss(line) == nullptr && slot == nullptr) return;
-    if (find_miss(line) != nullptr || (owned(*slot) && free_slot() == nullptr)) continue;
+    if (find_miss(line) != nullptr) continue;
+    if (owned(*slot) && slots_lost()) return;
+    if (owned(*slot) && free_slot() == nullptr) continue;
     depart(*slot);
     return;
   }
@@ -310,13 +325,13 @@ std::uint64_t CoherentCache::Arbitrated::flush(sc_core::sc_time& delay) {
   delay = sc_core::SC_ZERO_TIME;
   for (std::size_t i = 0; i < cache_.store_.slots().size(); ++i)
     if (const Slot& slot = cache_.store_.slots()[i]; slot.pinned || slot.state != absent) {
-      while (slot.pinned || (owned(slot) && free_slot() == nullptr)) wait_for_change();
-      if (slot.state != absent) depart(cache_.store_.slots()[i]);
+      while (slot.pinned || (owned(slot) && free_slot() == nullptr && !slots_lost())) wait_for_change();
+      if (slot.state != absent && !(owned(slot) && slots_lost())) depart(cache_.store_.slots()[i]);
     }
   while (std::any_of(victims_.begin(), victims_.end(),
                      [](const auto& victim) { return victim->used && !victim->refused; }))
     wait_for_change();
-  return owned_victims();
+  return cache_.owned_lines();
 }
 
 }  // namespace earshot

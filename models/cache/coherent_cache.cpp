@@ -124,11 +124,13 @@ inline bool CoherentCache::hit_quickly(tlm::tlm_generic_payload& payload) {
 
 void CoherentCache::b_transport(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay) {
   if (arbitrated_ != nullptr) {
-    if (const sc_core::sc_time looked_up = delay + hit_time_; looked_up != sc_core::SC_ZERO_TIME)
-      sc_core::wait(looked_up);
+    const Request request = request_of(payload);
+    if (request == Request::cached) delay += hit_time_;
+    if (delay != sc_core::SC_ZERO_TIME) sc_core::wait(delay);
     delay = sc_core::SC_ZERO_TIME;
-    if (!arbitrated_->idle_for(store_.line_of(payload.get_address())) || !hit_quickly(payload))
-      arbitrated_->block(payload);
+    if (request != Request::cached || !arbitrated_->idle_for(store_.line_of(payload.get_address())) ||
+        !hit_quickly(payload))
+      arbitrated_->block(payload, request);
   } else if (hit_quickly(payload)) {
     delay += hit_time_;
   } else {
@@ -247,6 +249,7 @@ bool CoherentCache::commit(const BusTransaction& transaction) {
   if (row.take)
     copy_enabled(bytes + transaction.offset, transaction.word, transaction.length, transaction.byte_enable);
   set_state(*slot, transaction.line, row.next);
+  if (arbitrated_ != nullptr) arbitrated_->snooped(transaction.line);
   return slot->state != absent;
 }
 

@@ -28,6 +28,7 @@ class Pieces {
   Pieces(const tlm::tlm_generic_payload& payload, unsigned line_bytes);
 
   bool next(Piece& piece);  // false: no more
+  bool last() const { return at_ >= length_; }  // after next(): nothing follows
 
  private:
   std::uint64_t address_ = 0;

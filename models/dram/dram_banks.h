@@ -40,7 +40,8 @@ class DramBanks {
   Clocks activate_from(unsigned bank) const {
     const Bank& b = banks_[bank];
     const Rank& r = ranks_[b.rank];
-    return std::max({b.activate_from, groups_[b.group].activate_from, r.activate_from, r.four_activates[r.oldest]});
+    return std::max(std::max(b.activate_from, groups_[b.group].activate_from),
+                    std::max(r.activate_from, r.four_activates[r.oldest]));
   }
   Clocks precharge_from(unsigned bank) const { return banks_[bank].precharge_from; }
   Clocks column_from(unsigned bank, bool write) const {
@@ -49,8 +50,8 @@ class DramBanks {
     const Rank& r = ranks_[b.rank];
     const Clocks bus = data_end_ + (b.rank == data_rank_ ? 0 : grade_.rank_switch);
     const Clocks latency = write ? grade_.cwl : grade_.cl;
-    return write ? std::max({b.column_from, g.write_from, r.write_from, bus > latency ? bus - latency : 0})
-                 : std::max({b.column_from, g.read_from, r.read_from, bus > latency ? bus - latency : 0});
+    const Clocks same_rank = write ? std::max(g.write_from, r.write_from) : std::max(g.read_from, r.read_from);
+    return std::max(std::max(b.column_from, same_rank), bus > latency ? bus - latency : 0);
   }
   Clocks precharge_all_from(unsigned rank) const;
   Clocks refresh_from(unsigned rank) const;

@@ -133,12 +133,17 @@ class DramChannel {
   BurstQueue& queue_to_serve();
   Slot oldest_free(const BurstQueue& queue) const;
   Choice next_command(BurstQueue& queue, Slot slot) const;
+  Priority priority_of(bool column, bool activate) const {
+    if (column) return config_.row_first ? third_kind : first_kind;
+    return activate || !config_.row_first ? second_kind : first_kind;
+  }
+  bool goes_first(Clocks clock, unsigned priority, std::uint64_t order) const {
+    if (clock != choice_.clock) return clock < choice_.clock;
+    if (priority != choice_.priority) return priority < choice_.priority;
+    return order < choice_.order;
+  }
   void consider(const Choice& choice) {
-    if (choice.clock > choice_.clock) return;
-    if (choice.clock == choice_.clock &&
-        (choice.priority > choice_.priority || (choice.priority == choice_.priority && choice.order > choice_.order)))
-      return;
-    choice_ = choice;
+    if (goes_first(choice.clock, choice.priority, choice.order)) choice_ = choice;
   }
   void consider_for(unsigned bank, DramCommand command, Clocks clock, Priority priority) {
     Choice choice;

@@ -56,17 +56,15 @@ DramChannel::Choice DramChannel::next_command(BurstQueue& queue, Slot slot) cons
   choice.bank = e.bank;
   choice.queue = &queue;
   choice.slot = slot;
+  choice.priority = priority_of(row == e.row, row == DramBanks::no_row);
   if (row == e.row) {
     choice.clock = no_sooner(banks_.column_from(e.bank, queue.write()));
-    choice.priority = config_.row_first ? third_kind : first_kind;
     choice.command = queue.write() ? DramCommand::write : DramCommand::read;
   } else if (row == DramBanks::no_row) {
     choice.clock = no_sooner(banks_.activate_from(e.bank));
-    choice.priority = second_kind;
     choice.command = DramCommand::activate;
   } else {
     choice.clock = no_sooner(banks_.precharge_from(e.bank));
-    choice.priority = config_.row_first ? first_kind : second_kind;
     choice.command = DramCommand::precharge;
   }
   return choice;
@@ -105,24 +103,34 @@ void DramChannel::choose_first_ready(BurstQueue& queue) {
   // A request over age: no other column command goes, no other command to its bank, and no activation while it waits
   // for its own.
   Choice aged;
-  const Clocks oldest = queue[queue.oldest()].arrived;
-  if (cursor_ < oldest + config_.age_cap) {
-    look_again_at(oldest + config_.age_cap);
-  } else if (const Slot slot = oldest_free(queue); slot != BurstQueue::none) {
+  if (cursor_ < queue[queue.oldest()].arrived + config_.age_cap) {
+    look_again_at(queue[queue.oldest()].arrived + config_.age_cap);
+  } else if (const Slot slot = oldest_free(queue); slot == BurstQueue::none) {
+    return;
+  } else if (cursor_ < queue[slot].arrived + config_.age_cap) {
+    look_again_at(queue[slot].arrived + config_.age_cap);
+  } else {
     aged = next_command(queue, slot);
     aged.priority = over_age;
     consider(aged);
   }
+  // Here the scheduler spends its time: no Choice is made for banks whose turn it cannot be.
+  const Clocks floor = no_sooner(0);
   for (const unsigned bank : queue.banks()) {
     if (bank_states_[bank].shut == choices_) continue;
-    const Slot slot = queue.pick(bank, banks_.row(bank));
+    const std::uint64_t row = banks_.row(bank);
+    const Slot slot = queue.pick(bank, row);
     if (slot == BurstQueue::none) continue;
-    const Choice choice = next_command(queue, slot);
-    if (aged.queue != nullptr) {
-      if (bank == aged.bank || choice.command == DramCommand::read || choice.command == DramCommand::write) continue;
-      if (choice.command == DramCommand::activate && aged.command == DramCommand::activate) continue;
-    }
-    consider(choice);
+    const bool column = row == queue[slot].row;
+    const bool activate = row == DramBanks::no_row;
+    const Clocks from = column     ? banks_.column_from(bank, queue.write())
+                        : activate ? banks_.activate_from(bank)
+                                   : banks_.precharge_from(bank);
+    if (!goes_first(std::max(from, floor), priority_of(column, activate), queue[slot].order)) continue;
+    if (aged.queue != nullptr &&
+        (bank == aged.bank || column || (activate && aged.command == DramCommand::activate)))
+      continue;
+    consider(next_command(queue, slot));
   }
 }
 

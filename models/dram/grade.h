@@ -82,7 +82,7 @@ const std::vector<std::string>& builtin_grades();
 
 // A built-in grade by name, for a density and a device width the standard has, or a user's grade file by path.
 // 0 stands for the grade's usual density and width. Throws GradeError (grade_file.h) that lists every problem,
-// with file and line for a file, and the nearest name for an unknown one.
+// with file and line for a file, and the known names for an unknown one.
 Grade load_grade(const std::string& name_or_path, unsigned density_gbit = 0, unsigned device_bits = 0);
 
 }  // namespace earshot

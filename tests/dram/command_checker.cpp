@@ -3,7 +3,6 @@
 #include "dram/command_checker.h"
 
 #include <algorithm>
-#include <catch2/catch.hpp>
 #include <map>
 #include <set>
 
@@ -374,18 +373,6 @@ std::vector<Broken> broken_rules(const std::vector<CommandRecord>& log, const Gr
     for (Broken& broken : judge.take()) all.push_back(std::move(broken));
   }
   return all;
-}
-
-void require_legal(const std::vector<CommandRecord>& log, const Grade& grade, const LogRules& rules) {
-  std::string text;
-  const std::vector<Broken> broken = broken_rules(log, grade, rules);
-  for (std::size_t i = 0; i < std::min<std::size_t>(broken.size(), 10); ++i) text += broken[i].text + "\n";
-  INFO(broken.size() << " times a rule is broken in a log of " << log.size() << " commands:\n" << text);
-  REQUIRE(broken.empty());
-}
-
-void require_legal(const std::vector<CommandRecord>& log, const DramConfig& config, Clocks end) {
-  require_legal(log, config.grade, {config.ranks, config.refresh, end});
 }
 
 }  // namespace earshot

@@ -603,6 +603,50 @@ TEST_CASE("one read at a time: the estimate is the scheduler's time, to the cloc
   }
 }
 
+TEST_CASE("an address map and its inverse agree, and every burst has a place of its own", "[dram]") {
+  DramConfig config = config_of("ddr4-2400t");
+  config.grade.rows = 6;  // no power of two, and small enough to try them all
+  config.grade.page_bytes = 64;
+  config.ranks = 2;
+  config.channels = 2;
+  for (const char* map : {"row rank bank column group channel", "row:1 row column:2 bank rank channel group column"}) {
+    for (const bool hash : {false, true}) {
+      config.address_map = map;
+      config.hash_banks = hash;
+      REQUIRE(config.problems() == config.grade.problems());
+      const DramAddressMap addresses(config);
+      std::map<std::vector<std::uint64_t>, std::uint64_t> taken;
+      for (std::uint64_t burst = 0; burst < config.bytes() / config.burst_bytes(); ++burst) {
+        const DramPlace p = addresses.place(burst);
+        REQUIRE((p.channel < 2 && p.rank < 2 && p.group < 4 && p.bank < 4 && p.row < 6 && p.column < 8));
+        REQUIRE(taken.insert({{p.channel, p.rank, p.group, p.bank, p.row, p.column}, burst}).second);
+        REQUIRE(addresses.burst(p) == burst);
+      }
+    }
+  }
+}
+
+TEST_CASE("an address map is refused with what is wrong with it", "[dram]") {
+  DramConfig config = config_of("ddr4-2400t");
+  config.ranks = 2;
+  const auto problem = [&](const char* map) {
+    config.address_map = map;
+    const std::vector<std::string> all = config.problems();
+    return all.empty() ? "" : all.front().substr(all.front().find("\": ") + 3);
+  };
+  CHECK(problem("row rank bank group column") == "");  // one channel
+  CHECK(problem("row bank group column channel") == "it misses rank, of which there are 2");
+  CHECK(problem("row rank bank group column column") == "it repeats column");
+  CHECK(problem("row rank bank group column:3") == "3 bits of column instead of 7");
+  CHECK(problem("row rank bank group column:0") ==
+        "\"column:0\" has no number of bits; expected for example \"column:2\"");
+  CHECK(problem("row rank bank group colunm") ==
+        "\"colunm\" is no field; expected row, rank, bank, group, column or channel");
+  config.channels = 3;
+  CHECK(problem("row rank bank group column channel") == "3 channels are no power of two, so channel must come first");
+  CHECK(problem("channel row rank bank group column") == "");
+}
+
 TEST_CASE("what is pending is said with its head and what that waits for", "[dram]") {
   DramConfig config = config_of("ddr4-2400t");
   Channel dram(config);

@@ -313,7 +313,8 @@ TEST_CASE("A mangled grade file is understood or refused with its lines", "[dram
       }
     }
     try {
-      CHECK(parse_grade(text, "f").problems().empty());
+      const Grade grade = parse_grade(text, "f");
+      CHECK(grade.problems().empty());
     } catch (const GradeError& error) {
       ++refused;
       const std::string message = error.what();

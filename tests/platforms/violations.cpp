@@ -5,7 +5,8 @@
 // the monitor must see what the prover would have refused.
 #include <catch2/catch.hpp>
 
-#include "results.h"
+#include "played.h"
+#include "simulate.h"
 
 using namespace earshot;
 
@@ -35,9 +36,8 @@ std::string finding(const Table& table, const std::string& order) {
   hooks.failed = [] { sc_core::sc_stop(); };
   sc_core::sc_set_stop_mode(sc_core::SC_STOP_IMMEDIATE);
   Platform platform(settings, std::make_shared<const Table>(table), hooks);
-  sc_core::sc_start();
   try {
-    collect_results(settings, table, platform);
+    play(settings, platform);
   } catch (const Finding& found) {
     return found.what();
   }

@@ -13,6 +13,7 @@
 #include <tlm_utils/peq_with_get.h>
 #include <tlm_utils/simple_initiator_socket.h>
 #include <tlm_utils/simple_target_socket.h>
+#include <vector>
 
 namespace earshot {
 
@@ -213,6 +214,78 @@ class Walker : public sc_core::sc_module {
   KeptPayload payloads_[2];
   std::uint64_t left_ = 0;
   std::uint64_t address_ = 0;
+};
+
+// Keeps a memory's queue full of reads at random addresses.
+class Saturator : public sc_core::sc_module {
+ public:
+  tlm_utils::simple_initiator_socket<Saturator> socket{"socket"};
+  explicit Saturator(sc_core::sc_module_name name) : sc_module(name) {
+    socket.register_nb_transport_bw(this, &Saturator::backward);
+    for (KeptPayload& payload : payloads_) unused_.push_back(&payload);
+  }
+  void run(std::uint64_t count) {
+    left_ = count;
+    issue();
+    sc_core::sc_start();
+  }
+
+ private:
+  void issue() {
+    while (!requesting_ && left_ > 0 && !unused_.empty()) {
+      --left_;
+      KeptPayload& payload = *unused_.back();
+      unused_.pop_back();
+      random_ = random_ * 6364136223846793005u + 1442695040888963407u;
+      payload.prepare(tlm::TLM_READ_COMMAND, (random_ >> 33) % 0x40000000 / 64 * 64);
+      requesting_ = true;
+      tlm::tlm_phase phase = tlm::BEGIN_REQ;
+      sc_core::sc_time time;
+      if (socket->nb_transport_fw(payload, phase, time) == tlm::TLM_UPDATED) requesting_ = false;  // END_REQ
+    }
+  }
+  tlm::tlm_sync_enum backward(tlm::tlm_generic_payload& payload, tlm::tlm_phase& phase, sc_core::sc_time&) {
+    if (phase == tlm::END_REQ) {
+      requesting_ = false;
+      issue();
+      return tlm::TLM_ACCEPTED;
+    }
+    answered_.push_back(static_cast<KeptPayload*>(&payload));
+    if (answered_.size() > 8) {  // long after they have been let go
+      unused_.push_back(answered_.front());
+      answered_.erase(answered_.begin());
+    }
+    issue();
+    return tlm::TLM_COMPLETED;
+  }
+  KeptPayload payloads_[64];
+  std::vector<KeptPayload*> unused_, answered_;
+  bool requesting_ = false;
+  std::uint64_t left_ = 0;
+  std::uint64_t random_ = 1;
+};
+
+// One timed event of the kernel after another.
+class Ticker : public sc_core::sc_module {
+ public:
+  explicit Ticker(sc_core::sc_module_name name) : sc_module(name) {
+    SC_HAS_PROCESS(Ticker);
+    SC_METHOD(tick);
+    sensitive << event_;
+    dont_initialize();
+  }
+  void run(std::uint64_t count) {
+    left_ = count;
+    tick();
+    sc_core::sc_start();
+  }
+
+ private:
+  void tick() {
+    if (left_-- > 0) event_.notify(sc_core::sc_time::from_value(1000));
+  }
+  sc_core::sc_event event_;
+  std::uint64_t left_ = 0;
 };
 
 }  // namespace earshot

@@ -18,6 +18,7 @@
 #include "earshot/bus/snooping_bus.h"
 #include "earshot/cache/invalidating_cache.h"
 #include "earshot/cache/updating_cache.h"
+#include "earshot/dram/dram_controller.h"
 #include "earshot/dram/plain_memory.h"
 #include "four_phases.h"
 #include "platform.h"
@@ -150,6 +151,12 @@ struct ArbitratedMachine {
   Walker walker{"walker"};
 };
 
+DramConfig dram_config() {
+  DramConfig config;
+  config.grade = load_grade("ddr4-2400t");
+  return config;
+}
+
 // Fork a child that replays the recording once; returns the seconds its simulation took.
 double replay_seconds(const Settings& settings) {
   int ends[2];
@@ -245,6 +252,10 @@ int sc_main(int argc, char* argv[]) {
   WaitingTarget waiting_target("waiting_target");
   waiting_initiator.socket.bind(waiting_target.target_socket);
   ArbitratedMachine arbitrated;
+  Ticker ticker("ticker");
+  DramController dram("dram", dram_config());
+  Saturator saturator("saturator");
+  saturator.socket.bind(dram.target_socket);
   sc_core::sc_start(sc_core::SC_ZERO_TIME);
 
   const auto add = [](const char* name, auto body) {
@@ -291,6 +302,12 @@ int sc_main(int argc, char* argv[]) {
   add("arbitrated_miss", [&](benchmark::State& state) {
     for (auto _ : state) arbitrated.walker.run(batch);
   });
+  add("timed_event", [&](benchmark::State& state) {
+    for (auto _ : state) ticker.run(batch);
+  });
+  add("dram_random_rows", [&](benchmark::State& state) {
+    for (auto _ : state) saturator.run(batch);
+  });
 
   benchmark::Initialize(&argc, argv);
   Ratios ratios;
@@ -301,6 +318,7 @@ int sc_main(int argc, char* argv[]) {
   ratios.print("bus transaction (update of another copy) / read hit", "bus_update", "read_hit", 25);
   ratios.print("arbitrated miss / bare four phases, queues read by processes", "arbitrated_miss", "four_phases_waiting",
                1.5);
+  ratios.print("DRAM request, random rows, saturated / timed event", "dram_random_rows", "timed_event", 12);
   std::printf("  %-64s %5.2f  (for comparison)\n", "arbitrated miss / bare four phases, queues that call back",
               ratios.times.at("arbitrated_miss") / ratios.times.at("four_phases"));
   ratios.print("an access to private data, 64 caches / 2 caches", "private_64_caches", "private_2_caches", 1.3);

@@ -1,16 +1,19 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// The memories that the stress puts behind the bus: PlainMemory, or a target that answers in whichever manner and
-// order the base protocol allows.
+// The memories that the stress puts behind the bus: PlainMemory; a target that answers in whichever manner and order
+// the base protocol allows; and DRAM of any grade and policy, its command log judged at the end.
 #pragma once
 
 #include <memory>
 #include <random>
+#include <stdexcept>
 #include <systemc>
 #include <tlm>
 #include <vector>
 
+#include "dram/command_checker.h"
+#include "earshot/dram/dram_controller.h"
 #include "earshot/dram/plain_memory.h"
 #include "earshot/timing/agenda.h"
 
@@ -113,24 +116,59 @@ class MoodyMemory : public sc_core::sc_module, private tlm::tlm_fw_transport_if<
 
 class StressMemory {
  public:
-  enum Kind { plain, moody };
-  static constexpr std::uint64_t kinds = 2;
+  enum Kind { plain, moody, dram };
+  static constexpr std::uint64_t kinds = 3;
 
   StressMemory(Kind kind, std::uint64_t seed) {
     if (kind == plain)
       plain_ = std::make_unique<PlainMemory>("memory", PlainMemoryConfig{});
-    else
+    else if (kind == moody)
       moody_ = std::make_unique<MoodyMemory>("memory", seed);
+    else
+      dram_ = std::make_unique<DramController>("memory", dram_config(seed));
   }
-  tlm::tlm_target_socket<>& socket() { return plain_ ? plain_->target_socket : moody_->target_socket; }
+  tlm::tlm_target_socket<>& socket() {
+    return plain_ ? plain_->target_socket : moody_ ? moody_->target_socket : dram_->target_socket;
+  }
   void peek(std::uint64_t address, std::uint8_t* to, std::size_t length) const {
-    plain_ ? plain_->peek(address, to, length) : moody_->peek(address, to, length);
+    plain_ ? plain_->peek(address, to, length) : moody_ ? moody_->peek(address, to, length) : dram_->peek(address, to, length);
   }
-  void check() const {}
+  // Throws what is wrong with the DRAM's run.
+  void check() {
+    if (!dram_) return;
+    for (const std::string& law : dram_->broken_laws()) throw std::runtime_error(law);
+    for (const std::string& queue : dram_->pending()) throw std::runtime_error("left in the DRAM: " + queue);
+    const DramConfig& config = dram_->config();
+    for (unsigned channel = 0; channel < config.channels; ++channel)
+      for (const Broken& rule : broken_rules(dram_->commands(channel), config.grade, {config.ranks, config.refresh, 0}))
+        throw std::runtime_error("the command log breaks " + rule.rule + ": " + rule.text);
+  }
+
+  static DramConfig dram_config(std::uint64_t seed) {
+    std::mt19937_64 random(seed);
+    const auto draw = [&](std::uint64_t below) { return static_cast<unsigned>(random() % below); };
+    DramConfig config;
+    config.grade = load_grade(builtin_grades()[draw(builtin_grades().size())]);
+    config.channels = 1u << draw(2);
+    config.ranks = 1u << draw(2);
+    config.scheduling = draw(2) == 0 ? DramScheduling::first_come : DramScheduling::first_ready;
+    config.age_cap = 50 + draw(2000);
+    config.read_queue = 1 + draw(6);
+    config.write_queue = 2 + draw(6);
+    config.write_high = 1 + draw(config.write_queue);
+    config.write_low = draw(config.write_high);
+    config.rows = static_cast<DramRows>(draw(3));
+    config.idle_timeout = 1 + draw(300);
+    config.hash_banks = draw(2) == 0;
+    config.refresh = config.grade.trfc_bank > 0 && draw(2) == 0 ? DramRefresh::per_bank : DramRefresh::all_bank;
+    config.log_commands = true;
+    return config;
+  }
 
  private:
   std::unique_ptr<PlainMemory> plain_;
   std::unique_ptr<MoodyMemory> moody_;
+  std::unique_ptr<DramController> dram_;
 };
 
 }  // namespace earshot::test
