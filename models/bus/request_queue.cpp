@@ -10,8 +10,17 @@ void RequestQueue::push(const Request& request) {
   const auto port = static_cast<std::size_t>(request.transaction->requester);
   if (port >= ports_.size()) ports_.resize(port + 1);
   ports_[port].push_back(request);
+  if (request.transaction->follows_up) follow_ups_.push_back(request.transaction);
   asking_ |= std::uint64_t{1} << port;
   ++size_;
+}
+
+bool RequestQueue::held_up(const Request& request) const {
+  const BusTransaction& transaction = *request.transaction;
+  if (transaction.io != nullptr) return (uncached_ >> transaction.requester & 1) != 0;
+  for (const BusTransaction* const other : follow_ups_)
+    if (other->line == transaction.line && other != &transaction) return true;
+  return locked(transaction.line);
 }
 
 std::size_t RequestQueue::oldest(std::size_t port, Picoseconds now) const {
@@ -40,6 +49,8 @@ RequestQueue::Request RequestQueue::take(std::size_t index) {
   const auto place = requests.begin() + static_cast<std::ptrdiff_t>(places_[index]);
   const Request request = *place;
   requests.erase(place);
+  if (request.transaction->follows_up)
+    follow_ups_.erase(std::find(follow_ups_.begin(), follow_ups_.end(), request.transaction));
   if (requests.empty()) asking_ &= ~(std::uint64_t{1} << port);
   --size_;
   return request;

@@ -47,16 +47,14 @@ class RequestQueue {
   }
 
  private:
-  bool held_up(const Request& request) const {
-    const BusTransaction& transaction = *request.transaction;
-    return transaction.io == nullptr ? locked(transaction.line) : (uncached_ >> transaction.requester & 1) != 0;
-  }
+  bool held_up(const Request& request) const;
   std::size_t oldest(std::size_t port, Picoseconds now) const;
 
   std::vector<std::vector<Request>> ports_;  // each in the order of asking
   std::uint64_t asking_ = 0;                 // one bit for a port that has requests
   std::size_t size_ = 0;
   std::vector<std::uint64_t> locked_;        // lines
+  std::vector<const BusTransaction*> follow_ups_;  // asked for: their lines are theirs
   std::uint64_t uncached_ = 0;               // one bit for a port with an uncached access under way
   std::vector<Contender> contenders_;
   std::vector<std::size_t> places_;          // of the contenders, in their ports

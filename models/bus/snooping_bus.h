@@ -17,7 +17,8 @@
 // Timing arbitrated: requests queue and an arbiter grants them by event; at most `outstanding` transactions are under
 // way, at most one for a line: later ones for it wait. The data bus serves whoever has data first. A request is judged
 // at its grant, in the state the line is in then. Targets are called with nb_transport; one is told of a fetch at the
-// grant, for the instant at which the snoop ends. If memory refuses a line, other caches may have lost clean copies
+// grant, for the instant at which the snoop ends. A line that memory takes from its owner's answer stays one transaction's
+// until memory has it. If memory refuses a line, other caches may have lost clean copies
 // of it. If nothing completes for stall_cycles while something is outstanding, SC_REPORT_ERROR "/earshot/bus/stall"
 // lists every queue, its head and what that waits for. (So a sc_start() without an end runs up to stall_cycles past
 // the last transaction; 0 switches the watch off.) A line that memory let be read but refuses to take from its owner's

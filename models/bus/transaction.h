@@ -39,6 +39,9 @@ struct BusTransaction {
   std::uint32_t length = 0;
   const std::uint8_t* word = nullptr;          // those bytes
   const std::uint8_t* byte_enable = nullptr;   // null, or one flag a byte: TLM_BYTE_ENABLED or not
+  // Arbitrated only: the access's second transaction, asked for before the first one of the line is settled. No other
+  // requester's transaction for the line comes between: else two could take the line from each other for ever.
+  bool follows_up = false;
   tlm::tlm_generic_payload* io = nullptr;      // io_read, io_write (arbitrated only): what is passed on
 
   // Set by the bus.

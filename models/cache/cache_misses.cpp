@@ -45,6 +45,7 @@ CoherentCache::Arbitrated::Miss& CoherentCache::Arbitrated::new_miss(Access& fir
   miss.place = place;
   if (place != nullptr) place->pinned = true;
   miss.performed = false;
+  miss.follows_up = false;
   miss.since = now_ps();
   miss.chain.push_back(&first);
   miss_meter_.enter(miss.since);
@@ -137,11 +138,13 @@ void CoherentCache::Arbitrated::miss_finished(Miss& miss) {
 
 // The first access is done, if it has been performed; the next ones follow as far as they need no bus.
 void CoherentCache::Arbitrated::advance(Miss& miss) {
+  miss.follows_up = !miss.performed;
   for (;;) {
     if (miss.performed) {
       miss.performed = false;
       Access& access = *miss.chain.front();
       miss.chain.pop_front();
+      miss.follows_up = false;
       next_piece(access);
     }
     if (miss.chain.empty()) {

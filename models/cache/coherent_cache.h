@@ -106,7 +106,7 @@ class CoherentCache : public sc_core::sc_module,
   // waits for a free write-back slot, not for the write-back.
   tlm::tlm_response_status replace(std::uint64_t address, const sc_core::sc_time& delay);
   // Writes back and gives up every line, one after another from `delay` on, to which it adds the time that takes;
-  // arbitrated, it waits until all is done. Callable as replace() is. Returns how many owned lines memory refused:
+  // arbitrated, it waits until all is done, for which the processor must be quiet. Callable as replace() is. Returns how many owned lines memory refused:
   // those stay.
   std::uint64_t flush(sc_core::sc_time& delay);
   // The number of lines this cache owns, that is, which memory may not have.
