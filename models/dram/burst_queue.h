@@ -1,8 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// A BurstQueue holds the bursts of one direction that wait for a channel: in order of arrival, and by bank. An entry
-// keeps its slot until it is removed. Kernel-free.
+// A BurstQueue holds the bursts of one direction that wait for a channel: in order of arrival, and by bank.
+// An entry keeps its slot until it is removed. Kernel-free.
 #pragma once
 
 #include <cstdint>
@@ -19,13 +19,14 @@ class BurstQueue {
   static constexpr Slot none = 0xffff;
   static constexpr unsigned longest = 4096;
 
-  enum class Found : std::uint8_t { nothing_yet, hit, closed, conflict };  // when its first command was issued
+  // What a burst found when its first command was issued.
+  enum class Found : std::uint8_t { nothing_yet, hit, closed, conflict };
   struct Entry {
     std::uint64_t row = 0, order = 0;
     Clocks arrived = 0, started = 0;
     unsigned id = 0;
     unsigned column = 0;
-    unsigned bank = 0;  // of the channel
+    unsigned bank = 0;                  // of the channel
     std::uint16_t first = 0, last = 0;  // [first, last): bytes
     std::uint16_t older_reads = 0;  // a write: queued reads of its burst that must go before it; it is held
     Found found = Found::nothing_yet;
@@ -57,7 +58,8 @@ class BurstQueue {
   unsigned count(std::uint64_t number) const;
 
   const std::vector<unsigned>& banks() const { return banks_; }  // those with bursts
-  // The burst that a bank should serve: the oldest that hits the open row, else the oldest; held ones do not count.
+  // The burst that a bank should serve: the oldest that hits the open row, else the oldest; held ones do not
+  // count.
   Slot pick(unsigned bank, std::uint64_t open_row) {
     Bank& b = by_bank_[bank];
     if (!b.pick_known) choose_pick(b, open_row);

@@ -16,7 +16,9 @@ unsigned bits_for(std::uint64_t values) {
   return bits;
 }
 
-bool power_of_two(std::uint64_t value) { return value != 0 && (value & (value - 1)) == 0; }
+bool power_of_two(std::uint64_t value) {
+  return value != 0 && (value & (value - 1)) == 0;
+}
 
 constexpr unsigned the_rest = ~0u;
 
@@ -27,7 +29,8 @@ bool read_bits(std::string& word, unsigned& bits) {
   if (colon == std::string::npos) return true;
   const std::string number = word.substr(colon + 1);
   word.resize(colon);
-  if (number.empty() || number.size() > 2 || number.find_first_not_of("0123456789") != std::string::npos) return false;
+  if (number.empty() || number.size() > 2 || number.find_first_not_of("0123456789") != std::string::npos)
+    return false;
   bits = static_cast<unsigned>(std::stoul(number));
   return bits > 0;
 }
@@ -35,8 +38,8 @@ bool read_bits(std::string& word, unsigned& bits) {
 }  // namespace
 
 std::array<std::uint64_t, DramAddressMap::fields> DramAddressMap::sizes(const DramConfig& config) {
-  return {config.channels, config.ranks, config.grade.bank_groups, config.grade.banks_per_group, config.grade.rows,
-          config.columns()};
+  return {config.channels,   config.ranks,    config.grade.bank_groups, config.grade.banks_per_group,
+          config.grade.rows, config.columns()};
 }
 
 std::vector<DramAddressMap::Piece> DramAddressMap::parse(const DramConfig& config,
@@ -78,7 +81,8 @@ std::vector<DramAddressMap::Piece> DramAddressMap::parse(const DramConfig& confi
     else if (given > needed || (rests == 0 && given < needed))
       complain(std::to_string(given) + " bits of " + name + " instead of " + std::to_string(needed));
     if (!power_of_two(size[f]) && (pieces.empty() || pieces.front().field != f))
-      complain(std::to_string(size[f]) + " " + name + "s are no power of two, so " + name + " must come first");
+      complain(std::to_string(size[f]) + " " + name + "s are no power of two, so " + name +
+               " must come first");
 
     unsigned filled = 0;
     for (auto piece = pieces.rbegin(); piece != pieces.rend(); ++piece) {
@@ -101,7 +105,8 @@ std::vector<DramAddressMap::Piece> DramAddressMap::parse(const DramConfig& confi
 std::vector<std::string> DramAddressMap::problems(const DramConfig& config) {
   std::vector<std::string> problems;
   parse(config, problems);
-  if (config.hash_banks && !(power_of_two(config.grade.bank_groups) && power_of_two(config.grade.banks_per_group)))
+  if (config.hash_banks &&
+      !(power_of_two(config.grade.bank_groups) && power_of_two(config.grade.banks_per_group)))
     problems.push_back("bank hashing: needs powers of two of banks and groups");
   return problems;
 }
@@ -113,8 +118,9 @@ DramAddressMap::DramAddressMap(const DramConfig& config)
       group_mask_(config.grade.bank_groups - 1) {
   std::vector<std::string> none;
   pieces_ = parse(config, none);
-  pieces_.erase(std::remove_if(pieces_.begin(), pieces_.end(), [](const Piece& piece) { return piece.bits == 0; }),
-                pieces_.end());
+  pieces_.erase(
+      std::remove_if(pieces_.begin(), pieces_.end(), [](const Piece& piece) { return piece.bits == 0; }),
+      pieces_.end());
 }
 
 // Its own inverse, since it leaves the row alone.
@@ -127,10 +133,14 @@ void DramAddressMap::hash(DramPlace& place) const {
 DramPlace DramAddressMap::place(std::uint64_t burst) const {
   std::array<std::uint64_t, fields> value{};
   for (const Piece& piece : pieces_)
-    value[piece.field] |= (burst >> piece.in_burst & ((std::uint64_t{1} << piece.bits) - 1)) << piece.in_field;
-  DramPlace place{static_cast<unsigned>(value[channel]), static_cast<unsigned>(value[rank]),
-                  static_cast<unsigned>(value[group]),   static_cast<unsigned>(value[bank]),
-                  value[row],                            value[column]};
+    value[piece.field] |= (burst >> piece.in_burst & ((std::uint64_t{1} << piece.bits) - 1))
+                          << piece.in_field;
+  DramPlace place{static_cast<unsigned>(value[channel]),
+                  static_cast<unsigned>(value[rank]),
+                  static_cast<unsigned>(value[group]),
+                  static_cast<unsigned>(value[bank]),
+                  value[row],
+                  value[column]};
   hash(place);
   return place;
 }
@@ -142,7 +152,8 @@ std::uint64_t DramAddressMap::burst(const DramPlace& place) const {
                                                 plain.bank,    plain.row,  plain.column};
   std::uint64_t burst = 0;
   for (const Piece& piece : pieces_)
-    burst |= (value[piece.field] >> piece.in_field & ((std::uint64_t{1} << piece.bits) - 1)) << piece.in_burst;
+    burst |= (value[piece.field] >> piece.in_field & ((std::uint64_t{1} << piece.bits) - 1))
+             << piece.in_burst;
   return burst;
 }
 

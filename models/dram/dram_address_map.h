@@ -1,19 +1,20 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// A DramAddressMap says where in the channels, ranks, banks, rows and columns an address is, and back. It is given
-// as the order of the fields in the address, most significant first:
+// A DramAddressMap says where in the channels, ranks, banks, rows and columns an address is, and back. It is
+// given as the order of the fields in the address, most significant first:
 //
-//     row rank bank column group channel     consecutive bursts go to other channels, then to other bank groups
-//     row rank bank group column channel     a whole row before the next bank
-//     row bank column rank group column:2    split: the two lowest bits of the column at the bottom
+//     row rank bank column group channel    consecutive bursts go to other channels, then other groups
+//     row rank bank group column channel    a whole row before the next bank
+//     row bank column rank group column:2   split: the column's two lowest bits are at the bottom
 //
-// Below the fields are the bytes of a burst. A word takes all bits of its field, or those not given to other pieces
-// of it; `word:n` takes n of them, and lower pieces hold lower bits. A field with only one value may be left out.
-// A number that is no power of two (of rows, or channels) must come first. The map is one to one.
+// Below the fields are the bytes of a burst. A word takes all bits of its field, or those not given to other
+// pieces of it; `word:n` takes n of them, and lower pieces hold lower bits. A field with only one value may
+// be left out. A number that is no power of two (of rows, or channels) must come first. The map is one to
+// one.
 //
-// Bank hashing replaces the bank by its exclusive or with the lowest bits of the row, and the group by that with
-// the bits above them: rows that lie a power of two apart then fall into different banks. Kernel-free.
+// Bank hashing replaces the bank by its exclusive or with the lowest bits of the row, and the group by that
+// with the bits above them: rows that lie a power of two apart then fall into different banks. Kernel-free.
 #pragma once
 
 #include <array>

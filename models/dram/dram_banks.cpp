@@ -5,7 +5,9 @@
 namespace earshot {
 
 namespace {
-void not_before(Clocks& from, Clocks clock) { from = std::max(from, clock); }
+void not_before(Clocks& from, Clocks clock) {
+  from = std::max(from, clock);
+}
 }  // namespace
 
 DramBanks::DramBanks(const Grade& grade, unsigned ranks)
@@ -22,7 +24,8 @@ DramBanks::DramBanks(const Grade& grade, unsigned ranks)
 Clocks DramBanks::active(unsigned rank, Clocks now) const {
   const Rank& r = ranks_[rank];
   // Auto-precharge closes in the future: both times may lie after `now`.
-  if (r.open > 0) return now >= r.active_since ? r.active + (now - r.active_since) : r.active - (r.active_since - now);
+  if (r.open > 0)
+    return now >= r.active_since ? r.active + (now - r.active_since) : r.active - (r.active_since - now);
   return r.active - (r.active_until > now ? r.active_until - now : 0);
 }
 
@@ -69,7 +72,9 @@ void DramBanks::close(Bank& bank, Clocks at, Clocks trp) {
   if (--r.open == 0 && r.active_until > r.active_since) r.active += r.active_until - r.active_since;
 }
 
-void DramBanks::precharge(unsigned bank, Clocks now) { close(banks_[bank], now, grade_.trp); }
+void DramBanks::precharge(unsigned bank, Clocks now) {
+  close(banks_[bank], now, grade_.trp);
+}
 
 void DramBanks::precharge_all(unsigned rank, Clocks now) {
   for (unsigned b = rank * grade_.banks(); b < (rank + 1) * grade_.banks(); ++b) {

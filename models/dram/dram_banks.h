@@ -1,10 +1,10 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// DramBanks is the state of all banks of one channel and the earliest clock at which each command may be given to
-// them: every constraint between commands of a bank, a bank group, a rank and the data bus (JESD79-3, -4, -5,
-// JESD209-4). It does not choose; that is DramChannel's work. Banks are numbered rank by rank, group by group.
-// Clocks given to commands never decrease. Kernel-free.
+// DramBanks is the state of all banks of one channel and the earliest clock at which each command may be
+// given to them: every constraint between commands of a bank, a bank group, a rank and the data bus
+// (JESD79-3, -4, -5, JESD209-4). It does not choose; that is DramChannel's work. Banks are numbered rank by
+// rank, group by group. Clocks given to commands never decrease. Kernel-free.
 #pragma once
 
 #include <algorithm>
@@ -35,8 +35,8 @@ class DramBanks {
   unsigned open_banks(unsigned rank) const { return ranks_[rank].open; }
   Clocks active(unsigned rank, Clocks now) const;  // clocks before `now` during which a row was open
 
-  // The earliest clock that violates nothing. REQUIRES: the bank is open, respectively precharged, as the command
-  // wants it.
+  // The earliest clock that violates nothing. REQUIRES: the bank is open, respectively precharged, as the
+  // command wants it.
   Clocks activate_from(unsigned bank) const {
     const Bank& b = banks_[bank];
     const Rank& r = ranks_[b.rank];
@@ -50,7 +50,8 @@ class DramBanks {
     const Rank& r = ranks_[b.rank];
     const Clocks bus = data_end_ + (b.rank == data_rank_ ? 0 : grade_.rank_switch);
     const Clocks latency = write ? grade_.cwl : grade_.cl;
-    const Clocks same_rank = write ? std::max(g.write_from, r.write_from) : std::max(g.read_from, r.read_from);
+    const Clocks same_rank =
+        write ? std::max(g.write_from, r.write_from) : std::max(g.read_from, r.read_from);
     return std::max(std::max(b.column_from, same_rank), bus > latency ? bus - latency : 0);
   }
   Clocks precharge_all_from(unsigned rank) const;
@@ -82,8 +83,8 @@ class DramBanks {
     Clocks activate_from = 0, read_from = 0, write_from = 0, refresh_bank_from = 0;
     std::array<Clocks, 4> four_activates{};  // tFAW after the last four
     unsigned oldest = 0;
-    unsigned open = 0;                         // banks
-    Clocks active = 0;                         // before the row open now, or until `active_until`
+    unsigned open = 0;  // banks
+    Clocks active = 0;  // before the row open now, or until `active_until`
     Clocks active_since = 0, active_until = 0;
   };
   void count_activate(const Bank& bank, Clocks now);

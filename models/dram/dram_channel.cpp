@@ -32,7 +32,8 @@ DramChannel::DramChannel(const DramConfig& config, unsigned channel)
   const Clocks interval = per_bank ? grade.trefi_bank : grade.trefi;
   const std::uint64_t postponable = std::uint64_t{grade.postponable} * (per_bank ? grade.banks() : 1);
   for (unsigned r = 0; r < config.ranks; ++r)  // the ranks take turns
-    ranks_[r].debt = RefreshDebt(interval, interval - interval * r / config.ranks, postponable, refresh_warning(grade));
+    ranks_[r].debt =
+        RefreshDebt(interval, interval - interval * r / config.ranks, postponable, refresh_warning(grade));
 }
 
 void DramChannel::enqueue(const DramBurst& burst, Clocks now, std::vector<DramCompletion>& completions) {
@@ -229,7 +230,9 @@ void DramChannel::issue_column(std::vector<DramCompletion>& completions) {
   const Clocks end = banks_.column(e.bank, write, close, now);
 
   ++(write ? counts_.write_bursts : counts_.read_bursts);
-  ++(e.found == Found::hit ? counts_.row_hits : e.found == Found::closed ? counts_.row_closed : counts_.row_conflicts);
+  ++(e.found == Found::hit      ? counts_.row_hits
+     : e.found == Found::closed ? counts_.row_closed
+                                : counts_.row_conflicts);
   if (close) {
     ++counts_.precharges;
     row_changed(e.bank);
@@ -264,8 +267,8 @@ void DramChannel::pay(unsigned rank, Clocks now) {
 
 void DramChannel::log(DramCommand command, unsigned bank, std::uint64_t row, std::uint64_t column) {
   if (!config_.log_commands) return;
-  log_.push_back({cursor_, command, channel_, banks_.rank_of(bank), banks_.group_of(bank), banks_.place_in_group(bank),
-                  row, column});
+  log_.push_back({cursor_, command, channel_, banks_.rank_of(bank), banks_.group_of(bank),
+                  banks_.place_in_group(bank), row, column});
 }
 
 const std::vector<CommandRecord>& DramChannel::commands(Clocks now) {
@@ -296,7 +299,8 @@ std::vector<std::string> DramChannel::broken_laws(Clocks now) const {
   little(reads_, "read");
   little(writes_, "write");
   if (beats_ != 2 * counts_.data_bus_busy)
-    broken.push_back(where + std::to_string(beats_) + " beats, two each clock, but the data bus was busy for " +
+    broken.push_back(where + std::to_string(beats_) +
+                     " beats, two each clock, but the data bus was busy for " +
                      std::to_string(counts_.data_bus_busy) + " clocks");
   return broken;
 }
@@ -305,9 +309,9 @@ std::string DramChannel::describe(BurstQueue& queue) {
   const Entry& e = queue[queue.oldest()];
   std::ostringstream text;
   text << "channel " << channel_ << ", " << (queue.write() ? "write" : "read") << " queue: " << queue.size()
-       << " of " << queue.capacity() << " bursts; the head, rank "
-       << banks_.rank_of(e.bank) << " group " << banks_.group_of(e.bank) << " bank " << banks_.place_in_group(e.bank)
-       << " row " << e.row << " column " << e.column << ", is there since clock " << e.arrived << " and waits for ";
+       << " of " << queue.capacity() << " bursts; the head, rank " << banks_.rank_of(e.bank) << " group "
+       << banks_.group_of(e.bank) << " bank " << banks_.place_in_group(e.bank) << " row " << e.row
+       << " column " << e.column << ", is there since clock " << e.arrived << " and waits for ";
   const Choice next = next_command(queue, queue.oldest());
   if (bank_states_[e.bank].shut == choices_)
     text << "a refresh";

@@ -1,21 +1,22 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// A DramChannel is the controller of one channel: its queues of bursts, and the scheduler that turns them into
-// commands, at most one each clock and each as early as the constraints allow. Kernel-free: time is the clocks that
-// the caller gives, never decreasing from call to call.
+// A DramChannel is the controller of one channel: its queues of bursts, and the scheduler that turns them
+// into commands, at most one each clock and each as early as the constraints allow. Kernel-free: time is the
+// clocks that the caller gives, never decreasing from call to call.
 //
 // It is driven by events. After every enqueue() and advance(), call advance() when next_event() has come, or
-// sooner. With nothing queued there is no event: refreshes, and rows closed for being idle, are caught up with when
-// the next request arrives or somebody asks.
+// sooner. With nothing queued there is no event: refreshes, and rows closed for being idle, are caught up
+// with when the next request arrives or somebody asks.
 //
-// Reads and writes to one burst. The caller moves the bytes at enqueue(), in that order, so the order of arrival is
-// the order of memory; here is only time. Still the commands keep to it: a write never goes to the banks before an
-// older read of its burst. A read whose bytes are all in queued writes is served from there, one clock later.
+// Reads and writes to one burst. The caller moves the bytes at enqueue(), in that order, so the order of
+// arrival is the order of memory; here is only time. Still the commands keep to it: a write never goes to the
+// banks before an older read of its burst. A read whose bytes are all in queued writes is served from there,
+// one clock later.
 //
-// Refresh (JESD79-3 and -4: 8 may be postponed): done when due if nothing is queued for the rank (per-bank refresh:
-// for the bank), else postponed as long as the grade allows. Once it has begun, or can wait no longer, the rank (the
-// bank) takes no other commands until it is done.
+// Refresh (JESD79-3 and -4: 8 may be postponed): done when due if nothing is queued for the rank (per-bank
+// refresh: for the bank), else postponed as long as the grade allows. Once it has begun, or can wait no
+// longer, the rank (the bank) takes no other commands until it is done.
 #pragma once
 
 #include <limits>
@@ -60,8 +61,8 @@ class DramChannel {
   void enqueue(const DramBurst& burst, Clocks now, std::vector<DramCompletion>& completions);
 
   Clocks next_event();
-  // Issues every command up to and including `now`. Appends reads, whose `done` may be later than `now`, in that
-  // order.
+  // Issues every command up to and including `now`. Appends reads, whose `done` may be later than `now`, in
+  // that order.
   void advance(Clocks now, std::vector<DramCompletion>& completions);
 
   // The rest tells what has happened before `now`. REQUIRES: as for enqueue().
@@ -167,11 +168,11 @@ class DramChannel {
   std::uint64_t next_order_ = 0;
   std::uint64_t choices_ = 0;
 
-  Clocks cursor_ = 0;            // everything before has happened
+  Clocks cursor_ = 0;  // everything before has happened
   Clocks command_bus_free_ = 0;
-  bool chosen_ = false;          // the two below are valid
+  bool chosen_ = false;  // the two below are valid
   Choice choice_;
-  Clocks change_ = never;        // when another choice may be due although nothing arrives
+  Clocks change_ = never;  // when another choice may be due although nothing arrives
 
   DramCounts counts_;
   std::uint64_t beats_ = 0;

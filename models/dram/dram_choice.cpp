@@ -31,7 +31,8 @@ void DramChannel::choose_refresh() {
     const bool forced = rank.begun || cursor_ >= rank.debt.last_call();
     const bool wanted = (per_bank ? bank_states_[bank].queued : rank.queued) == 0;
     if (forced) {
-      for (unsigned b = per_bank ? bank : first; b < (per_bank ? bank + 1 : first + banks_.banks_of_rank()); ++b)
+      for (unsigned b = per_bank ? bank : first; b < (per_bank ? bank + 1 : first + banks_.banks_of_rank());
+           ++b)
         bank_states_[b].shut = choices_;
     } else if (!wanted || cursor_ < rank.debt.due()) {
       look_again_at(wanted ? rank.debt.due() : rank.debt.last_call());
@@ -72,7 +73,8 @@ DramChannel::Choice DramChannel::next_command(BurstQueue& queue, Slot slot) cons
 
 DramChannel::Slot DramChannel::oldest_free(const BurstQueue& queue) const {
   Slot slot = queue.oldest();
-  while (slot != BurstQueue::none && (queue[slot].older_reads != 0 || bank_states_[queue[slot].bank].shut == choices_))
+  while (slot != BurstQueue::none &&
+         (queue[slot].older_reads != 0 || bank_states_[queue[slot].bank].shut == choices_))
     slot = queue.after(slot);
   return slot;
 }
@@ -100,8 +102,8 @@ BurstQueue& DramChannel::queue_to_serve() {
 }
 
 void DramChannel::choose_first_ready(BurstQueue& queue) {
-  // A request over age: no other column command goes, no other command to its bank, and no activation while it waits
-  // for its own.
+  // A request over age: no other column command goes, no other command to its bank, and no activation while
+  // it waits for its own.
   Choice aged;
   if (cursor_ < queue[queue.oldest()].arrived + config_.age_cap) {
     look_again_at(queue[queue.oldest()].arrived + config_.age_cap);

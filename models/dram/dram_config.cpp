@@ -14,8 +14,8 @@ bool geometry_problems(const DramConfig& config, std::vector<std::string>& probl
   const Grade& grade = config.grade;
   const auto within = [&](const char* what, std::uint64_t value, std::uint64_t least, std::uint64_t most) {
     if (value < least || value > most)
-      problems.push_back(std::string(what) + ": " + std::to_string(value) + "; expected " + std::to_string(least) +
-                         " to " + std::to_string(most));
+      problems.push_back(std::string(what) + ": " + std::to_string(value) + "; expected " +
+                         std::to_string(least) + " to " + std::to_string(most));
   };
   within("channels", config.channels, 1, 64);
   within("ranks", config.ranks, 1, 16);
@@ -29,17 +29,18 @@ bool geometry_problems(const DramConfig& config, std::vector<std::string>& probl
   if (problems.size() != before) return false;
 
   if (config.width() % grade.device_bits != 0)
-    problems.push_back("channel width: " + std::to_string(config.width()) + " bits are no multiple of a device's " +
-                       std::to_string(grade.device_bits));
+    problems.push_back("channel width: " + std::to_string(config.width()) +
+                       " bits are no multiple of a device's " + std::to_string(grade.device_bits));
   if (config.width() % 8 != 0 || (config.burst_bytes() & (config.burst_bytes() - 1)) != 0)
     problems.push_back("channel width: a burst of " + std::to_string(config.width() * grade.burst_length) +
                        " bits; expected a power of two of bytes");
   const std::uint64_t burst_bits = std::uint64_t{grade.device_bits} * grade.burst_length;
   if (std::uint64_t{grade.page_bytes} * 8 % burst_bits != 0)
-    problems.push_back("page: " + std::to_string(grade.page_bytes) + " bytes are no whole number of bursts of " +
-                       std::to_string(burst_bits) + " bits");
+    problems.push_back("page: " + std::to_string(grade.page_bytes) +
+                       " bytes are no whole number of bursts of " + std::to_string(burst_bits) + " bits");
   if (grade.burst_length % 2 != 0)
-    problems.push_back("burst length: " + std::to_string(grade.burst_length) + "; expected an even number of beats");
+    problems.push_back("burst length: " + std::to_string(grade.burst_length) +
+                       "; expected an even number of beats");
   return problems.size() == before;
 }
 
@@ -51,11 +52,11 @@ void policy_problems(const DramConfig& config, std::vector<std::string>& problem
   if (config.write_queue < 1 || config.write_queue > longest_queue)
     complain("write queue: " + std::to_string(config.write_queue) + " bursts; expected 1 to 4096");
   if (config.write_high > config.write_queue)
-    complain("write marks: the high mark " + std::to_string(config.write_high) + " is above the queue's length " +
-             std::to_string(config.write_queue));
+    complain("write marks: the high mark " + std::to_string(config.write_high) +
+             " is above the queue's length " + std::to_string(config.write_queue));
   if (config.write_low >= config.write_high)
-    complain("write marks: the low mark " + std::to_string(config.write_low) + " is not below the high mark " +
-             std::to_string(config.write_high));
+    complain("write marks: the low mark " + std::to_string(config.write_low) +
+             " is not below the high mark " + std::to_string(config.write_high));
   if (config.age_cap < 1) complain("age cap: 0 clocks; expected at least 1");
   constexpr Clocks longest = Clocks{1} << 32;
   if (config.frontend > longest || config.backend > longest || config.idle_timeout > longest)

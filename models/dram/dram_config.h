@@ -1,8 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// DramConfig is everything a DRAM controller is built from: the grade of its devices, how many of them there are,
-// and its policies. Times are in clocks of the grade. Kernel-free.
+// DramConfig is everything a DRAM controller is built from: the grade of its devices, how many of them there
+// are, and its policies. Times are in clocks of the grade. Kernel-free.
 #pragma once
 
 #include <cstdint>
@@ -15,7 +15,8 @@ namespace earshot {
 
 // In which order queued requests are served.
 enum class DramScheduling : std::uint8_t {
-  one_at_a_time,  // in order of arrival; the next one's first command waits for the last beat of the one before
+  one_at_a_time,  // in order of arrival; the next one's first command waits for the last beat of the one
+                  // before
   first_come,     // in order of arrival; commands for the oldest request only
   first_ready,    // row hits first, then the oldest; banks are prepared in parallel; a limit on the age
 };
@@ -42,13 +43,14 @@ struct DramConfig {
   unsigned channel_bits = 0;  // data bits of a channel; 0: the grade's
 
   DramScheduling scheduling = DramScheduling::first_ready;
-  // first_ready, when a row command and a column command could use the same clock of the command bus: column first
-  // suits DRAM whose bursts take several clocks; else precharge before activate before column.
+  // first_ready, when a row command and a column command could use the same clock of the command bus: column
+  // first suits DRAM whose bursts take several clocks; else precharge before activate before column.
   bool row_first = false;
   Clocks age_cap = 2000;  // first_ready: a request older than this goes first
 
-  // A channel's queues, in bursts. Writes wait until there are `write_high` of them, or no reads; then they are
-  // served down to `write_low`, respectively until there is a read. (In-order scheduling knows no such turns.)
+  // A channel's queues, in bursts. Writes wait until there are `write_high` of them, or no reads; then they
+  // are served down to `write_low`, respectively until there is a read. (In-order scheduling knows no such
+  // turns.)
   unsigned read_queue = 32;
   unsigned write_queue = 32;
   unsigned write_high = 24;

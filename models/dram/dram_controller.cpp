@@ -26,7 +26,8 @@ DramController::DramController(sc_core::sc_module_name name, const DramConfig& c
     estimate_ = std::make_unique<DramEstimate>(config);
     return;
   }
-  for (unsigned c = 0; c < config.channels; ++c) channels_.push_back(std::make_unique<DramChannel>(config, c));
+  for (unsigned c = 0; c < config.channels; ++c)
+    channels_.push_back(std::make_unique<DramChannel>(config, c));
   SC_HAS_PROCESS(DramController);
   SC_METHOD(work);
   sensitive << wake_;
@@ -175,7 +176,8 @@ void DramController::respond(unsigned id) {
 
 void DramController::tell_waiting(Request& request) const {
   if (auto* times = request.payload->get_extension<MemoryTimes>(); times != nullptr)
-    times->queue += config_.grade.clock.edge(request.started) - request.arrived + (now_ps() - request.completed);
+    times->queue +=
+        config_.grade.clock.edge(request.started) - request.arrived + (now_ps() - request.completed);
 }
 
 void DramController::forget(unsigned id) {
@@ -226,7 +228,8 @@ const std::vector<CommandRecord>& DramController::commands(unsigned channel) {
 std::vector<std::string> DramController::broken_laws() const {
   std::vector<std::string> broken;
   const auto add = [&](const std::string& law) { broken.push_back(std::string(name()) + ": " + law); };
-  if (!entry_meter_.littles_law_holds(now_ps())) add("Little's law does not hold for the requests without a place");
+  if (!entry_meter_.littles_law_holds(now_ps()))
+    add("Little's law does not hold for the requests without a place");
   for (const auto& channel : channels_)
     for (const std::string& law : channel->broken_laws(clock_now())) add(law);
   return broken;
@@ -239,7 +242,8 @@ std::vector<std::string> DramController::pending() {
     const Request& request = *requests_[id];
     std::string text = request.payload->is_write() ? "a write" : "a read";
     return text + " of " + std::to_string(payload_extent(*request.payload)) + " bytes at " +
-           std::to_string(request.payload->get_address()) + ", arrived at " + std::to_string(request.arrived) + " ps";
+           std::to_string(request.payload->get_address()) + ", arrived at " +
+           std::to_string(request.arrived) + " ps";
   };
   if (!entry_.empty())
     add(std::to_string(entry_.size()) + " requests without a place; the first, " + describe(entry_.front()) +

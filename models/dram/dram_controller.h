@@ -1,33 +1,35 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// A DramController is a DRAM memory behind its controller: channels, ranks, banks, queues, a scheduler. It is an
-// ordinary TLM-2.0 base-protocol target, useful without our bus. What was never written reads as 0.
+// A DramController is a DRAM memory behind its controller: channels, ranks, banks, queues, a scheduler. It is
+// an ordinary TLM-2.0 base-protocol target, useful without our bus. What was never written reads as 0.
 //
-// Time. A request is split into bursts of burst_bytes; a smaller one costs a burst all the same. It enters the
-// queues of its channels in order of arrival, at the first clock edge, and there its bytes move: the order in which
-// requests enter is the order of memory. A read is done with its last beat, a write when it is queued; both then
-// take the controller's latency (`frontend` + `backend`; it does not matter here where in the controller it is
-// spent). Edge n of the clock is at floor(n * period) ps since time 0.
+// Time. A request is split into bursts of burst_bytes; a smaller one costs a burst all the same. It enters
+// the queues of its channels in order of arrival, at the first clock edge, and there its bytes move: the
+// order in which requests enter is the order of memory. A read is done with its last beat, a write when it is
+// queued; both then take the controller's latency (`frontend` + `backend`; it does not matter here where in
+// the controller it is spent). Edge n of the clock is at floor(n * period) ps since time 0.
 //
 // event_driven:
-//   b_transport waits for the delay it is given, then until the access is done, and returns with the delay 0. Any
-//   number of processes may be in it.
-//   nb_transport_fw(BEGIN_REQ, t) takes effect t from now. If there is room in the queues at once it answers
-//   TLM_UPDATED with END_REQ, else TLM_ACCEPTED and sends END_REQ when the whole request is in. BEGIN_RESP follows;
-//   one of them at a time: the next waits for END_RESP, or TLM_COMPLETED. Responses overtake each other, but never
-//   those of requests that share a burst. A payload with a memory manager is held from BEGIN_REQ until END_RESP.
-//   Bad or ignored transactions are completed early (TLM_COMPLETED). A phase out of order is reported as an error,
-//   id "/earshot/dram/protocol", with the initiator's name, and changes nothing.
-//   Order of accesses: requests of one burst take effect in the order in which they arrive. Nothing is promised
-//   between different bursts while both are outstanding.
-// annotated:
-//   b_transport adds to the delay and never waits, nb_transport_fw completes early; safe under temporal decoupling.
-//   Contention is an estimate (dram_estimate.h).
+//   b_transport waits for the delay it is given, then until the access is done, and returns with the delay 0.
+//   Any number of processes may be in it.
 //
-// A MemoryTimes extension on the payload is told the waiting: from arrival to the first DRAM command that is issued
-// for this request (for a write: to its place in the queue), and from the end of the access to the response if
-// that is kept back. The rest of the latency is service; together they are exact.
+//   nb_transport_fw(BEGIN_REQ, t) takes effect t from now. If there is room in the queues at once it answers
+//   TLM_UPDATED with END_REQ, else TLM_ACCEPTED and sends END_REQ when the whole request is in. BEGIN_RESP
+//   follows; one of them at a time: the next waits for END_RESP, or TLM_COMPLETED. Responses overtake each
+//   other, but never those of requests that share a burst. A payload with a memory manager is held from
+//   BEGIN_REQ until END_RESP. Bad or ignored transactions are completed early (TLM_COMPLETED). A phase out of
+//   order is reported as an error, id "/earshot/dram/protocol", with the initiator's name, and changes nothing.
+//
+//   Requests of one burst take effect in the order in which they arrive. Nothing is promised between different
+//   bursts while both are outstanding.
+// annotated:
+//   b_transport adds to the delay and never waits, nb_transport_fw completes early; safe under temporal
+//   decoupling. Contention is an estimate (dram_estimate.h).
+//
+// A MemoryTimes extension on the payload is told the waiting: from arrival to the first DRAM command that is
+// issued for this request (for a write: to its place in the queue), and from the end of the access to the
+// response if that is kept back. The rest of the latency is service; together they are exact.
 //
 // Accesses beyond the capacity: TLM_ADDRESS_ERROR_RESPONSE. DMI is granted page by page. Bad configuration is
 // reported by the constructor, all of it in one error, id "/earshot/dram/config".
@@ -65,28 +67,34 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
   DramCounts counts();
   // In the order of their clocks; empty without config.log_commands, and for the annotated pace.
   const std::vector<CommandRecord>& commands(unsigned channel);
-  const QueueMeter& read_meter(unsigned channel) const { return channels_[channel]->read_meter(); }    // in clocks
-  const QueueMeter& write_meter(unsigned channel) const { return channels_[channel]->write_meter(); }  // in clocks
-  const QueueMeter& entry_meter() const { return entry_meter_; }  // requests without a place yet; in picoseconds
+  // Bursts in a channel's queues, in clocks; requests without a place there yet, in picoseconds.
+  // REQUIRES of the first two: event_driven.
+  const QueueMeter& read_meter(unsigned channel) const { return channels_[channel]->read_meter(); }
+  const QueueMeter& write_meter(unsigned channel) const { return channels_[channel]->write_meter(); }
+  const QueueMeter& entry_meter() const { return entry_meter_; }
 
   std::vector<std::string> broken_laws() const;  // the self-checks that fail
-  std::vector<std::string> pending();            // a line for each queue that is not empty: its head, and what it waits for
+  // A line for each queue that is not empty: its head, and what that waits for.
+  std::vector<std::string> pending();
 
-  // Copies bytes out, without time or side effect. REQUIRES: address + length does not pass the end of the space.
-  void peek(std::uint64_t address, std::uint8_t* to, std::size_t length) const { bytes_.read(address, to, length); }
+  // Copies bytes out, without time or side effect. REQUIRES: address + length does not pass the end of the
+  // space.
+  void peek(std::uint64_t address, std::uint8_t* to, std::size_t length) const {
+    bytes_.read(address, to, length);
+  }
 
  private:
   struct Request {
     tlm::tlm_generic_payload* payload = nullptr;
     bool blocking = false;
-    bool complete = false;            // but for responses that go before
+    bool complete = false;  // but for responses that go before
     Picoseconds arrived = 0, completed = 0;
     Clocks started = 0, done = 0;
     std::uint64_t first_burst = 0;
     unsigned bursts = 0, entered = 0, finished = 0;
-    unsigned waits_for = 0;           // older outstanding requests with a burst in common
-    bool followed = false;            // a younger one waits for this
-    sc_core::sc_event responded;      // wakes the caller of b_transport
+    unsigned waits_for = 0;       // older outstanding requests with a burst in common
+    bool followed = false;        // a younger one waits for this
+    sc_core::sc_event responded;  // wakes the caller of b_transport
   };
   // Requests without a response yet, in order of arrival.
   struct Outstanding {
@@ -127,12 +135,14 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
   unsigned transport_dbg(tlm::tlm_generic_payload& payload) override;
   bool answered_at_once(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay);
   void estimate(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay);
-  tlm::tlm_sync_enum begin_request(tlm::tlm_generic_payload& payload, tlm::tlm_phase& phase, sc_core::sc_time& time);
+  tlm::tlm_sync_enum begin_request(tlm::tlm_generic_payload& payload, tlm::tlm_phase& phase,
+                                   sc_core::sc_time& time);
   tlm::tlm_sync_enum end_response(tlm::tlm_generic_payload& payload, const sc_core::sc_time& time);
   void end_request(unsigned id);
   void send_responses();
   void close_response(const sc_core::sc_time& time);
-  void protocol_error(const tlm::tlm_generic_payload& payload, const std::string& got, const std::string& expected);
+  void protocol_error(const tlm::tlm_generic_payload& payload, const std::string& got,
+                      const std::string& expected);
   std::string initiator_name() const;
 
   const DramConfig config_;
@@ -145,8 +155,8 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
   static constexpr unsigned nobody = ~0u;
   std::vector<std::unique_ptr<Request>> requests_;  // by id; those of free_ids_ are not in use
   std::vector<unsigned> free_ids_;
-  Agenda coming_;                    // nonblocking requests that take effect later
-  std::deque<unsigned> entry_;       // arrived, not wholly in the queues
+  Agenda coming_;               // nonblocking requests that take effect later
+  std::deque<unsigned> entry_;  // arrived, not wholly in the queues
   Agenda completing_;
   std::vector<Outstanding> outstanding_;
   std::deque<unsigned> responses_;   // nonblocking, ready to be sent
@@ -154,7 +164,7 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
   unsigned response_open_ = nobody;  // BEGIN_RESP without END_RESP
   Picoseconds response_from_ = 0;    // an END_RESP takes effect
   bool entering_ = false, sending_ = false;
-  bool answer_inline_ = false;       // the END_REQ of request_open_ is what nb_transport_fw returns
+  bool answer_inline_ = false;  // the END_REQ of request_open_ is what nb_transport_fw returns
   std::uint64_t order_ = 0;
 
   QueueMeter entry_meter_;

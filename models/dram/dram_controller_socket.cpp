@@ -1,7 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// The socket of a DramController: transport calls, phases and their misuse (IEEE 1666-2011, clauses 11.2 and 15.2).
+// The socket of a DramController: transport calls, phases and their misuse (IEEE 1666-2011, clauses 11.2
+// and 15.2).
 #include <algorithm>
 #include <sstream>
 
@@ -31,7 +32,8 @@ void DramController::estimate(tlm::tlm_generic_payload& payload, sc_core::sc_tim
   const Clocks ready = clock.edge_at_or_after(arrived);
   const std::uint64_t first = payload.get_address() / config_.burst_bytes();
   const std::uint64_t last = (payload.get_address() + (payload_extent(payload) - 1)) / config_.burst_bytes();
-  // A write is done when there is a place in the write queue: when no more than that many bursts are ahead of it.
+  // A write is done when there is a place in the write queue: when no more than that many bursts are ahead of
+  // it.
   const Clocks queue = Clocks{config_.write_queue} * config_.grade.burst_clocks();
   const bool write = payload.is_write();
   estimate_->forget_before(clock.edge_at_or_after(now));
@@ -43,7 +45,8 @@ void DramController::estimate(tlm::tlm_generic_payload& payload, sc_core::sc_tim
     done = std::max(done, write ? queued : times.done);
   }
   if (write) started = done;
-  if (auto* times = payload.get_extension<MemoryTimes>(); times != nullptr) times->queue += clock.edge(started) - arrived;
+  if (auto* times = payload.get_extension<MemoryTimes>(); times != nullptr)
+    times->queue += clock.edge(started) - arrived;
   delay = from_ps(clock.edge(done + latency()) - now);
   move_payload_bytes(payload, bytes_);
   payload.set_dmi_allowed(true);
@@ -72,7 +75,8 @@ tlm::tlm_sync_enum DramController::nb_transport_fw(tlm::tlm_generic_payload& pay
   if (phase == tlm::BEGIN_REQ) return begin_request(payload, phase, time);
   if (phase == tlm::END_RESP) return end_response(payload, time);
   if (phase == tlm::END_REQ || phase == tlm::BEGIN_RESP)
-    protocol_error(payload, phase == tlm::END_REQ ? "END_REQ" : "BEGIN_RESP", "BEGIN_REQ or END_RESP from an initiator");
+    protocol_error(payload, phase == tlm::END_REQ ? "END_REQ" : "BEGIN_RESP",
+                   "BEGIN_REQ or END_RESP from an initiator");
   return tlm::TLM_ACCEPTED;  // an extended phase is none of ours
 }
 
@@ -130,15 +134,18 @@ void DramController::send_responses() {
     sc_core::sc_time time;
     const tlm::tlm_sync_enum answer = target_socket->nb_transport_bw(payload, phase, time);
     if (response_open_ != id) continue;  // END_RESP came in a call of its own meanwhile
-    if (answer == tlm::TLM_COMPLETED || (answer == tlm::TLM_UPDATED && phase == tlm::END_RESP)) close_response(time);
+    if (answer == tlm::TLM_COMPLETED || (answer == tlm::TLM_UPDATED && phase == tlm::END_RESP))
+      close_response(time);
   }
   sending_ = false;
 }
 
-tlm::tlm_sync_enum DramController::end_response(tlm::tlm_generic_payload& payload, const sc_core::sc_time& time) {
+tlm::tlm_sync_enum DramController::end_response(tlm::tlm_generic_payload& payload,
+                                                const sc_core::sc_time& time) {
   if (response_open_ == nobody || requests_[response_open_]->payload != &payload) {
-    protocol_error(payload, "END_RESP", response_open_ == nobody ? "no END_RESP: no BEGIN_RESP is open"
-                                                                 : "the END_RESP of the response that is open");
+    protocol_error(payload, "END_RESP",
+                   response_open_ == nobody ? "no END_RESP: no BEGIN_RESP is open"
+                                            : "the END_RESP of the response that is open");
     return tlm::TLM_ACCEPTED;
   }
   close_response(time);
@@ -158,8 +165,8 @@ void DramController::protocol_error(const tlm::tlm_generic_payload& payload, con
                                     const std::string& expected) {
   std::ostringstream text;
   text << name() << ", called by " << initiator_name() << "\n  got " << got << " for a "
-       << (payload.is_write() ? "write" : "read") << " at 0x" << std::hex << payload.get_address() << "; expected "
-       << expected;
+       << (payload.is_write() ? "write" : "read") << " at 0x" << std::hex << payload.get_address()
+       << "; expected " << expected;
   SC_REPORT_ERROR("/earshot/dram/protocol", text.str().c_str());
 }
 
@@ -185,7 +192,8 @@ bool DramController::get_direct_mem_ptr(tlm::tlm_generic_payload& payload, tlm::
     return false;
   }
   const Grade& grade = config_.grade;
-  const sc_core::sc_time idle = from_ps(grade.clock.edge(grade.trcd + grade.cl + grade.burst_clocks() + latency()));
+  const sc_core::sc_time idle =
+      from_ps(grade.clock.edge(grade.trcd + grade.cl + grade.burst_clocks() + latency()));
   const std::uint64_t first = payload.get_address() / SparseBytes::page_bytes * SparseBytes::page_bytes;
   dmi.set_dmi_ptr(bytes_.page(first));
   dmi.set_start_address(first);

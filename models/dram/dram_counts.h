@@ -1,8 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// DramCounts is what one DRAM channel did, or several together: whole numbers only, all since time 0. "Clocks"
-// are those of the grade. Kernel-free.
+// DramCounts is what one DRAM channel did, or several together: whole numbers only, all since time 0.
+// "Clocks" are those of the grade. Kernel-free.
 #pragma once
 
 #include <algorithm>
@@ -30,15 +30,15 @@ struct DramCounts {
   std::uint64_t reads_from_queue = 0;  // served from a write still queued
   std::uint64_t writes_merged = 0;     // into a write still queued
 
-  std::uint64_t write_drains = 0;         // begun at the high mark
-  std::uint64_t over_age = 0;             // commands that went first because of their request's age
-  std::uint64_t most_postponed = 0;       // refreshes owed by one rank (by one bank, if per bank) at once
+  std::uint64_t write_drains = 0;    // begun at the high mark
+  std::uint64_t over_age = 0;        // commands that went first because of their request's age
+  std::uint64_t most_postponed = 0;  // refreshes owed by one rank (by one bank, if per bank) at once
 
-  Clocks elapsed = 0;                  // of one channel
-  Clocks data_bus_busy = 0;            // sum over channels
-  Clocks occupied = 0;                 // with a request queued; sum over channels
-  Clocks rank_clocks_active = 0;       // a row is open in the rank; sum over channels and ranks
-  Clocks rank_clocks_precharged = 0;   // no row is open in the rank, refreshing included; likewise
+  Clocks elapsed = 0;                 // of one channel
+  Clocks data_bus_busy = 0;           // sum over channels
+  Clocks occupied = 0;                // with a request queued; sum over channels
+  Clocks rank_clocks_active = 0;      // a row is open in the rank; sum over channels and ranks
+  Clocks rank_clocks_precharged = 0;  // no row is open in the rank, refreshing included; likewise
 
   void add(const DramCounts& other) {
     activates += other.activates;

@@ -66,8 +66,9 @@ DramEstimate::Times DramEstimate::access(const DramPlace& place, bool write, Clo
   data_bus.forget_before(now_);
 
   Clocks started = 0;
-  Clocks column = hit ? wait_for(bank.column_from, ready)
-                      : open_row(bank, rank, refreshes, open, after_refresh(bank, rank, refreshes, ready), started);
+  Clocks column =
+      hit ? wait_for(bank.column_from, ready)
+          : open_row(bank, rank, refreshes, open, after_refresh(bank, rank, refreshes, ready), started);
   column = wait_for(write ? rank.write_from : rank.read_from, column);
   column = wait_for(write ? group_write_from_[g] : group_read_from_[g], column);
 
@@ -81,8 +82,9 @@ DramEstimate::Times DramEstimate::access(const DramPlace& place, bool write, Clo
   bank.last_use = column;
   bank.precharge_from = column + (write ? grade.write_to_precharge() : grade.trtp);
   group_read_from_[g] = column + (write ? grade.write_to_read_l() : grade.tccd_l);
-  group_write_from_[g] =
-      column + (!write ? grade.read_to_write : grade.tccd_l_wr != 0 ? grade.tccd_l_wr : grade.tccd_l);
+  group_write_from_[g] = column + (!write                 ? grade.read_to_write
+                                   : grade.tccd_l_wr != 0 ? grade.tccd_l_wr
+                                                          : grade.tccd_l);
   if (write)
     rank.read_from = column + grade.write_to_read_s();
   else
@@ -109,9 +111,10 @@ Clocks DramEstimate::open_row(Bank& bank, Rank& rank, const Refreshes& refreshes
 }
 
 void DramEstimate::count_active(Rank& rank, const Refreshes& refreshes, Clocks activate) {
-  const Clocks closes = config_.rows == DramRows::closed
-                            ? activate + config_.grade.tras
-                            : (refreshes.interval == 0 ? ~Clocks{0} : refreshes.due(refreshes.due_before(activate) + 1));
+  const Clocks closes =
+      config_.rows == DramRows::closed
+          ? activate + config_.grade.tras
+          : (refreshes.interval == 0 ? ~Clocks{0} : refreshes.due(refreshes.due_before(activate) + 1));
   if (activate >= rank.active_until) {
     rank.active += rank.active_until - rank.active_since;
     rank.active_since = activate;
@@ -126,12 +129,14 @@ DramCounts DramEstimate::counts(Clocks now) const {
   for (std::size_t r = 0; r < ranks_.size(); ++r) {
     const Rank& rank = ranks_[r];
     const unsigned of_channel = static_cast<unsigned>(r % config_.ranks);
-    if (config_.refresh == DramRefresh::all_bank) counts.refreshes += refreshes_of(of_channel, 0).due_before(now);
+    if (config_.refresh == DramRefresh::all_bank)
+      counts.refreshes += refreshes_of(of_channel, 0).due_before(now);
     if (config_.refresh == DramRefresh::per_bank)
       for (unsigned b = 0; b < config_.grade.banks(); ++b)
         counts.bank_refreshes += refreshes_of(of_channel, b).due_before(now);
     const Clocks until = std::min(now, rank.active_until);
-    const Clocks active = std::min(now, rank.active + (until > rank.active_since ? until - rank.active_since : 0));
+    const Clocks active =
+        std::min(now, rank.active + (until > rank.active_since ? until - rank.active_since : 0));
     counts.rank_clocks_active += active;
     counts.rank_clocks_precharged += now - active;
   }

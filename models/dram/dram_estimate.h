@@ -1,14 +1,15 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// A DramEstimate tells at once how long a burst will take, for platforms whose initiators run ahead of each other
-// (temporal decoupling). An idle device is timed as DramChannel times it: row hit, precharged bank, row conflict, a
-// refresh under way. Contention is estimated: requests book the earliest gap in the timetables of their bank's row
-// cycles, their rank's activations and their channel's data bus; there is no reordering and no write queue, so a
-// write occupies the devices when it comes. The open row is that of the latest call.
+// A DramEstimate tells at once how long a burst will take, for platforms whose initiators run ahead of each
+// other (temporal decoupling). An idle device is timed as DramChannel times it: row hit, precharged bank, row
+// conflict, a refresh under way. Contention is estimated: requests book the earliest gap in the timetables of
+// their bank's row cycles, their rank's activations and their channel's data bus; there is no reordering and
+// no write queue, so a write occupies the devices when it comes. The open row is that of the latest call.
 //
-// Requests may come with times out of order. What the device still waits for since a request whose time is far ahead
-// (more than eight row cycles) is no concern of one that comes before it. Kernel-free; times are clocks.
+// Requests may come with times out of order. What the device still waits for since a request whose time is
+// far ahead (more than eight row cycles) is no concern of one that comes before it. Kernel-free; times are
+// clocks.
 #pragma once
 
 #include <vector>
@@ -34,8 +35,8 @@ class DramEstimate {
   Times access(const DramPlace& place, bool write, Clocks ready);
   void forget_before(Clocks now) { now_ = now; }
 
-  // Refreshes are those due until `now`; a row counts as open until its rank is refreshed (if rows are never left
-  // open: for tRAS).
+  // Refreshes are those due until `now`; a row counts as open until its rank is refreshed (if rows are never
+  // left open: for tRAS).
   DramCounts counts(Clocks now) const;
   Clocks data_bus_busy(unsigned channel) const { return channels_[channel].data_bus.busy_time(); }
   Clocks last_data_end() const;
@@ -57,27 +58,31 @@ class DramEstimate {
   struct Channel {
     Calendar data_bus;
   };
-  // The refreshes that a bank has to stand still for: at first, first + interval, ... for `length` clocks. One that
-  // falls due at the clock of a request comes after it.
+  // The refreshes that a bank has to stand still for: at first, first + interval, ... for `length` clocks.
+  // One that falls due at the clock of a request comes after it.
   struct Refreshes {
     Clocks first = 0, interval = 0, length = 0;  // interval 0: none
-    Clocks due_before(Clocks now) const { return interval == 0 || now <= first ? 0 : (now - first - 1) / interval + 1; }
+    Clocks due_before(Clocks now) const {
+      return interval == 0 || now <= first ? 0 : (now - first - 1) / interval + 1;
+    }
     Clocks due(Clocks number) const { return first + (number - 1) * interval; }
   };
   Refreshes refreshes_of(unsigned rank, unsigned bank) const;
   Clocks after_refresh(const Bank& bank, const Rank& rank, const Refreshes& refreshes, Clocks ready) const;
   bool still_open(const Bank& bank, const Refreshes& refreshes, Clocks ready) const;
   Clocks wait_for(Clocks from, Clocks ready) const;
-  Clocks open_row(Bank& bank, Rank& rank, const Refreshes& refreshes, bool conflict, Clocks ready, Clocks& started);
+  Clocks open_row(Bank& bank, Rank& rank, const Refreshes& refreshes, bool conflict, Clocks ready,
+                  Clocks& started);
   void count_active(Rank& rank, const Refreshes& refreshes, Clocks activate);
 
   DramConfig config_;
   Clocks far_ahead_;
   Clocks now_ = 0;
   std::vector<Channel> channels_;
-  std::vector<Rank> ranks_;             // of all channels
-  std::vector<Clocks> group_read_from_, group_write_from_;  // of all ranks: tCCD_L after the last column command
-  std::vector<Bank> banks_;             // of all groups
+  std::vector<Rank> ranks_;  // of all channels
+  std::vector<Clocks> group_read_from_,
+      group_write_from_;     // of all ranks: tCCD_L after the last column command
+  std::vector<Bank> banks_;  // of all groups
   DramCounts counts_;
 };
 

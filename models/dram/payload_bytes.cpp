@@ -11,7 +11,8 @@ bool beyond(std::uint64_t address, unsigned length, std::uint64_t last) {
 }  // namespace
 
 tlm::tlm_response_status payload_status(const tlm::tlm_generic_payload& payload, std::uint64_t last) {
-  if (payload.get_data_length() == 0 || payload.get_streaming_width() == 0 || payload.get_data_ptr() == nullptr)
+  if (payload.get_data_length() == 0 || payload.get_streaming_width() == 0 ||
+      payload.get_data_ptr() == nullptr)
     return tlm::TLM_BURST_ERROR_RESPONSE;
   if (beyond(payload.get_address(), payload_extent(payload), last)) return tlm::TLM_ADDRESS_ERROR_RESPONSE;
   return tlm::TLM_OK_RESPONSE;

@@ -1,9 +1,9 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// A RefreshDebt says when a rank has to be refreshed. A refresh falls due every interval; it may be postponed as
-// long as no more than `postponable` are owed, so that two of them are never more than postponable + 1 intervals
-// apart (JESD79-3 and -4, postponing refresh commands: 8 and 9 tREFI). Kernel-free.
+// A RefreshDebt says when a rank has to be refreshed. A refresh falls due every interval; it may be postponed
+// as long as no more than `postponable` are owed, so that two of them are never more than postponable + 1
+// intervals apart (JESD79-3 and -4, postponing refresh commands: 8 and 9 tREFI). Kernel-free.
 #pragma once
 
 #include <limits>

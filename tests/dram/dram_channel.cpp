@@ -1,8 +1,9 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// The scheduler of one DRAM channel, without a kernel: latencies and spacings from the grades' arithmetic, policies,
-// refresh, bandwidth bounds, and random traffic whose every command log the independent checker accepts.
+// The scheduler of one DRAM channel, without a kernel: latencies and spacings from the grades' arithmetic,
+// policies, refresh, bandwidth bounds, and random traffic whose every command log the independent checker
+// accepts.
 #include "earshot/dram/dram_channel.h"
 
 #include <catch2/catch.hpp>
@@ -79,13 +80,17 @@ struct Channel {
   }
 };
 
-DramPlace place(unsigned group, unsigned bank, std::uint64_t row, std::uint64_t column = 0, unsigned rank = 0) {
+DramPlace place(unsigned group, unsigned bank, std::uint64_t row, std::uint64_t column = 0,
+                unsigned rank = 0) {
   return {0, rank, group, bank, row, column};
 }
 
-unsigned below(std::mt19937_64& random, std::uint64_t n) { return static_cast<unsigned>(random() % n); }
+unsigned below(std::mt19937_64& random, std::uint64_t n) {
+  return static_cast<unsigned>(random() % n);
+}
 
-// The toy of Rixner et al., figure 1: precharge 3 clocks, activate 3, column access 1, one command each clock.
+// The toy of Rixner et al., figure 1: precharge 3 clocks, activate 3, column access 1, one command each
+// clock.
 DramConfig toy() {
   DramConfig config;
   config.grade.clock = {1, 1000};
@@ -134,7 +139,8 @@ TEST_CASE("eight references take 56 clocks in order and 19 scheduled", "[dram][o
 }
 
 // hit CL, closed tRCD + CL, conflict tRP + tRCD + CL; the last beat BL/2 later.
-TEST_CASE("an idle device answers after exactly the clocks of a hit, a closed bank and a conflict", "[dram]") {
+TEST_CASE("an idle device answers after exactly the clocks of a hit, a closed bank and a conflict",
+          "[dram]") {
   for (const std::string& name : builtin_grades()) {
     INFO(name);
     const DramConfig config = config_of(name);
@@ -162,7 +168,8 @@ TEST_CASE("an idle device answers after exactly the clocks of a hit, a closed ba
   }
 }
 
-TEST_CASE("a row opened lately is closed after tRAS, tRTP after its read, and tWR after its write", "[dram]") {
+TEST_CASE("a row opened lately is closed after tRAS, tRTP after its read, and tWR after its write",
+          "[dram]") {
   const DramConfig config = config_of("ddr4-2400t");
   const Grade& g = config.grade;
   for (const bool write : {false, true}) {
@@ -215,13 +222,15 @@ TEST_CASE("column commands are spaced by group, direction and rank", "[dram]") {
     CHECK(spacing(false, here, false, far) == data);
     CHECK(spacing(true, here, true, far) == data);
     CHECK(spacing(false, here, true, far) == g.cl + data - g.cwl);
-    CHECK(spacing(true, here, false, far) == std::max<Clocks>(1, g.cwl + data > g.cl ? g.cwl + data - g.cl : 0));
+    CHECK(spacing(true, here, false, far) ==
+          std::max<Clocks>(1, g.cwl + data > g.cl ? g.cwl + data - g.cl : 0));
   }
 }
 
 namespace {
 
-// A saturated read queue for `bursts` bursts, the n-th to place_of(n); the clocks between the first data and the last.
+// A saturated read queue for `bursts` bursts, the n-th to place_of(n); the clocks between the first data and
+// the last.
 template <typename PlaceOf>
 Clocks saturate(Channel& dram, unsigned bursts, PlaceOf place_of, bool write = false) {
   for (unsigned n = 0; n < bursts;) {
@@ -244,8 +253,9 @@ TEST_CASE("a stream over the bank groups keeps the data bus busy; in one group t
     const DramConfig config = config_of(name);
     const Grade& g = config.grade;
     Channel spread(config);
-    CHECK(saturate(spread, 200, [&](unsigned n) { return place(n % g.bank_groups, 0, 1, n / g.bank_groups % 64); }) <=
-          199 * g.tccd_s + g.tccd_l * g.bank_groups);
+    CHECK(saturate(spread, 200, [&](unsigned n) {
+            return place(n % g.bank_groups, 0, 1, n / g.bank_groups % 64);
+          }) <= 199 * g.tccd_s + g.tccd_l * g.bank_groups);
     Channel narrow(config);
     CHECK(saturate(narrow, 60, [&](unsigned n) { return place(0, 0, 1, n); }) == 59 * g.tccd_l);
   }
@@ -271,7 +281,8 @@ TEST_CASE("activations alone are bounded by tFAW, or tRRD, or in one bank by tRC
   }
 }
 
-TEST_CASE("a bank asked for two rows in turn opens each once when reordered, and every time in order", "[dram]") {
+TEST_CASE("a bank asked for two rows in turn opens each once when reordered, and every time in order",
+          "[dram]") {
   DramConfig config = config_of("ddr4-2400t");
   const auto activates = [&] {
     Channel dram(config);
@@ -306,7 +317,8 @@ TEST_CASE("hits overtake an older row only until that is over age", "[dram]") {
   CHECK(dram.channel.counts(dram.now).over_age > 0);
 }
 
-TEST_CASE("writes wait for the high mark and are served down to the low one, or until a read comes", "[dram]") {
+TEST_CASE("writes wait for the high mark and are served down to the low one, or until a read comes",
+          "[dram]") {
   DramConfig config = config_of("ddr4-2400t");
   config.write_high = 8;
   config.write_low = 3;
@@ -322,7 +334,8 @@ TEST_CASE("writes wait for the high mark and are served down to the low one, or 
   CHECK(dram.channel.counts(dram.now).write_drains == 1);
 }
 
-// n reads and n writes in turns cost the bus turnaround once each way: the share of data is n BL / (n BL + P).
+// n reads and n writes in turns cost the bus turnaround once each way: the share of data is n BL / (n BL +
+// P).
 TEST_CASE("the turnaround between reads and writes costs what their spacing says", "[dram]") {
   DramConfig config = config_of("ddr4-2400t");
   config.write_high = 16;
@@ -341,7 +354,8 @@ TEST_CASE("the turnaround between reads and writes costs what their spacing says
   CHECK(writes.back() - writes.front() == 14 * g.tccd_s);
 }
 
-TEST_CASE("a read is served from a queued write that has all its bytes, and writes of one burst merge", "[dram]") {
+TEST_CASE("a read is served from a queued write that has all its bytes, and writes of one burst merge",
+          "[dram]") {
   DramConfig config = config_of("ddr4-2400t");
   Channel dram(config);
   dram.read(place(0, 0, 7));  // writes wait while there is a read
@@ -383,8 +397,8 @@ TEST_CASE("a write does not go to the banks before an older read of its burst", 
     Channel dram(config);
     dram.read(place(0, 0, 1));
     dram.write(place(0, 1, 2));
-    dram.read(place(0, 1, 2));   // served from the queue
-    DramBurst part;              // but this one has bytes that are not
+    dram.read(place(0, 1, 2));  // served from the queue
+    DramBurst part;             // but this one has bytes that are not
     part.id = dram.ids++;
     part.number = ((0 * 64 + 0 * 8 + 1) * config.grade.rows + 2) * 4096 + 0;
     part.place = place(0, 1, 2);
@@ -475,7 +489,8 @@ TEST_CASE("a request that comes during a refresh waits for its end", "[dram]") {
   CHECK(dram.done_at(begun) == 2 * g.trefi + g.trp_all + g.trfc + read);
 }
 
-TEST_CASE("under load 8 refreshes are postponed and never more than 9 tREFI lie between two", "[dram][outside]") {
+TEST_CASE("under load 8 refreshes are postponed and never more than 9 tREFI lie between two",
+          "[dram][outside]") {
   for (const std::string& name : builtin_grades()) {
     INFO(name);
     DramConfig config = config_of(name);
@@ -486,7 +501,8 @@ TEST_CASE("under load 8 refreshes are postponed and never more than 9 tREFI lie 
     const Clocks end = 40 * Clocks{g.trefi};
     while (dram.now < end) {
       while (dram.channel.accepts(false))
-        dram.read(place(below(random, g.bank_groups), below(random, g.banks_per_group), random() % 4, random() % 32));
+        dram.read(place(below(random, g.bank_groups), below(random, g.banks_per_group), random() % 4,
+                        random() % 32));
       dram.go_to(dram.channel.next_event());
     }
     dram.finish();
@@ -516,10 +532,12 @@ TEST_CASE("banks are refreshed one by one where the standard has that", "[dram]"
   dram.finish();
   CHECK(dram.done_at(same) == 3 * g.trefi_bank + g.trfc_bank + g.trcd + g.cl + g.burst_clocks());
   require_legal(dram.log(), config, dram.now);
-  CHECK(dram.channel.counts(g.trefi * Clocks{100} + 1).bank_refreshes == Clocks{g.trefi} * 100 / g.trefi_bank);
+  CHECK(dram.channel.counts(g.trefi * Clocks{100} + 1).bank_refreshes ==
+        Clocks{g.trefi} * 100 / g.trefi_bank);
 }
 
-TEST_CASE("whatever is asked in whatever order: every log is legal, every read completes, every law holds", "[dram]") {
+TEST_CASE("whatever is asked in whatever order: every log is legal, every read completes, every law holds",
+          "[dram]") {
   std::mt19937_64 random(2024);  // seed 2024
   for (unsigned run = 0; run < 240; ++run) {
     const auto& names = builtin_grades();
@@ -538,8 +556,8 @@ TEST_CASE("whatever is asked in whatever order: every log is legal, every read c
     config.write_high = 1 + below(random, config.write_queue);
     config.write_low = below(random, config.write_high);
     INFO("run " << run << ", " << g.name << ", ranks " << config.ranks << ", scheduling "
-                << static_cast<int>(config.scheduling) << ", rows " << static_cast<int>(config.rows) << ", refresh "
-                << static_cast<int>(config.refresh));
+                << static_cast<int>(config.scheduling) << ", rows " << static_cast<int>(config.rows)
+                << ", refresh " << static_cast<int>(config.refresh));
     const std::uint64_t rows = 1 + below(random, 5), columns = 1 + below(random, 20);
     const unsigned writes = below(random, 101), pause = below(random, 3);
 
@@ -548,8 +566,9 @@ TEST_CASE("whatever is asked in whatever order: every log is legal, every read c
     for (unsigned n = 0; n < 1500; ++n) {
       const bool write = below(random, 100) < writes;
       while (!dram.channel.accepts(write)) dram.go_to(dram.channel.next_event());
-      const unsigned id = dram.ask(write, place(below(random, g.bank_groups), below(random, g.banks_per_group), random() % rows,
-                                                random() % columns, below(random, config.ranks)));
+      const unsigned id =
+          dram.ask(write, place(below(random, g.bank_groups), below(random, g.banks_per_group),
+                                random() % rows, random() % columns, below(random, config.ranks)));
       if (!write) reads.push_back(id);
       if (pause == 0) dram.pass(below(random, 100));
       if (pause == 1 && below(random, 200) == 0) dram.pass(below(random, 5 * g.trefi));
@@ -565,12 +584,14 @@ TEST_CASE("whatever is asked in whatever order: every log is legal, every read c
     const DramCounts counts = dram.channel.counts(dram.now);
     CHECK(counts.read_bursts + counts.reads_from_queue == reads.size());
     CHECK(counts.write_bursts + counts.writes_merged + reads.size() == 1500);
-    CHECK(counts.row_hits + counts.row_closed + counts.row_conflicts == counts.read_bursts + counts.write_bursts);
+    CHECK(counts.row_hits + counts.row_closed + counts.row_conflicts ==
+          counts.read_bursts + counts.write_bursts);
     CHECK(counts.rank_clocks_active + counts.rank_clocks_precharged == dram.now * config.ranks);
   }
 }
 
-TEST_CASE("one read at a time: the estimate is the scheduler's time, to the clock but for refresh", "[dram]") {
+TEST_CASE("one read at a time: the estimate is the scheduler's time, to the clock but for refresh",
+          "[dram]") {
   for (const std::string& name : builtin_grades()) {
     INFO(name);
     DramConfig config = config_of(name);
@@ -585,7 +606,8 @@ TEST_CASE("one read at a time: the estimate is the scheduler's time, to the cloc
       Clocks scheduled = 0, estimated = 0;
       unsigned different = 0;
       for (unsigned n = 0; n < 20000; ++n) {
-        const DramPlace where = place(below(random, g.bank_groups), below(random, 2), random() % 2, random() % 8, below(random, 2));
+        const DramPlace where = place(below(random, g.bank_groups), below(random, 2), random() % 2,
+                                      random() % 8, below(random, 2));
         const unsigned id = dram.read(where);
         const Clocks start = dram.now, done = estimate.access(where, false, start).done;
         dram.finish();
@@ -609,7 +631,8 @@ TEST_CASE("an address map and its inverse agree, and every burst has a place of 
   config.grade.page_bytes = 64;
   config.ranks = 2;
   config.channels = 2;
-  for (const char* map : {"row rank bank column group channel", "row:1 row column:2 bank rank channel group column"}) {
+  for (const char* map :
+       {"row rank bank column group channel", "row:1 row column:2 bank rank channel group column"}) {
     for (const bool hash : {false, true}) {
       config.address_map = map;
       config.hash_banks = hash;
@@ -643,7 +666,8 @@ TEST_CASE("an address map is refused with what is wrong with it", "[dram]") {
   CHECK(problem("row rank bank group colunm") ==
         "\"colunm\" is no field; expected row, rank, bank, group, column or channel");
   config.channels = 3;
-  CHECK(problem("row rank bank group column channel") == "3 channels are no power of two, so channel must come first");
+  CHECK(problem("row rank bank group column channel") ==
+        "3 channels are no power of two, so channel must come first");
   CHECK(problem("channel row rank bank group column") == "");
 }
 
@@ -657,8 +681,10 @@ TEST_CASE("what is pending is said with its head and what that waits for", "[dra
   const std::vector<std::string> lines = dram.channel.pending();
   REQUIRE(lines.size() == 2);
   CHECK(lines[0] ==
-        "channel 0, read queue: 1 of 32 bursts; the head, rank 0 group 1 bank 2 row 33 column 4, is there since "
+        "channel 0, read queue: 1 of 32 bursts; the head, rank 0 group 1 bank 2 row 33 column 4, is there "
+        "since "
         "clock 0 and waits for RD, possible from clock 17");
-  CHECK(lines[1].find("channel 0, write queue: 1 of 32 bursts; the head, rank 0 group 0 bank 0 row 1 column 0, is "
-                      "there since clock 3 and waits for ACT") == 0);
+  CHECK(lines[1].find(
+            "channel 0, write queue: 1 of 32 bursts; the head, rank 0 group 0 bank 0 row 1 column 0, is "
+            "there since clock 3 and waits for ACT") == 0);
 }

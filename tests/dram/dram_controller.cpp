@@ -1,8 +1,9 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// DramController as an ordinary TLM-2.0 target, without our bus (IEEE 1666-2011, clauses 11, 14 and 15). The grade is
-// ddr4-2400t: 1200 MHz, CL 17, tRCD 17, tRP 17, bursts of 64 bytes in 4 clocks; edge n is at floor(n * 5000 / 6) ps.
+// DramController as an ordinary TLM-2.0 target, without our bus (IEEE 1666-2011, clauses 11, 14 and 15). The
+// grade is ddr4-2400t: 1200 MHz, CL 17, tRCD 17, tRP 17, bursts of 64 bytes in 4 clocks; edge n is at floor(n
+// * 5000 / 6) ps.
 #include "earshot/dram/dram_controller.h"
 
 #include <catch2/catch.hpp>
@@ -24,7 +25,9 @@ DramConfig usual() {
   return config;
 }
 
-sc_core::sc_time edge(Clocks n) { return from_ps(n * 5000 / 6); }
+sc_core::sc_time edge(Clocks n) {
+  return from_ps(n * 5000 / 6);
+}
 
 constexpr std::uint64_t row_stride = std::uint64_t{1} << 20;  // more than a row of all banks
 
@@ -116,7 +119,8 @@ class Asker : public sc_core::sc_module, public tlm::tlm_mm_interface {
   sc_core::sc_time last_time;
 
  private:
-  tlm::tlm_sync_enum backward(tlm::tlm_generic_payload& payload, tlm::tlm_phase& phase, sc_core::sc_time& time) {
+  tlm::tlm_sync_enum backward(tlm::tlm_generic_payload& payload, tlm::tlm_phase& phase,
+                              sc_core::sc_time& time) {
     CHECK(time == sc_core::SC_ZERO_TIME);
     if (phase == tlm::END_REQ) {
       REQUIRE(open_ != nullptr);
@@ -235,8 +239,9 @@ TEST_CASE("a request of several bursts is done with the last, and ends in whiche
     CHECK(direct.memory.write_meter(0).arrivals() == 5);
     sc_core::wait(edge(1200) - sc_core::sc_time_stamp());
     // Four bursts in four groups: activations tRRD_S = 4 apart.
-    CHECK(direct.time_of([&] { direct.cpu.transport(tlm::TLM_READ_COMMAND, row_stride * 4, in.data(), 256); }) ==
-          edge(17 + 17 + 17 + 4 + 3 * 4));
+    CHECK(direct.time_of([&] {
+      direct.cpu.transport(tlm::TLM_READ_COMMAND, row_stride * 4, in.data(), 256);
+    }) == edge(17 + 17 + 17 + 4 + 3 * 4));
     CHECK(direct.cpu.transport(tlm::TLM_READ_COMMAND, 0x1020, in.data(), 256) == tlm::TLM_OK_RESPONSE);
     CHECK(in == out);
   });
@@ -272,10 +277,11 @@ TEST_CASE("with room a request ends at once, else when a burst has left the queu
     Asker::Transaction& third = cpu.read(128);
     CHECK(cpu.last_answer == tlm::TLM_ACCEPTED);
     CHECK(pipelined.memory.pending().front() ==
-          "memory: 1 requests without a place; the first, a read of 64 bytes at 128, arrived at 0 ps, waits for room "
+          "memory: 1 requests without a place; the first, a read of 64 bytes at 128, arrived at 0 ps, waits "
+          "for room "
           "in a queue");
     cpu.finish();
-    CHECK(third.requested == edge(17));  // the first read command
+    CHECK(third.requested == edge(17));               // the first read command
     CHECK(third.answered == edge(18 + 17 + 17 + 4));  // the command bus is free a clock later
     CHECK(third.times.queue == to_ps(edge(18)));
     CHECK(cpu.order.size() == 3);
@@ -308,7 +314,8 @@ TEST_CASE("one response at a time: the next waits for the end of the one before,
     sc_core::wait(edge(100));
     REQUIRE(pipelined.memory.pending().size() == 1);
     CHECK(pipelined.memory.pending().front() ==
-          "memory: 2 responses; the first, to a read of 64 bytes at 0, arrived at 0 ps, waits for END_RESP from "
+          "memory: 2 responses; the first, to a read of 64 bytes at 0, arrived at 0 ps, waits for END_RESP "
+          "from "
           "cpu.socket");
     cpu.finish();
     CHECK(first.answered == edge(38));
@@ -353,7 +360,8 @@ void stress(Asker::Style style, const DramConfig& config, std::uint64_t seed) {
       const std::size_t at = place_in_order[&one];
       if (at < i) ++overtaken;
       const std::uint64_t first = one.payload.get_address() / 64;
-      for (std::uint64_t burst = first; burst <= (one.payload.get_address() + one.data.size() - 1) / 64; ++burst) {
+      for (std::uint64_t burst = first; burst <= (one.payload.get_address() + one.data.size() - 1) / 64;
+           ++burst) {
         if (latest.count(burst) != 0 && latest[burst] > at) ++out_of_order;
         latest[burst] = at;
       }
@@ -371,16 +379,19 @@ void stress(Asker::Style style, const DramConfig& config, std::uint64_t seed) {
 
 }  // namespace
 
-TEST_CASE("random requests answered in every style: right bytes, order kept within a burst: END_RESP later", "[dram]") {
+TEST_CASE("random requests answered in every style: right bytes, order kept within a burst: END_RESP later",
+          "[dram]") {
   stress(Asker::ends_later, usual(), 1);
 }
-TEST_CASE("random requests answered in every style: right bytes, order kept within a burst: updated", "[dram]") {
+TEST_CASE("random requests answered in every style: right bytes, order kept within a burst: updated",
+          "[dram]") {
   DramConfig config = usual();
   config.channels = 2;
   config.ranks = 2;
   stress(Asker::ends_in_return, config, 2);
 }
-TEST_CASE("random requests answered in every style: right bytes, order kept within a burst: completed", "[dram]") {
+TEST_CASE("random requests answered in every style: right bytes, order kept within a burst: completed",
+          "[dram]") {
   DramConfig config = usual();
   config.read_queue = config.write_queue = 3;
   config.write_high = 2;
@@ -388,7 +399,8 @@ TEST_CASE("random requests answered in every style: right bytes, order kept with
   config.hash_banks = true;
   stress(Asker::completes, config, 3);
 }
-TEST_CASE("random requests answered in every style: right bytes, order kept within a burst: in the call", "[dram]") {
+TEST_CASE("random requests answered in every style: right bytes, order kept within a burst: in the call",
+          "[dram]") {
   DramConfig config = usual();
   config.rows = DramRows::closed;
   config.frontend = 5;
@@ -453,12 +465,14 @@ TEST_CASE("a phase out of order is an error with the names of both, and changes 
     tlm::tlm_generic_payload stranger;
     stranger.set_address(0x1234);
     stranger.set_write();
-    CHECK_THROWS_WITH(cpu.send(stranger, tlm::BEGIN_REQ),
-                      Catch::Contains("/earshot/dram/protocol") &&
-                          Catch::Contains("memory, called by cpu.socket\n  got BEGIN_REQ for a write at 0x1234; "
-                                          "expected none before the END_REQ of the request before"));
-    CHECK_THROWS_WITH(cpu.send(first.payload, tlm::END_RESP),
-                      Catch::Contains("got END_RESP for a read at 0x0; expected no END_RESP: no BEGIN_RESP is open"));
+    CHECK_THROWS_WITH(
+        cpu.send(stranger, tlm::BEGIN_REQ),
+        Catch::Contains("/earshot/dram/protocol") &&
+            Catch::Contains("memory, called by cpu.socket\n  got BEGIN_REQ for a write at 0x1234; "
+                            "expected none before the END_REQ of the request before"));
+    CHECK_THROWS_WITH(
+        cpu.send(first.payload, tlm::END_RESP),
+        Catch::Contains("got END_RESP for a read at 0x0; expected no END_RESP: no BEGIN_RESP is open"));
     CHECK_THROWS_WITH(cpu.send(first.payload, tlm::END_REQ), Catch::Contains("got END_REQ"));
     CHECK_THROWS_WITH(cpu.send(first.payload, tlm::BEGIN_RESP), Catch::Contains("got BEGIN_RESP"));
     cpu.style = Asker::ends_later;
@@ -477,7 +491,8 @@ TEST_CASE("bad transactions are answered as TLM-2.0 says, without time", "[dram]
     const std::uint64_t bytes = pipelined.memory.config().bytes();
     CHECK(bytes == std::uint64_t{8} << 30);
     Asker& cpu = pipelined.cpu;
-    const auto answer = [&](tlm::tlm_command command, std::uint64_t address, unsigned length, unsigned width) {
+    const auto answer = [&](tlm::tlm_command command, std::uint64_t address, unsigned length,
+                            unsigned width) {
       std::uint8_t data[128] = {};
       tlm::tlm_generic_payload payload;
       payload.set_command(command);
@@ -566,7 +581,8 @@ TEST_CASE("all that is wrong with a configuration is said at once", "[dram]") {
   config.write_high = 40;
   config.refresh = DramRefresh::per_bank;
   CHECK_THROWS_WITH(DramController("memory", config),
-                    Catch::Contains("/earshot/dram/config") && Catch::Contains("memory\n") && Catch::Contains("tRC") &&
+                    Catch::Contains("/earshot/dram/config") && Catch::Contains("memory\n") &&
+                        Catch::Contains("tRC") &&
                         Catch::Contains("write marks: the high mark 40 is above the queue's length 32") &&
                         Catch::Contains("refresh: per-bank refresh, which JESD79-4") &&
                         Catch::Contains("channel width: 68 bits are no multiple of a device's 8"));

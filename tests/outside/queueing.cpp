@@ -101,7 +101,7 @@ struct Tandem {
   unsigned arbitration, address;  // cycles
   Picoseconds memory;             // reads only: it takes writes at once
   unsigned width, turnaround;     // bytes, of 8; cycles
-  std::uint64_t write_every;      // so many jobs of a port; 0: never
+  std::uint64_t write_every;      // so many jobs of a customer; 0: never
 };
 constexpr Picoseconds clock_period = 5000;
 
@@ -118,15 +118,19 @@ std::unique_ptr<Station> start(const Tandem& row) {
   config.arbitration_cycles = row.arbitration;
   config.turnaround_cycles = row.turnaround;
   config.outstanding = 100000;
-  auto station = std::make_unique<Station>(std::string("slowest_") + row.slowest, 8, config, row.memory);
-  const Picoseconds slowest = std::max({row.address * clock_period, row.memory, data_time(row)});
-  station->poisson(0.85 / 8 * static_cast<double>(S) / static_cast<double>(slowest), 80000, row.write_every);
+  constexpr int customers = 40;  // one a port, for a port has one uncached access under way
+  auto station =
+      std::make_unique<Station>(std::string("slowest_") + row.slowest, customers, config, row.memory);
+  const auto slowest =
+      static_cast<double>(std::max({row.address * clock_period, row.memory, data_time(row)}));
+  for (int port = 0; port < customers; ++port) {
+    Jobs& jobs =
+        station->jobs(port, Exponential(slowest * customers, static_cast<std::uint64_t>(port)), 2000);
+    jobs.write_every(row.write_every);
+    jobs.closed(1);
+  }
   return station;
 }
-
-}  // namespace
-
-namespace {
 
 // When each job has its last beat or, a write, has left the data bus.
 std::vector<Picoseconds> ends_of(const Log& in_order_of_asking, const Tandem& row) {

@@ -20,6 +20,7 @@
 #include <memory>
 #include <random>
 #include <string>
+#include <tuple>
 #include <vector>
 
 #include "earshot/timing/agenda.h"
@@ -262,14 +263,10 @@ class Station {
     customers_.back()->socket.bind(caches_[static_cast<std::size_t>(port)]->cpu_socket);
   }
   // Jobs come one by one, `rate` of them in S from each port, altogether about `most`.
-  void poisson(double rate, std::uint64_t most, std::uint64_t write_every = 0) {
+  void poisson(double rate, std::uint64_t most) {
     const std::size_t ports = caches_.size();
-    for (std::size_t port = 0; port < ports; ++port) {
-      Jobs& stream =
-          jobs(static_cast<int>(port), Exponential(static_cast<double>(S) / rate, port), most / ports);
-      stream.write_every(write_every);
-      stream.open();
-    }
+    for (std::size_t port = 0; port < ports; ++port)
+      jobs(static_cast<int>(port), Exponential(static_cast<double>(S) / rate, port), most / ports).open();
     log.reserve(most);
   }
   void customer(bool blocking, int port, const Pause& pause, std::uint64_t most) {
@@ -281,8 +278,9 @@ class Station {
 
   Log in_order_of_asking() const {
     Log sorted = log;
-    std::stable_sort(sorted.begin(), sorted.end(),
-                     [](const Served& a, const Served& b) { return a.asked < b.asked; });
+    std::sort(sorted.begin(), sorted.end(), [](const Served& a, const Served& b) {
+      return std::tie(a.asked, a.port) < std::tie(b.asked, b.port);
+    });
     return sorted;
   }
   double total_response() const {
