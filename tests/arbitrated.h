@@ -208,6 +208,11 @@ class Requester : public sc_core::sc_module, private tlm::tlm_mm_interface {
   std::function<tlm::tlm_sync_enum(Access&)> on_end_request = [](Access&) { return tlm::TLM_ACCEPTED; };
   sc_core::sc_event changed;  // at every phase heard
   unsigned freed = 0;         // payloads that nobody holds any more
+  // Drops the accesses of before. REQUIRES: all are answered.
+  void forget() {
+    accesses_.clear();
+    heard.clear();
+  }
 
  private:
   static void prepare(tlm::tlm_generic_payload& payload, tlm::tlm_command command, std::uint64_t address,

@@ -436,18 +436,37 @@ TEST_CASE("an access over two lines keeps its place in both before later accesse
   Bench bench(load_table("msi"));
   simulate([&] {
     Requester& cpu = bench.cpu(0);
-    cpu.write(0x60, 1);  // the second line is there and may be written
+    cpu.write(0x60, 1);  // the second line is there and may be written, the first is not
     settle();
     Access* read = nullptr;
-    std::function<tlm::tlm_sync_enum(Access&)> next = [&](Access&) {
+    const auto follow = [&] {  // at the first moment at which the initiator may
       if (read == nullptr) read = &cpu.send_read("r", 0x60);
+    };
+    cpu.on_end_request = [&](Access&) {
+      follow();
       return tlm::TLM_ACCEPTED;
     };
-    cpu.on_end_request = next;
-    cpu.send("w", tlm::TLM_WRITE_COMMAND, 0x5c, 2, 8);  // the first line is not
+    cpu.on_response = [&](Access&, tlm::tlm_phase&, sc_core::sc_time&) {
+      follow();
+      return tlm::TLM_COMPLETED;
+    };
+    cpu.send("w", tlm::TLM_WRITE_COMMAND, 0x5c, 2, 8);
     settle();
     REQUIRE(read != nullptr);
     CHECK(read->value() == 2);
+  });
+}
+
+TEST_CASE("the request of an access over two missing lines ends when the second has its place", "[cache]") {
+  Bench bench(load_table("msi"));
+  simulate([&] {
+    Requester& cpu = bench.cpu(0);
+    Access& wide = cpu.send("w", tlm::TLM_WRITE_COMMAND, 0x5c, 2, 8);
+    settle();
+    CHECK(cpu.heard == "w END_REQ, w BEGIN_RESP");
+    CHECK(wide.ended_request == ps(101));
+    CHECK(wide.responded == ps(100 + 100));
+    CHECK(bench.broken_laws() == "");
   });
 }
 

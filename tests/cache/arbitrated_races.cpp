@@ -471,6 +471,7 @@ TEST_CASE("a processor that writes a line all the time does not keep another fro
              },
              [&] {
                sc_core::wait(ns(500));
+               tries = 0;
                bench.cpu(1).write(0x44, 1);
                written = true;
              }});

@@ -72,7 +72,7 @@ class BookExample {
     sc_core::sc_start();
     std::remove(path.c_str());
 
-    if (order.error()) std::rethrow_exception(order.error());
+    if (order.end().error) std::rethrow_exception(order.end().error);
     CHECK(order.first_difference() == "");
     REQUIRE(seen_.size() == steps.size());
     for (std::size_t i = 0; i < steps.size(); ++i) {

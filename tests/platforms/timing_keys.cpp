@@ -127,7 +127,7 @@ TEST_CASE("grades that do not exist, do not cover or contradict themselves are r
   folder.write("mine.grade", grade);
   refuses(folder,
           "simulate " + folder.write("p.ini", "workload.pattern = uniform\n[memory]\nkind = dram\ngrade = mine.grade\n"),
-          "p.ini:4: memory.grade: mine.grade: tRC of 48 clocks is below tRAS + tRP of 56");
+          "p.ini:4: memory.grade: mine.grade:22: tRC of 48 clocks is below tRAS + tRP of 56");
 }
 
 TEST_CASE("DRAM policies and maps that cannot be are refused", "[command]") {
