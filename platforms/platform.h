@@ -35,7 +35,7 @@ class Platform {
 
   // When the last player finished; rethrows what stopped one early.
   Picoseconds finished_at() const;
-  bool all_finished() const { return playing_ == 0; }
+  unsigned unfinished() const { return playing_; }  // who plays and has not played all
   // What players, bus and caches, memories wait for, a line each; empty if nothing is under way.
   std::string waiting() const { return players_waiting() + bus_->waiting() + memories_waiting(); }
   std::string players_waiting() const;

@@ -26,8 +26,13 @@ void simulate_on(Platform& platform, Duration... duration) {
 }
 
 [[noreturn]] void hangs(const Platform& platform) {
-  throw Finding("nothing can happen any more, at " + sc_core::sc_time_stamp().to_string() +
-                ", but not everything is done. What waits:\n" + platform.waiting());
+  std::string text = "nothing can happen any more, at " + sc_core::sc_time_stamp().to_string() + ", but ";
+  if (platform.unfinished() > 0)
+    text += std::to_string(platform.unfinished()) + " of the players have not played all";
+  else
+    text += "not everything they caused is done";
+  const std::string waiting = platform.waiting();
+  throw Finding(text + (waiting.empty() ? "" : ". What waits:\n" + waiting));
 }
 
 [[noreturn]] void unusable(const Settings& settings, const PlayError& error) {
@@ -49,7 +54,7 @@ Picoseconds play_all(const Settings& settings, Platform& platform) {
   } catch (const PlayError& error) {
     unusable(settings, error);
   }
-  if (!platform.all_finished()) hangs(platform);
+  if (platform.unfinished() > 0) hangs(platform);
   while (!platform.waiting().empty()) {
     if (!sc_core::sc_pending_activity()) hangs(platform);
     simulate_on(platform, from_ps(settings.bus_clock));

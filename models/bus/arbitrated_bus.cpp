@@ -208,13 +208,12 @@ void SnoopingBus::Arbitrated::snoop_ended(Active* active) {  // of an upgrade: n
 
 // ---- Data bus: first ready, first served
 
-// `ready` may be to come; who gets ready earlier goes first, unless the transfer has begun.
+// `ready` may be to come; who gets ready earlier goes first, at the same time who was granted first.
 void SnoopingBus::Arbitrated::need_data_bus(Active& active, Picoseconds ready) {
   enter(active, Stage::data);
   active.ready = next_edge(ready, bus_.period_);
   std::size_t place = transfers_.size();
-  while (place > 0 && transfers_[place - 1]->ready > active.ready && !(place == 1 && transfers_[0]->start <= now_ps()))
-    --place;
+  while (place > 0 && transfers_[place - 1]->ready > active.ready) --place;  // one that has begun was ready before
   transfers_.insert(transfers_.begin() + static_cast<std::ptrdiff_t>(place), &active);
   if (place == 0) plan_transfer();
 }

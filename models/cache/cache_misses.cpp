@@ -293,6 +293,7 @@ void CoherentCache::Arbitrated::write_back_finished(WriteBack& victim) {
   victim.refused = true;
   victim.slot.line = victim.line;
   cache_.set_state(victim.slot, victim.line, victim.before);
+  retry();  // those that wait for the slot wait in vain
   SC_REPORT_ERROR("/earshot/cache/memory",
                   (std::string(cache_.name()) + ": memory refuses the write-back of a line; it stays in its slot").c_str());
 }

@@ -44,9 +44,11 @@ class QueueMeter {
     return left == 0 ? 0.0 : double(stayed_) / double(left);
   }
 
-  // L = lambda W on what has happened until `now`, those still present counted as far as they have come.
+  // L = lambda W on what has happened until `now`, those still present counted as far as they have come. Whether leave()
+  // was given the right times shows when the queue is empty.
   bool littles_law_holds(Picoseconds now) const {
-    return area(now) == stayed_ + (static_cast<Wide>(present_) * now - entered_sum_);
+    const Wide stays = stayed_ + (static_cast<Wide>(present_) * now - entered_sum_);
+    return area(now) == stays && (present_ > 0 || entered_sum_ == 0);
   }
 
  private:

@@ -43,3 +43,11 @@ TEST_CASE("long numbers get commas", "[platforms]") {
   CHECK(with_commas(1000) == "1,000");
   CHECK(with_commas(1234567) == "1,234,567");
 }
+
+TEST_CASE("lists of numbers are separated by commas, blanks or both", "[platforms]") {
+  std::vector<std::uint64_t> values{7};
+  CHECK((parse_numbers("0,1,3", 3, values) && values == std::vector<std::uint64_t>{0, 1, 3}));
+  CHECK((parse_numbers(" 0x10 , 2  4", 16, values) && values == std::vector<std::uint64_t>{16, 2, 4}));
+  CHECK((parse_numbers("", 3, values) && values.empty()));
+  for (const char* bad : {"4", "1,,2", ",1", "1,", "1;2", "one", "-1"}) CHECK_FALSE(parse_numbers(bad, 3, values));
+}

@@ -28,11 +28,13 @@ Table broken(const std::string& name, const std::string& state, Event event, Cha
 }
 
 // Plays a uniform pattern and returns the finding's text.
-std::string finding(const Table& table, const std::string& order) {
-  const Settings settings =
-      read_settings("", {"--workload.pattern=uniform", "--workload.accesses=2000", "--workload.lines=16",
-                         "--caches.size=256", "--caches.ways=2", "--monitor=on", "--workload.order=" + order});
-  PlayerHooks hooks;
+std::string finding(const Table& table, const std::string& order, const std::vector<std::string>& more = {},
+                    PlayerHooks hooks = {}) {
+  std::vector<std::string> arguments{"--workload.pattern=uniform", "--workload.accesses=2000", "--workload.lines=16",
+                                     "--caches.size=256", "--caches.ways=2", "--monitor=on",
+                                     "--workload.order=" + order};
+  arguments.insert(arguments.end(), more.begin(), more.end());
+  const Settings settings = read_settings("", arguments);
   hooks.failed = [] { sc_core::sc_stop(); };
   sc_core::sc_set_stop_mode(sc_core::SC_STOP_IMMEDIATE);
   Platform platform(settings, std::make_shared<const Table>(table), hooks);
@@ -80,4 +82,40 @@ TEST_CASE("a silently writable copy that is not alone is found", "[platforms]") 
                             [&](Row& row) { row.next = id_of(mesi, exclusive); }),
                      "recorded"),
              Catch::Contains("may write the line silently, but it is not the only copy"));
+}
+
+TEST_CASE("a violation is found in arbitrated timing, whose accesses take effect in method processes", "[platforms]") {
+  const Table table =
+      broken("dirty-owner-update", "D", Event::snoop_read, [](Row& row) { row.supply = false; });
+  const std::string text = finding(table, "concurrent", {"--timing=arbitrated"});
+  CHECK_THAT(text, Catch::StartsWith("coherence violation at access "));
+  CHECK_THAT(text, Catch::Contains("the line's last events:\n    access "));
+}
+
+TEST_CASE("a violation is found with several accesses in flight over DRAM", "[platforms]") {
+  CHECK_THAT(finding(broken("dragon", "Sc", Event::snoop_update, [](Row& row) { row.take = false; }), "concurrent",
+                     {"--timing=arbitrated", "--workload.outstanding=4", "--memory.kind=dram"}),
+             Catch::Contains("the last value written there is"));
+}
+
+TEST_CASE("an initiator that never goes on is a finding, annotated", "[platforms]") {
+  sc_core::sc_event never("never");
+  int accesses = 0;
+  PlayerHooks hooks;
+  hooks.done = [&] {
+    if (++accesses == 100) sc_core::wait(never);
+  };
+  CHECK_THAT(finding(load_table("mesi"), "concurrent", {}, hooks),
+             Catch::StartsWith("nothing can happen any more, at ") && Catch::Contains("1 of the players have not played all"));
+}
+
+TEST_CASE("an initiator that never goes on is a finding, arbitrated", "[platforms]") {
+  sc_core::sc_event never("never");
+  int accesses = 0;
+  PlayerHooks hooks;
+  hooks.done = [&] {
+    if (++accesses == 100) sc_core::wait(never);
+  };
+  CHECK_THAT(finding(load_table("mesi"), "recorded", {"--timing=arbitrated"}, hooks),
+             Catch::StartsWith("nothing can happen any more, at ") && Catch::Contains("1 of the players have not played all"));
 }

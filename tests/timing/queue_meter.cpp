@@ -95,6 +95,9 @@ TEST_CASE("a meter that lost its place does not keep Little's law", "[timing]") 
   SECTION("somebody left before having come") {
     meter.leave(20, 25);
   }
+  SECTION("somebody's coming was remembered wrongly") {
+    meter.leave(20, 15);
+  }
   SECTION("time went back") {
     meter.enter(20);
     meter.enter(15);
