@@ -41,6 +41,7 @@ CoherentCache::Arbitrated::Access& CoherentCache::Arbitrated::start(tlm::tlm_gen
   access.done = false;
   access.write = payload.is_write();
   access.request = request;
+  access.pieces = Pieces{};
   access.start = access.accounted = when;
   access.progress = Progress{};
   return access;
@@ -150,7 +151,7 @@ void CoherentCache::Arbitrated::begin_uncached(Access& access) {
   job.io = &payload;
   if (access.blocking) {
     job.data.resize(payload.get_data_length());
-    job.enables.resize(payload.get_byte_enable_length());
+    job.enables.resize(payload.get_byte_enable_ptr() == nullptr ? 0 : payload.get_byte_enable_length());
     job.copy.set_data_ptr(job.data.data());
     job.copy.set_byte_enable_ptr(job.enables.empty() ? nullptr : job.enables.data());
     job.copy.deep_copy_from(payload);

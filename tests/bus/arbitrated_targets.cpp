@@ -224,6 +224,26 @@ TEST_CASE("an uncached access reaches its target as it is: width, enables, exten
   });
 }
 
+TEST_CASE("a byte enable length without byte enables means nothing, on an uncached access too", "[bus]") {
+  Bench bench(load_table("msi"));
+  simulate([&] {
+    std::uint32_t value = 0x1234;
+    for (const std::uint64_t address : {std::uint64_t{0x40}, Bench::device_base}) {
+      Payload payload;
+      payload.set_command(tlm::TLM_WRITE_COMMAND);
+      payload.set_address(address);
+      payload.set_data_ptr(reinterpret_cast<std::uint8_t*>(&value));
+      payload.set_data_length(4);
+      payload.set_streaming_width(4);
+      payload.set_byte_enable_length(4);
+      sc_core::sc_time delay;
+      bench.cpu(0).socket->b_transport(payload, delay);
+      CHECK(payload.is_response_ok());
+      CHECK(bench.cpu(0).read(address) == 0x1234);
+    }
+  });
+}
+
 // ---- Targets that break the protocol
 
 namespace {

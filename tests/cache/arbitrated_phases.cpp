@@ -470,6 +470,19 @@ TEST_CASE("the request of an access over two missing lines ends when the second 
   });
 }
 
+TEST_CASE("an access over lines that ends in an error leaves nothing behind for the next one", "[cache]") {
+  Bench bench(load_table("msi"));
+  bench.memory.refuses = [](const auto&) { return true; };
+  simulate([&] {
+    Requester& cpu = bench.cpu(0);
+    cpu.send("wide", tlm::TLM_READ_COMMAND, 0x40, 0, 96);
+    settle();
+    cpu.send_read("device", Bench::device_base);
+    settle();
+    CHECK(cpu.heard == "wide BEGIN_RESP, device END_REQ, device BEGIN_RESP");
+  });
+}
+
 // ---- Phases out of order
 
 TEST_CASE("BEGIN_REQ before the last request has ended is reported with the initiator's name", "[cache]") {
