@@ -31,13 +31,13 @@ BurstQueue::Slot BurstQueue::append(const Entry& entry, std::uint64_t number, Cl
 
   Bank& bank = by_bank_[e.bank];
   if (bank.oldest == none) {
-    bank.place = static_cast<unsigned>(banks_.size());
-    banks_.push_back(e.bank);
+    bank.place = static_cast<unsigned>(turns_.size());
+    turns_.emplace_back().bank = e.bank;
   }
+  turns_[bank.place].known = false;
   e.bank_older = bank.youngest;
   (bank.youngest == none ? bank.oldest : entries_[bank.youngest].bank_younger) = slot;
   bank.youngest = slot;
-  bank.pick_known = false;
   return slot;
 }
 
@@ -50,11 +50,11 @@ void BurstQueue::remove(Slot slot, Clocks now) {
   Bank& bank = by_bank_[e.bank];
   (e.bank_older == none ? bank.oldest : entries_[e.bank_older].bank_younger) = e.bank_younger;
   (e.bank_younger == none ? bank.youngest : entries_[e.bank_younger].bank_older) = e.bank_older;
-  bank.pick_known = false;
+  turns_[bank.place].known = false;
   if (bank.oldest == none) {
-    by_bank_[banks_.back()].place = bank.place;
-    banks_[bank.place] = banks_.back();
-    banks_.pop_back();
+    by_bank_[turns_.back().bank].place = bank.place;
+    turns_[bank.place] = turns_.back();
+    turns_.pop_back();
   }
   numbers_[slot] = nobody;
   free_.push_back(slot);
@@ -71,15 +71,19 @@ unsigned BurstQueue::count(std::uint64_t number) const {
   return empty() ? 0 : static_cast<unsigned>(std::count(numbers_.begin(), numbers_.end(), number));
 }
 
-void BurstQueue::choose_pick(Bank& bank, std::uint64_t open_row) {
-  bank.pick_known = true;
-  bank.pick = none;
-  for (Slot slot = bank.oldest; slot != none; slot = entries_[slot].bank_younger) {
+void BurstQueue::know(Turn& turn, std::uint64_t open_row) {
+  turn.known = true;
+  turn.slot = none;
+  turn.step = open_row == DramBanks::no_row ? DramStep::activate : DramStep::precharge;
+  for (Slot slot = by_bank_[turn.bank].oldest; slot != none; slot = entries_[slot].bank_younger) {
     const Entry& e = entries_[slot];
     if (e.older_reads != 0) continue;
-    if (bank.pick == none) bank.pick = slot;
-    if (e.row != open_row) continue;
-    bank.pick = slot;
+    const bool hit = e.row == open_row;
+    if (turn.slot != none && !hit) continue;
+    turn.slot = slot;
+    turn.order = e.order;
+    if (!hit) continue;
+    turn.step = write_ ? DramStep::write : DramStep::read;
     return;
   }
 }

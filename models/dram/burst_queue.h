@@ -8,7 +8,7 @@
 #include <cstdint>
 #include <vector>
 
-#include "earshot/timing/exact_clock.h"
+#include "earshot/dram/dram_banks.h"
 #include "earshot/timing/queue_meter.h"
 
 namespace earshot {
@@ -57,27 +57,33 @@ class BurstQueue {
   Slot find(std::uint64_t number) const;  // any entry of this burst
   unsigned count(std::uint64_t number) const;
 
-  const std::vector<unsigned>& banks() const { return banks_; }  // those with bursts
-  // The burst that a bank should serve: the oldest that hits the open row, else the oldest; held ones do not
-  // count.
-  Slot pick(unsigned bank, std::uint64_t open_row) {
-    Bank& b = by_bank_[bank];
-    if (!b.pick_known) choose_pick(b, open_row);
-    return b.pick;
-  }
+  // The burst that a bank should serve, and the step that this needs: the oldest that hits the open row, else
+  // the oldest; held ones do not count.
+  struct Turn {
+    std::uint64_t order = 0;
+    // The scheduler's: when the step is possible, and of those possible at one clock the lowest goes first.
+    Clocks clock = 0;
+    std::uint64_t place = 0;
+    unsigned bank = 0;
+    Slot slot = none;
+    DramStep step = DramStep::activate;
+    bool known = false;  // else the rest, but for the bank, is not valid: see know()
+  };
+  std::vector<Turn>& turns() { return turns_; }  // of the banks with bursts
+  Turn& turn_of(unsigned bank) { return turns_[by_bank_[bank].place]; }  // REQUIRES: it has bursts
+  void know(Turn& turn, std::uint64_t open_row);
   // The bank's open row has changed, or which of its bursts are held.
-  void look_again(unsigned bank) { by_bank_[bank].pick_known = false; }
+  void look_again(unsigned bank) {
+    if (by_bank_[bank].oldest != none) turn_of(bank).known = false;
+  }
 
   const QueueMeter& meter() const { return meter_; }
 
  private:
   struct Bank {
     Slot oldest = none, youngest = none;
-    Slot pick = none;
-    bool pick_known = false;
-    unsigned place = 0;  // in banks_
+    unsigned place = 0;  // in turns_
   };
-  void choose_pick(Bank& bank, std::uint64_t open_row);
 
   bool write_;
   unsigned size_ = 0;
@@ -85,7 +91,7 @@ class BurstQueue {
   std::vector<std::uint64_t> numbers_;  // by slot, apart for quick search; nobody: free
   std::vector<Slot> free_;
   std::vector<Bank> by_bank_;
-  std::vector<unsigned> banks_;
+  std::vector<Turn> turns_;
   Slot oldest_ = none, youngest_ = none;
   QueueMeter meter_;
 };

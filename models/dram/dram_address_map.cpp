@@ -96,6 +96,7 @@ std::vector<DramAddressMap::Piece> DramAddressMap::parse(const DramConfig& confi
   for (auto piece = pieces.rbegin(); piece != pieces.rend(); ++piece) {
     piece->in_burst = filled;
     filled += piece->bits;
+    piece->mask = (std::uint64_t{1} << std::min(piece->bits, 63u)) - 1;
   }
   const unsigned all = filled + bits_for(config.burst_bytes());
   if (problems.empty() && all > 63) complain(std::to_string(all) + " bits do not fit an address");
@@ -121,6 +122,13 @@ DramAddressMap::DramAddressMap(const DramConfig& config)
   pieces_.erase(
       std::remove_if(pieces_.begin(), pieces_.end(), [](const Piece& piece) { return piece.bits == 0; }),
       pieces_.end());
+  for (unsigned f = 0; f < fields; ++f) lowest_[f] = {static_cast<Field>(f), 0};
+  for (const Piece& piece : pieces_) {
+    if (piece.in_field == 0)
+      lowest_[piece.field] = piece;
+    else
+      higher_.push_back(piece);
+  }
 }
 
 // Its own inverse, since it leaves the row alone.
@@ -131,16 +139,18 @@ void DramAddressMap::hash(DramPlace& place) const {
 }
 
 DramPlace DramAddressMap::place(std::uint64_t burst) const {
-  std::array<std::uint64_t, fields> value{};
-  for (const Piece& piece : pieces_)
-    value[piece.field] |= (burst >> piece.in_burst & ((std::uint64_t{1} << piece.bits) - 1))
-                          << piece.in_field;
-  DramPlace place{static_cast<unsigned>(value[channel]),
-                  static_cast<unsigned>(value[rank]),
-                  static_cast<unsigned>(value[group]),
-                  static_cast<unsigned>(value[bank]),
-                  value[row],
-                  value[column]};
+  const auto value = [&](Field field) {
+    std::uint64_t bits = burst >> lowest_[field].in_burst & lowest_[field].mask;
+    for (const Piece& piece : higher_)
+      if (piece.field == field) bits |= (burst >> piece.in_burst & piece.mask) << piece.in_field;
+    return bits;
+  };
+  DramPlace place{static_cast<unsigned>(value(channel)),
+                  static_cast<unsigned>(value(rank)),
+                  static_cast<unsigned>(value(group)),
+                  static_cast<unsigned>(value(bank)),
+                  value(row),
+                  value(column)};
   hash(place);
   return place;
 }
@@ -152,8 +162,7 @@ std::uint64_t DramAddressMap::burst(const DramPlace& place) const {
                                                 plain.bank,    plain.row,  plain.column};
   std::uint64_t burst = 0;
   for (const Piece& piece : pieces_)
-    burst |= (value[piece.field] >> piece.in_field & ((std::uint64_t{1} << piece.bits) - 1))
-             << piece.in_burst;
+    burst |= (value[piece.field] >> piece.in_field & piece.mask) << piece.in_burst;
   return burst;
 }
 

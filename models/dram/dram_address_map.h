@@ -52,12 +52,15 @@ class DramAddressMap {
     unsigned bits;
     unsigned in_field = 0;  // its lowest bit there
     unsigned in_burst = 0;  // and here
+    std::uint64_t mask = 0;  // `bits` ones
   };
   static std::array<std::uint64_t, fields> sizes(const DramConfig& config);
   static std::vector<Piece> parse(const DramConfig& config, std::vector<std::string>& problems);
   void hash(DramPlace& place) const;
 
   std::vector<Piece> pieces_;
+  std::array<Piece, fields> lowest_;  // of each field; without bits if it has none
+  std::vector<Piece> higher_;         // the others: of split fields
   bool hash_;
   unsigned bank_bits_;
   std::uint64_t bank_mask_, group_mask_;

@@ -19,6 +19,7 @@ DramBanks::DramBanks(const Grade& grade, unsigned ranks)
     banks_[b].rank = b / grade.banks();
     banks_[b].group = b / grade.banks_per_group;
   }
+  occupy_bus(0, 0);
 }
 
 Clocks DramBanks::active(unsigned rank, Clocks now) const {
@@ -32,33 +33,35 @@ Clocks DramBanks::active(unsigned rank, Clocks now) const {
 Clocks DramBanks::precharge_all_from(unsigned rank) const {
   Clocks from = 0;
   for (unsigned b = rank * grade_.banks(); b < (rank + 1) * grade_.banks(); ++b)
-    if (banks_[b].row != no_row) not_before(from, banks_[b].precharge_from);
+    if (banks_[b].row != no_row) not_before(from, precharge_from(b));
   return from;
 }
 
 Clocks DramBanks::refresh_from(unsigned rank) const {
   Clocks from = 0;
   for (unsigned b = rank * grade_.banks(); b < (rank + 1) * grade_.banks(); ++b)
-    not_before(from, banks_[b].activate_from);
+    not_before(from, banks_[b].from[static_cast<std::size_t>(DramStep::activate)]);
   return from;
 }
 
 // A per-bank refresh counts as an activation for tRRD and tFAW (JESD209-4; value from memory).
 void DramBanks::count_activate(const Bank& bank, Clocks now) {
   Rank& r = ranks_[bank.rank];
-  not_before(groups_[bank.group].activate_from, now + grade_.trrd_l);
-  not_before(r.activate_from, now + grade_.trrd_s);
+  groups_[bank.group].from.not_before(DramStep::activate, now + grade_.trrd_l);
+  r.from.not_before(DramStep::activate, now + grade_.trrd_s);
   r.four_activates[r.oldest] = now + grade_.tfaw;
   r.oldest = (r.oldest + 1) % 4;
+  r.from.not_before(DramStep::activate, r.four_activates[r.oldest]);
 }
 
 void DramBanks::activate(unsigned bank, std::uint64_t row, Clocks now) {
   Bank& b = banks_[bank];
   b.row = row;
   b.last_use = now;
-  not_before(b.activate_from, now + grade_.trc);
-  not_before(b.precharge_from, now + grade_.tras);
-  b.column_from = now + grade_.trcd;
+  b.from.not_before(DramStep::activate, now + grade_.trc);
+  b.from.not_before(DramStep::precharge, now + grade_.tras);
+  b.from.not_before(DramStep::read, now + grade_.trcd);
+  b.from.not_before(DramStep::write, now + grade_.trcd);
   count_activate(b, now);
   Rank& r = ranks_[b.rank];
   if (r.open++ == 0) r.active_since = std::max(now, r.active_until);
@@ -66,7 +69,7 @@ void DramBanks::activate(unsigned bank, std::uint64_t row, Clocks now) {
 
 void DramBanks::close(Bank& bank, Clocks at, Clocks trp) {
   bank.row = no_row;
-  not_before(bank.activate_from, at + trp);
+  bank.from.not_before(DramStep::activate, at + trp);
   Rank& r = ranks_[bank.rank];
   not_before(r.active_until, at);
   if (--r.open == 0 && r.active_until > r.active_since) r.active += r.active_until - r.active_since;
@@ -81,7 +84,7 @@ void DramBanks::precharge_all(unsigned rank, Clocks now) {
     if (banks_[b].row != no_row)
       close(banks_[b], now, grade_.trp_all);
     else
-      not_before(banks_[b].activate_from, now + grade_.trp_all);
+      banks_[b].from.not_before(DramStep::activate, now + grade_.trp_all);
   }
 }
 
@@ -91,32 +94,41 @@ Clocks DramBanks::column(unsigned bank, bool write, bool then_precharge, Clocks 
   Rank& r = ranks_[b.rank];
   b.last_use = now;
   if (write) {
-    not_before(b.precharge_from, now + grade_.write_to_precharge());
-    not_before(g.write_from, now + (grade_.tccd_l_wr != 0 ? grade_.tccd_l_wr : grade_.tccd_l));
-    not_before(r.write_from, now + grade_.tccd_s);
-    not_before(g.read_from, now + grade_.write_to_read_l());
-    not_before(r.read_from, now + grade_.write_to_read_s());
+    b.from.not_before(DramStep::precharge, now + grade_.write_to_precharge());
+    g.from.not_before(DramStep::write, now + (grade_.tccd_l_wr != 0 ? grade_.tccd_l_wr : grade_.tccd_l));
+    r.from.not_before(DramStep::write, now + grade_.tccd_s);
+    g.from.not_before(DramStep::read, now + grade_.write_to_read_l());
+    r.from.not_before(DramStep::read, now + grade_.write_to_read_s());
   } else {
-    not_before(b.precharge_from, now + grade_.trtp);
-    not_before(g.read_from, now + grade_.tccd_l);
-    not_before(r.read_from, now + grade_.tccd_s);
-    not_before(r.write_from, now + grade_.read_to_write);
+    b.from.not_before(DramStep::precharge, now + grade_.trtp);
+    g.from.not_before(DramStep::read, now + grade_.tccd_l);
+    r.from.not_before(DramStep::read, now + grade_.tccd_s);
+    r.from.not_before(DramStep::write, now + grade_.read_to_write);
   }
-  data_end_ = now + (write ? grade_.cwl : grade_.cl) + grade_.burst_clocks();
-  data_rank_ = b.rank;
-  if (then_precharge) close(b, b.precharge_from, grade_.trp);
-  return data_end_;
+  const Clocks end = now + (write ? grade_.cwl : grade_.cl) + grade_.burst_clocks();
+  occupy_bus(b.rank, end);
+  if (then_precharge) close(b, precharge_from(bank), grade_.trp);
+  return end;
+}
+
+// The data of later bursts come after `end`. What earlier ones demanded can stay: it is no later.
+void DramBanks::occupy_bus(unsigned rank, Clocks end) {
+  for (unsigned r = 0; r < ranks_.size(); ++r) {
+    const Clocks bus = end + (r == rank ? 0 : grade_.rank_switch);
+    ranks_[r].from.not_before(DramStep::read, bus - std::min<Clocks>(bus, grade_.cl));
+    ranks_[r].from.not_before(DramStep::write, bus - std::min<Clocks>(bus, grade_.cwl));
+  }
 }
 
 void DramBanks::refresh(unsigned rank, Clocks now) {
   for (unsigned b = rank * grade_.banks(); b < (rank + 1) * grade_.banks(); ++b)
-    banks_[b].activate_from = now + grade_.trfc;
+    banks_[b].from.not_before(DramStep::activate, now + grade_.trfc);
 }
 
 void DramBanks::refresh_bank(unsigned bank, Clocks now) {
   Bank& b = banks_[bank];
   count_activate(b, now);
-  b.activate_from = now + grade_.trfc_bank;
+  b.from.not_before(DramStep::activate, now + grade_.trfc_bank);
   ranks_[b.rank].refresh_bank_from = now + grade_.trfc_bank;
 }
 

@@ -15,6 +15,10 @@
 
 namespace earshot {
 
+// What a bank does next for a burst.
+enum class DramStep : std::uint8_t { precharge, activate, read, write };
+constexpr std::size_t dram_steps = 4;
+
 class DramBanks {
  public:
   static constexpr std::uint64_t no_row = ~std::uint64_t{0};
@@ -37,27 +41,19 @@ class DramBanks {
 
   // The earliest clock that violates nothing. REQUIRES: the bank is open, respectively precharged, as the
   // command wants it.
-  Clocks activate_from(unsigned bank) const {
+  Clocks from(unsigned bank, DramStep step) const {
     const Bank& b = banks_[bank];
-    const Rank& r = ranks_[b.rank];
-    return std::max(std::max(b.activate_from, groups_[b.group].activate_from),
-                    std::max(r.activate_from, r.four_activates[r.oldest]));
+    const auto s = static_cast<std::size_t>(step);
+    // Values, for of references the compiler makes branches, which nobody can predict.
+    const Clocks own = b.from[s], group = groups_[b.group].from[s], rank = ranks_[b.rank].from[s];
+    const Clocks common = group < rank ? rank : group;
+    return own < common ? common : own;
   }
-  Clocks precharge_from(unsigned bank) const { return banks_[bank].precharge_from; }
-  Clocks column_from(unsigned bank, bool write) const {
-    const Bank& b = banks_[bank];
-    const Group& g = groups_[b.group];
-    const Rank& r = ranks_[b.rank];
-    const Clocks bus = data_end_ + (b.rank == data_rank_ ? 0 : grade_.rank_switch);
-    const Clocks latency = write ? grade_.cwl : grade_.cl;
-    const Clocks same_rank =
-        write ? std::max(g.write_from, r.write_from) : std::max(g.read_from, r.read_from);
-    return std::max(std::max(b.column_from, same_rank), bus > latency ? bus - latency : 0);
-  }
+  Clocks precharge_from(unsigned bank) const { return from(bank, DramStep::precharge); }
   Clocks precharge_all_from(unsigned rank) const;
   Clocks refresh_from(unsigned rank) const;
   Clocks refresh_bank_from(unsigned bank) const {
-    return std::max(activate_from(bank), ranks_[banks_[bank].rank].refresh_bank_from);
+    return std::max(from(bank, DramStep::activate), ranks_[banks_[bank].rank].refresh_bank_from);
   }
 
   // The commands. REQUIRES: `now` is not before the above.
@@ -69,18 +65,27 @@ class DramBanks {
   void refresh_bank(unsigned bank, Clocks now);
 
  private:
+  // From when on each step is possible, as far as one bank, one group or one rank with the data bus is
+  // concerned.
+  struct Steps : std::array<Clocks, dram_steps> {
+    void not_before(DramStep step, Clocks clock) {
+      Clocks& own = (*this)[static_cast<std::size_t>(step)];
+      own = std::max(own, clock);
+    }
+  };
   struct Bank {
     std::uint64_t row = no_row;
-    Clocks activate_from = 0, precharge_from = 0, column_from = 0;
+    Steps from{};
     Clocks last_use = 0;
     unsigned rank = 0;
     unsigned group = 0;  // of all ranks
   };
   struct Group {
-    Clocks activate_from = 0, read_from = 0, write_from = 0;
+    Steps from{};
   };
   struct Rank {
-    Clocks activate_from = 0, read_from = 0, write_from = 0, refresh_bank_from = 0;
+    Steps from{};
+    Clocks refresh_bank_from = 0;
     std::array<Clocks, 4> four_activates{};  // tFAW after the last four
     unsigned oldest = 0;
     unsigned open = 0;  // banks
@@ -89,13 +94,12 @@ class DramBanks {
   };
   void count_activate(const Bank& bank, Clocks now);
   void close(Bank& bank, Clocks at, Clocks trp);
+  void occupy_bus(unsigned rank, Clocks end);
 
   Grade grade_;
   std::vector<Bank> banks_;
   std::vector<Group> groups_;
   std::vector<Rank> ranks_;
-  Clocks data_end_ = 0;
-  unsigned data_rank_ = 0;
 };
 
 }  // namespace earshot

@@ -38,8 +38,9 @@ DramChannel::DramChannel(const DramConfig& config, unsigned channel)
 
 void DramChannel::enqueue(const DramBurst& burst, Clocks now, std::vector<DramCompletion>& completions) {
   if (empty() && now > 0) run_until(now - 1, unused_);
+  const unsigned bank = banks_.number(burst.place.rank, burst.place.group, burst.place.bank);
+  chosen_ = choice_stands(burst.write, bank, now);
   cursor_ = std::max(cursor_, now);
-  chosen_ = false;
   if (burst.write) {
     if (!merge(burst)) append(writes_, burst, now);
     completions.push_back({burst.id, now, now});
@@ -48,6 +49,10 @@ void DramChannel::enqueue(const DramBurst& burst, Clocks now, std::vector<DramCo
     completions.push_back({burst.id, now, now + 1});
   } else {
     append(reads_, burst, now);
+    if (!chosen_ || served_ != &reads_) return;
+    BurstQueue::Turn& turn = reads_.turn_of(bank);
+    turn.clock = clock_of(reads_, turn, no_sooner(0));
+    consider_turn(reads_, turn);
   }
 }
 

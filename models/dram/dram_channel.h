@@ -134,9 +134,16 @@ class DramChannel {
   BurstQueue& queue_to_serve();
   Slot oldest_free(const BurstQueue& queue) const;
   Choice next_command(BurstQueue& queue, Slot slot) const;
-  Priority priority_of(bool column, bool activate) const {
-    if (column) return config_.row_first ? third_kind : first_kind;
-    return activate || !config_.row_first ? second_kind : first_kind;
+  bool choice_stands(bool write, unsigned bank, Clocks now) const;
+  Clocks clock_of(BurstQueue& queue, BurstQueue::Turn& turn, Clocks floor) const;
+  void consider_turn(BurstQueue& queue, const BurstQueue::Turn& turn);
+  static DramCommand command_of(DramStep step) {
+    if (step >= DramStep::read) return step == DramStep::read ? DramCommand::read : DramCommand::write;
+    return step == DramStep::activate ? DramCommand::activate : DramCommand::precharge;
+  }
+  Priority priority_of(DramStep step) const {
+    if (step >= DramStep::read) return config_.row_first ? third_kind : first_kind;
+    return step == DramStep::activate || !config_.row_first ? second_kind : first_kind;
   }
   bool goes_first(Clocks clock, unsigned priority, std::uint64_t order) const {
     if (clock != choice_.clock) return clock < choice_.clock;
@@ -170,9 +177,11 @@ class DramChannel {
 
   Clocks cursor_ = 0;  // everything before has happened
   Clocks command_bus_free_ = 0;
-  bool chosen_ = false;  // the two below are valid
+  bool chosen_ = false;  // what follows is valid
   Choice choice_;
   Clocks change_ = never;  // when another choice may be due although nothing arrives
+  BurstQueue* served_ = nullptr;  // the queue whose banks all took part, if not limited by a request over age
+  bool some_shut_ = false;
 
   DramCounts counts_;
   std::uint64_t beats_ = 0;

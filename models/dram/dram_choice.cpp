@@ -10,6 +10,8 @@ namespace earshot {
 void DramChannel::choose() {
   choice_ = Choice{};
   change_ = never;
+  served_ = nullptr;
+  some_shut_ = false;
   ++choices_;
   if (config_.refresh != DramRefresh::off) choose_refresh();
   if (!empty()) {
@@ -31,6 +33,7 @@ void DramChannel::choose_refresh() {
     const bool forced = rank.begun || cursor_ >= rank.debt.last_call();
     const bool wanted = (per_bank ? bank_states_[bank].queued : rank.queued) == 0;
     if (forced) {
+      some_shut_ = true;
       for (unsigned b = per_bank ? bank : first; b < (per_bank ? bank + 1 : first + banks_.banks_of_rank());
            ++b)
         bank_states_[b].shut = choices_;
@@ -57,17 +60,13 @@ DramChannel::Choice DramChannel::next_command(BurstQueue& queue, Slot slot) cons
   choice.bank = e.bank;
   choice.queue = &queue;
   choice.slot = slot;
-  choice.priority = priority_of(row == e.row, row == DramBanks::no_row);
-  if (row == e.row) {
-    choice.clock = no_sooner(banks_.column_from(e.bank, queue.write()));
-    choice.command = queue.write() ? DramCommand::write : DramCommand::read;
-  } else if (row == DramBanks::no_row) {
-    choice.clock = no_sooner(banks_.activate_from(e.bank));
-    choice.command = DramCommand::activate;
-  } else {
-    choice.clock = no_sooner(banks_.precharge_from(e.bank));
-    choice.command = DramCommand::precharge;
-  }
+  const DramStep step = row == DramBanks::no_row ? DramStep::activate
+                        : row != e.row           ? DramStep::precharge
+                        : queue.write()          ? DramStep::write
+                                                 : DramStep::read;
+  choice.priority = priority_of(step);
+  choice.clock = no_sooner(banks_.from(e.bank, step));
+  choice.command = command_of(step);
   return choice;
 }
 
@@ -116,24 +115,61 @@ void DramChannel::choose_first_ready(BurstQueue& queue) {
     aged.priority = over_age;
     consider(aged);
   }
-  // Here the scheduler spends its time: no Choice is made for banks whose turn it cannot be.
+  if (aged.queue == nullptr) served_ = &queue;
+  // Here the scheduler spends its time, so the clocks are compared first, all of them, without branches that
+  // nobody can predict.
   const Clocks floor = no_sooner(0);
-  for (const unsigned bank : queue.banks()) {
-    if (bank_states_[bank].shut == choices_) continue;
-    const std::uint64_t row = banks_.row(bank);
-    const Slot slot = queue.pick(bank, row);
-    if (slot == BurstQueue::none) continue;
-    const bool column = row == queue[slot].row;
-    const bool activate = row == DramBanks::no_row;
-    const Clocks from = column     ? banks_.column_from(bank, queue.write())
-                        : activate ? banks_.activate_from(bank)
-                                   : banks_.precharge_from(bank);
-    if (!goes_first(std::max(from, floor), priority_of(column, activate), queue[slot].order)) continue;
+  Clocks first = choice_.clock;
+  for (BurstQueue::Turn& turn : queue.turns()) {
+    turn.clock = clock_of(queue, turn, floor);
     if (aged.queue != nullptr &&
-        (bank == aged.bank || column || (activate && aged.command == DramCommand::activate)))
-      continue;
-    consider(next_command(queue, slot));
+        (turn.bank == aged.bank || turn.step >= DramStep::read ||
+         (turn.step == DramStep::activate && aged.command == DramCommand::activate)))
+      turn.clock = never;
+    first = turn.clock < first ? turn.clock : first;
   }
+  const BurstQueue::Turn* best = nullptr;
+  std::uint64_t lowest = ~std::uint64_t{0};
+  for (const BurstQueue::Turn& turn : queue.turns()) {
+    const std::uint64_t place = turn.clock == first ? turn.place : ~std::uint64_t{0};
+    best = place < lowest ? &turn : best;
+    lowest = place < lowest ? place : lowest;
+  }
+  if (best != nullptr && first != never) consider_turn(queue, *best);
+}
+
+Clocks DramChannel::clock_of(BurstQueue& queue, BurstQueue::Turn& turn, Clocks floor) const {
+  if (!turn.known) {
+    queue.know(turn, banks_.row(turn.bank));
+    turn.place = std::uint64_t{priority_of(turn.step)} << 60 | turn.order;  // no run has 2^60 bursts
+  }
+  if (turn.slot == BurstQueue::none || (some_shut_ && bank_states_[turn.bank].shut == choices_)) return never;
+  const Clocks from = banks_.from(turn.bank, turn.step);
+  return from < floor ? floor : from;
+}
+
+void DramChannel::consider_turn(BurstQueue& queue, const BurstQueue::Turn& turn) {
+  const Priority priority = priority_of(turn.step);
+  if (!goes_first(turn.clock, priority, turn.order)) return;
+  choice_.clock = turn.clock;
+  choice_.priority = priority;
+  choice_.order = turn.order;
+  choice_.command = command_of(turn.step);
+  choice_.bank = turn.bank;
+  choice_.queue = &queue;
+  choice_.slot = turn.slot;
+}
+
+// Whether choose(), after a burst has come to this bank, would find the same as before, but for this burst.
+// Everything else is possible at choice_.clock or later, so time alone changes nothing before change_.
+// Refresh and idle rows depend on which banks have no bursts, the queue to serve on the number of writes and
+// on whether there are reads.
+bool DramChannel::choice_stands(bool write, unsigned bank, Clocks now) const {
+  if (!chosen_ || served_ == nullptr || now >= change_ || now > choice_.clock || reads_.empty()) return false;
+  if (bank == choice_.bank) return false;  // a hit would take the place of the precharge chosen
+  if (write && (served_ == &writes_ || writes_.size() + 1 >= config_.write_high)) return false;
+  const bool by_rank = config_.refresh != DramRefresh::per_bank && config_.rows != DramRows::idle_timeout;
+  return (by_rank ? ranks_[banks_.rank_of(bank)].queued : bank_states_[bank].queued) != 0;
 }
 
 void DramChannel::choose_idle_rows() {

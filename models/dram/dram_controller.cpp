@@ -11,7 +11,7 @@
 namespace earshot {
 
 DramController::DramController(sc_core::sc_module_name name, const DramConfig& config)
-    : sc_module(name), config_(config), wake_("wake") {
+    : sc_module(name), config_(config), burst_bytes_(config.burst_bytes()), wake_("wake") {
   target_socket.bind(static_cast<tlm::tlm_fw_transport_if<>&>(*this));
   const std::vector<std::string> problems = config.problems();
   if (!problems.empty()) {
@@ -28,6 +28,7 @@ DramController::DramController(sc_core::sc_module_name name, const DramConfig& c
   }
   for (unsigned c = 0; c < config.channels; ++c)
     channels_.push_back(std::make_unique<DramChannel>(config, c));
+  event_memos_.resize(config.channels);
   SC_HAS_PROCESS(DramController);
   SC_METHOD(work);
   sensitive << wake_;
@@ -37,11 +38,8 @@ DramController::DramController(sc_core::sc_module_name name, const DramConfig& c
 // The only process. Whatever is due now, in the order of cause and effect.
 void DramController::work() {
   const Picoseconds now = now_ps();
-  for (const auto& channel : channels_) {
-    const Clocks next = channel->next_event();
-    if (next == DramChannel::never || config_.grade.clock.edge(next) > now) continue;
-    channel->advance(clock_now(), completions_);
-  }
+  for (unsigned c = 0; c < channels_.size(); ++c)
+    if (event_time(c) <= now) channels_[c]->advance(clock_now(), completions_);
   note_completions();
   while (!coming_.empty() && coming_.top().time <= now) {
     const unsigned id = coming_.top().id;
@@ -72,22 +70,29 @@ unsigned DramController::take(tlm::tlm_generic_payload& payload, bool blocking) 
   request.entered = request.finished = request.waits_for = 0;
   request.done = 0;
   request.started = DramChannel::never;
-  request.first_burst = payload.get_address() / config_.burst_bytes();
-  const std::uint64_t last = (payload.get_address() + (payload_extent(payload) - 1)) / config_.burst_bytes();
-  request.bursts = static_cast<unsigned>(last - request.first_burst + 1);
+  request.first_burst = payload.get_address() / burst_bytes_;
+  const std::uint64_t reach = payload.get_address() % burst_bytes_ + (payload_extent(payload) - 1);
+  request.last_burst = request.first_burst + (reach < burst_bytes_ ? 0 : reach / burst_bytes_);
+  request.bursts = static_cast<unsigned>(request.last_burst - request.first_burst + 1);
   return id;
 }
 
 void DramController::arrive(unsigned id) {
   Request& request = *requests_[id];
   request.arrived = now_ps();
-  const std::uint64_t last = request.first_burst + (request.bursts - 1);
-  for (const Outstanding& older : outstanding_) {
-    if (older.last_burst < request.first_burst || last < older.first_burst) continue;
-    requests_[older.id]->followed = true;
+  bool shared = false;
+  for (std::uint64_t burst = request.first_burst; burst <= request.last_burst; ++burst)
+    shared |= touched(burst)++ != 0;
+  for (unsigned i = shared ? oldest_ : nobody; i != nobody; i = requests_[i]->younger) {
+    Request& older = *requests_[i];
+    if (!overlap(older, request)) continue;
+    older.followed = true;
     ++request.waits_for;
   }
-  outstanding_.push_back({id, request.first_burst, last});
+  request.older = youngest_;
+  request.younger = nobody;
+  (youngest_ == nobody ? oldest_ : requests_[youngest_]->younger) = id;
+  youngest_ = id;
   entry_.push_back(id);
   entry_meter_.enter(request.arrived);
 }
@@ -121,16 +126,13 @@ bool DramController::enter_bursts(unsigned id) {
 
 DramBurst DramController::burst_of(const Request& request, unsigned id, unsigned index) const {
   const tlm::tlm_generic_payload& payload = *request.payload;
-  DramBurst burst;
-  burst.id = id;
-  burst.write = payload.is_write();
-  burst.number = request.first_burst + index;
-  burst.place = map_->place(burst.number);
+  const std::uint64_t number = request.first_burst + index;
+  DramBurst burst{id, payload.is_write(), number, map_->place(number)};
   if (burst.write && payload.get_byte_enable_ptr() != nullptr) return burst;  // which bytes is not known here
-  const std::uint64_t begin = burst.number * config_.burst_bytes();
+  const std::uint64_t begin = burst.number * burst_bytes_;
   const std::uint64_t address = payload.get_address();
   const std::uint64_t from = std::max(address, begin);
-  const std::uint64_t until = std::min(address + payload_extent(payload), begin + config_.burst_bytes());
+  const std::uint64_t until = std::min(address + payload_extent(payload), begin + burst_bytes_);
   burst.first = static_cast<unsigned>(from - begin);
   burst.last = static_cast<unsigned>(until - begin);
   return burst;
@@ -157,20 +159,19 @@ void DramController::complete(unsigned id) {
 // Lets younger requests of the same bursts follow.
 void DramController::respond(unsigned id) {
   Request& request = *requests_[id];
-  const auto mine = std::find_if(outstanding_.begin(), outstanding_.end(),
-                                 [id](const Outstanding& one) { return one.id == id; });
-  const Outstanding own = *mine;
-  auto next = outstanding_.erase(mine);
+  for (std::uint64_t burst = request.first_burst; burst <= request.last_burst; ++burst) --touched(burst);
+  (request.older == nobody ? oldest_ : requests_[request.older]->younger) = request.younger;
+  (request.younger == nobody ? youngest_ : requests_[request.younger]->older) = request.older;
   if (request.blocking)
     request.responded.notify();
   else
     responses_.push_back(id);
   if (!request.followed) return;
   std::vector<unsigned> released;
-  for (; next != outstanding_.end(); ++next)
-    if (next->first_burst <= own.last_burst && own.first_burst <= next->last_burst &&
-        --requests_[next->id]->waits_for == 0 && requests_[next->id]->complete)
-      released.push_back(next->id);
+  for (unsigned next = request.younger; next != nobody; next = requests_[next]->younger) {
+    Request& younger = *requests_[next];
+    if (overlap(younger, request) && --younger.waits_for == 0 && younger.complete) released.push_back(next);
+  }
   for (const unsigned follower : released) respond(follower);
 }
 
@@ -185,13 +186,18 @@ void DramController::forget(unsigned id) {
   free_ids_.push_back(id);
 }
 
+Picoseconds DramController::event_time(unsigned channel) const {
+  const Clocks next = channels_[channel]->next_event();
+  if (next == DramChannel::never) return ~Picoseconds{0};
+  Moment& memo = event_memos_[channel];
+  if (next != memo.clock) memo = {next, config_.grade.clock.edge(next)};
+  return memo.time;
+}
+
 // An sc_event keeps the earliest of the times it is told.
 void DramController::schedule() {
   Picoseconds next = ~Picoseconds{0};
-  for (const auto& channel : channels_) {
-    const Clocks event = channel->next_event();
-    if (event != DramChannel::never) next = std::min(next, config_.grade.clock.edge(event));
-  }
+  for (unsigned c = 0; c < channels_.size(); ++c) next = std::min(next, event_time(c));
   if (!completing_.empty()) next = std::min(next, completing_.top().time);
   if (!coming_.empty()) next = std::min(next, coming_.top().time);
   if (!responses_.empty() && response_open_ == nobody) next = std::min(next, response_from_);

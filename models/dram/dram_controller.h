@@ -35,6 +35,7 @@
 // reported by the constructor, all of it in one error, id "/earshot/dram/config".
 #pragma once
 
+#include <array>
 #include <deque>
 #include <memory>
 #include <queue>
@@ -84,22 +85,19 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
   }
 
  private:
+  static constexpr unsigned nobody = ~0u;
   struct Request {
     tlm::tlm_generic_payload* payload = nullptr;
     bool blocking = false;
     bool complete = false;  // but for responses that go before
     Picoseconds arrived = 0, completed = 0;
     Clocks started = 0, done = 0;
-    std::uint64_t first_burst = 0;
+    std::uint64_t first_burst = 0, last_burst = 0;
     unsigned bursts = 0, entered = 0, finished = 0;
+    unsigned older = nobody, younger = nobody;  // of those without a response yet, in order of arrival
     unsigned waits_for = 0;       // older outstanding requests with a burst in common
     bool followed = false;        // a younger one waits for this
     sc_core::sc_event responded;  // wakes the caller of b_transport
-  };
-  // Requests without a response yet, in order of arrival.
-  struct Outstanding {
-    unsigned id;
-    std::uint64_t first_burst, last_burst;
   };
   struct Appointment {
     Picoseconds time;
@@ -121,10 +119,20 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
   void note_completions();
   void complete(unsigned id);
   void respond(unsigned id);
+  static bool overlap(const Request& one, const Request& other) {
+    return one.first_burst <= other.last_burst && other.first_burst <= one.last_burst;
+  }
+  unsigned& touched(std::uint64_t burst) { return touched_[burst % touched_.size()]; }
   void forget(unsigned id);
   void tell_waiting(Request& request) const;
   void schedule();
-  Clocks clock_now() const { return config_.grade.clock.edge_at_or_after(now_ps()); }
+  // The next two remember their last answers, since a division costs more than most of what is done here.
+  Clocks clock_now() const {
+    if (now_ps() != clock_memo_.time)
+      clock_memo_ = {config_.grade.clock.edge_at_or_after(now_ps()), now_ps()};
+    return clock_memo_.clock;
+  }
+  Picoseconds event_time(unsigned channel) const;  // ~0: none
   Clocks latency() const { return config_.frontend + config_.backend; }
 
   // dram_controller_socket.cpp: the socket
@@ -145,20 +153,29 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
                       const std::string& expected);
   std::string initiator_name() const;
 
+  struct Moment {
+    Clocks clock = 0;
+    Picoseconds time = 0;
+  };
+
   const DramConfig config_;
+  const std::uint64_t burst_bytes_;
   std::uint64_t last_byte_ = 0;
   SparseBytes bytes_;
   std::unique_ptr<DramAddressMap> map_;
   std::vector<std::unique_ptr<DramChannel>> channels_;  // event_driven
+  mutable std::vector<Moment> event_memos_;             // by channel
+  mutable Moment clock_memo_;
   std::unique_ptr<DramEstimate> estimate_;              // annotated
 
-  static constexpr unsigned nobody = ~0u;
   std::vector<std::unique_ptr<Request>> requests_;  // by id; those of free_ids_ are not in use
   std::vector<unsigned> free_ids_;
   Agenda coming_;               // nonblocking requests that take effect later
   std::deque<unsigned> entry_;  // arrived, not wholly in the queues
   Agenda completing_;
-  std::vector<Outstanding> outstanding_;
+  unsigned oldest_ = nobody, youngest_ = nobody;  // without a response yet
+  // How many of those touch a burst whose number leaves this remainder: nobody need be asked where it is 0.
+  std::array<unsigned, 1024> touched_{};
   std::deque<unsigned> responses_;   // nonblocking, ready to be sent
   unsigned request_open_ = nobody;   // BEGIN_REQ without END_REQ
   unsigned response_open_ = nobody;  // BEGIN_RESP without END_RESP

@@ -18,9 +18,16 @@ struct ExactClock {
   std::uint64_t clocks = 1;       // both at least 1
   Picoseconds picoseconds = 1000;
 
-  Picoseconds edge(Clocks n) const { return static_cast<Picoseconds>(Wide{n} * picoseconds / clocks); }
+  Picoseconds edge(Clocks n) const {
+    Picoseconds product = 0;  // a division of 128 bits costs several times one of 64
+    if (!__builtin_mul_overflow(n, picoseconds, &product)) return product / clocks;
+    return static_cast<Picoseconds>(Wide{n} * picoseconds / clocks);
+  }
   // The number of the first edge at or after `time`.
   Clocks edge_at_or_after(Picoseconds time) const {
+    Picoseconds sum = 0;
+    if (!__builtin_mul_overflow(time, clocks, &sum) && !__builtin_add_overflow(sum, picoseconds - 1, &sum))
+      return sum / picoseconds;
     return static_cast<Clocks>((Wide{time} * clocks + picoseconds - 1) / picoseconds);
   }
 
