@@ -7,8 +7,9 @@
 namespace earshot {
 
 Bottleneck find_bottleneck(const std::vector<Resource>& resources, const Load& load) {
-  const Resource& busiest = *std::max_element(resources.begin(), resources.end(),
-                                              [](const Resource& a, const Resource& b) { return a.busy < b.busy; });
+  const Resource& busiest =
+      *std::max_element(resources.begin(), resources.end(),
+                        [](const Resource& a, const Resource& b) { return a.busy < b.busy; });
   Bottleneck found;
   found.resource = busiest.name;
   if (load.elapsed == 0 || load.accesses == 0 || busiest.busy == 0) return found;

@@ -10,7 +10,9 @@ std::string line_of(const CommandRecord& record, const ExactClock& clock) {
   const bool opens = record.command == DramCommand::activate;
   const bool moves = record.command == DramCommand::read || record.command == DramCommand::read_precharge ||
                      record.command == DramCommand::write || record.command == DramCommand::write_precharge;
-  const auto field = [](bool has, std::uint64_t value) { return "," + (has ? std::to_string(value) : std::string()); };
+  const auto field = [](bool has, std::uint64_t value) {
+    return "," + (has ? std::to_string(value) : std::string());
+  };
   return std::to_string(record.channel) + "," + std::to_string(record.clock) + "," +
          std::to_string(clock.edge(record.clock)) + "," + name_of(record.command) + field(true, record.rank) +
          field(!of_rank, record.bank_group) + field(!of_rank, record.bank) + field(opens, record.row) +

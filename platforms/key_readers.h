@@ -98,7 +98,8 @@ template <typename Place>
 Apply numbers(Place place) {
   return [=](const std::string& text, Settings& settings) -> std::string {
     std::vector<std::uint64_t> values;
-    if (!parse_numbers(text, 1000000, values)) return "whole numbers up to 1000000, separated by commas: 0, 1, 3";
+    if (!parse_numbers(text, 1000000, values))
+      return "whole numbers up to 1000000, separated by commas: 0, 1, 3";
     place(settings).assign(values.begin(), values.end());
     return {};
   };

@@ -65,8 +65,7 @@ Json memory_results(const Platform& platform, const SnoopingBusTotals& totals, c
   Json drams = Json::array();
   for (std::size_t i = 0; i < platform.cached_memories().size(); ++i) {
     const WindowMemory& memory = *platform.cached_memories()[i];
-    if (memory.dram() != nullptr)
-      drams.push_back(dram_results(memory, played, i));
+    if (memory.dram() != nullptr) drams.push_back(dram_results(memory, played, i));
   }
   out["dram"] = drams;
   return out;
@@ -74,7 +73,8 @@ Json memory_results(const Platform& platform, const SnoopingBusTotals& totals, c
 
 std::vector<Resource> memory_resources(const Platform& platform, const Played& played, std::size_t index) {
   const WindowMemory& memory = *platform.cached_memories()[index];
-  const std::string which = platform.cached_memories().size() == 1 ? "" : " of window " + memory.window().name;
+  const std::string which =
+      platform.cached_memories().size() == 1 ? "" : " of window " + memory.window().name;
   if (memory.dram() == nullptr) return {{"memory" + which, played.memory_busy[index]}};
   const DramConfig& config = memory.dram()->config();
   const std::uint64_t banks = std::uint64_t{config.channels} * config.ranks * config.grade.banks();

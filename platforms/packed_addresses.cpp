@@ -27,7 +27,8 @@ class Moved : public AccessSource {
 
 PackedAddresses::PackedAddresses(const std::string& recording, const std::vector<Window>& windows)
     : windows_(windows) {
-  const auto cached = std::find_if(windows.begin(), windows.end(), [](const Window& window) { return window.cached; });
+  const auto cached =
+      std::find_if(windows.begin(), windows.end(), [](const Window& window) { return window.cached; });
   if (cached == windows.end()) throw RecordingError(recording + ": packed addresses need a cached window");
   base_ = cached->base;
 
@@ -40,10 +41,12 @@ PackedAddresses::PackedAddresses(const std::string& recording, const std::vector
   }
   pages_.assign(touched.begin(), touched.end());
   std::sort(pages_.begin(), pages_.end());
-  const std::uint64_t room = (cached->last() - cached->base) / page_bytes + (cached->size % page_bytes == 0 ? 1 : 0);
+  const std::uint64_t room =
+      (cached->last() - cached->base) / page_bytes + (cached->size % page_bytes == 0 ? 1 : 0);
   if (pages_.size() > room)
-    throw RecordingError(recording + ": touches " + std::to_string(pages_.size()) + " pages of 4 KiB; window '" +
-                         cached->name + "' has room for " + std::to_string(room));
+    throw RecordingError(recording + ": touches " + std::to_string(pages_.size()) +
+                         " pages of 4 KiB; window '" + cached->name + "' has room for " +
+                         std::to_string(room));
 }
 
 bool PackedAddresses::stays(std::uint64_t address) const {

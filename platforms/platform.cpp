@@ -25,7 +25,8 @@ class FirstInitiator : public AccessSource {
     if (without_cache == 0) return more;
     const int first = static_cast<int>(caches_) + __builtin_ctzll(without_cache);
     throw PlayError("has accesses of initiator " + std::to_string(first) + ", but there are only " +
-                    std::to_string(caches_) + " caches: set caches.count to " + std::to_string(first + 1) + " or more");
+                    std::to_string(caches_) + " caches: set caches.count to " + std::to_string(first + 1) +
+                    " or more");
   }
 
  private:
@@ -35,7 +36,8 @@ class FirstInitiator : public AccessSource {
 
 }  // namespace
 
-Platform::Platform(const Settings& settings, std::shared_ptr<const Table> table, const PlayerHooks& progress) {
+Platform::Platform(const Settings& settings, std::shared_ptr<const Table> table,
+                   const PlayerHooks& progress) {
   build_bus(settings);
   build_memories(settings);
   build_caches(settings, table);
@@ -93,8 +95,8 @@ void Platform::build_players(const Settings& settings, PlayerHooks hooks) {
   hooks.replace = [this](std::uint32_t initiator, std::uint64_t address, const sc_core::sc_time& delay) {
     const tlm::tlm_response_status status = caches_[initiator]->replace(address, delay);
     if (status != tlm::TLM_OK_RESPONSE)
-      throw PlayError("memory refused the write-back that a replace of initiator " + std::to_string(initiator) +
-                      " caused");
+      throw PlayError("memory refused the write-back that a replace of initiator " +
+                      std::to_string(initiator) + " caused");
   };
   hooks.finished = [this] {
     if (--playing_ == 0) sc_core::sc_pause();

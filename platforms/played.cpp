@@ -38,7 +38,8 @@ void simulate_on(Platform& platform, Duration... duration) {
 [[noreturn]] void unusable(const Settings& settings, const PlayError& error) {
   std::string text = (settings.recording.empty() ? "the pattern" : settings.recording) + ": " + error.what();
   const bool addressed = text.find("TLM_ADDRESS_ERROR_RESPONSE") != std::string::npos;
-  if (addressed && !settings.recording.empty() && !settings.packed && settings.memory_kind == MemoryKind::dram)
+  if (addressed && !settings.recording.empty() && !settings.packed &&
+      settings.memory_kind == MemoryKind::dram)
     text += "; no window holds that address: workload.addresses = packed moves a recording's pages together";
   throw UsageError(text);
 }
@@ -60,7 +61,8 @@ Picoseconds play_all(const Settings& settings, Platform& platform) {
     simulate_on(platform, from_ps(settings.bus_clock));
   }
   elapsed = std::max(elapsed, platform.bus().busy_until());
-  for (const WindowMemory* memory : platform.cached_memories()) elapsed = std::max(elapsed, memory->busy_until());
+  for (const WindowMemory* memory : platform.cached_memories())
+    elapsed = std::max(elapsed, memory->busy_until());
   // Annotated times may lie ahead of simulation time.
   if (elapsed > now_ps()) simulate_on(platform, from_ps(elapsed - now_ps()));
   return elapsed;
@@ -69,13 +71,14 @@ Picoseconds play_all(const Settings& settings, Platform& platform) {
 void check_values(Platform& platform) {
   const RecordedOrder* order = platform.recorded_order();
   if (order == nullptr || order->reads_that_differ() == 0) return;
-  throw Finding(std::to_string(order->reads_that_differ()) + " of " + std::to_string(order->reads_compared()) +
-                " reads returned another value than the recording has. " +
-                (platform.monitor() == nullptr
-                     ? "Run with monitor = on to see whether an access was incoherent. First: "
-                     : "Every access was coherent, so the recording is not in the order its values came about. "
-                       "First: ") +
-                order->first_difference());
+  throw Finding(
+      std::to_string(order->reads_that_differ()) + " of " + std::to_string(order->reads_compared()) +
+      " reads returned another value than the recording has. " +
+      (platform.monitor() == nullptr
+           ? "Run with monitor = on to see whether an access was incoherent. First: "
+           : "Every access was coherent, so the recording is not in the order its values came about. "
+             "First: ") +
+      order->first_difference());
 }
 
 void add_queues(const DramController& dram, std::vector<MeteredQueue>& queues) {
@@ -137,12 +140,15 @@ Played play(const Settings& settings, Platform& platform) {
 
 std::vector<std::string> broken_laws(Platform& platform) {
   std::vector<std::string> broken = platform.bus().broken_laws();
-  const auto add = [&](const std::vector<std::string>& more) { broken.insert(broken.end(), more.begin(), more.end()); };
+  const auto add = [&](const std::vector<std::string>& more) {
+    broken.insert(broken.end(), more.begin(), more.end());
+  };
   for (const auto& cache : platform.caches()) {
     add(cache->broken_laws());
     const CacheTotals totals = cache->totals();
     if (totals.parts.total() != totals.latency().sum())
-      broken.push_back(std::string(cache->name()) + ": the parts of its accesses' latencies are not their sum");
+      broken.push_back(std::string(cache->name()) +
+                       ": the parts of its accesses' latencies are not their sum");
   }
   for (const WindowMemory* memory : platform.cached_memories())
     if (memory->dram() != nullptr) add(memory->dram()->broken_laws());

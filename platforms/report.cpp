@@ -42,9 +42,15 @@ std::string wrapped(const std::string& text, std::size_t indent) {
   return out + line + "\n";
 }
 
-std::uint64_t count(const Json& json, const char* key) { return json.at(key).get<std::uint64_t>(); }
-double real(const Json& json, const char* key) { return json.at(key).get<double>(); }
-std::string counted(const Json& json, const char* key) { return with_commas(count(json, key)); }
+std::uint64_t count(const Json& json, const char* key) {
+  return json.at(key).get<std::uint64_t>();
+}
+double real(const Json& json, const char* key) {
+  return json.at(key).get<double>();
+}
+std::string counted(const Json& json, const char* key) {
+  return with_commas(count(json, key));
+}
 
 std::string setting(const Json& results, const char* section, const char* key) {
   return results.at("configuration").at(section).at(key).get<std::string>();
@@ -55,15 +61,16 @@ std::uint64_t memory_writes(const Json& document) {
 }
 
 std::string writes_in_words(const Json& document) {
-  return counted(document.at("memory"), "block-writes") + " lines and " + counted(document.at("memory"), "word-writes") +
-         " words";
+  return counted(document.at("memory"), "block-writes") + " lines and " +
+         counted(document.at("memory"), "word-writes") + " words";
 }
 
 std::string headline(const Json& results) {
   const std::string recording = setting(results, "workload", "recording");
   const std::string input = recording.empty() ? "the pattern " + setting(results, "workload", "pattern")
                                               : std::filesystem::path(recording).filename().string();
-  const std::uint64_t played = count(results.at("accesses"), "reads") + count(results.at("accesses"), "writes") +
+  const std::uint64_t played = count(results.at("accesses"), "reads") +
+                               count(results.at("accesses"), "writes") +
                                count(results.at("accesses"), "uncached");
   return wrapped(results.at("protocol").get<std::string>() + ": " + setting(results, "caches", "count") +
                      " caches of " + setting(results, "caches", "size") + ", " + with_commas(played) +
@@ -108,8 +115,10 @@ std::string saturation(const Json& results) {
   std::string others;
   for (const Json& one : first.at("resources"))
     if (const std::string other = one.at("resource").get<std::string>(); other != name)
-      others += (others.empty() ? " The others: " : ", ") + other + format(" %.1f %%", 100 * real(one, "utilisation"));
-  text += others + format("%s The run takes %.3f us", others.empty() ? "" : ".", real(results, "elapsed-ns") / 1000);
+      others += (others.empty() ? " The others: " : ", ") + other +
+                format(" %.1f %%", 100 * real(one, "utilisation"));
+  text += others +
+          format("%s The run takes %.3f us", others.empty() ? "" : ".", real(results, "elapsed-ns") / 1000);
   if (results.contains("baseline"))
     text += format(", the baseline %.3f us", real(results.at("baseline"), "elapsed-ns") / 1000);
   return wrapped(text + ".", 2);
@@ -118,17 +127,19 @@ std::string saturation(const Json& results) {
 std::string supplies(const Json& results) {
   const Json& from = results.at("supplies");
   return wrapped("Lines fetched: " + counted(from, "owner") + " from an owner instead of memory, " +
-                     counted(from, "sharer") + " from a clean copy, " + counted(from, "memory") + " from memory.",
+                     counted(from, "sharer") + " from a clean copy, " + counted(from, "memory") +
+                     " from memory.",
                  2);
 }
 
 std::string latency_table(const Json& results) {
   const Json& latency = results.at("latency");
   const double mean = real(latency, "mean-ns");
-  std::string out = format("  An access takes %.3f ns on average: half within %.1f, 95 %% within %.1f,\n"
-                           "  99 %% within %.1f, the slowest %.1f ns. Where the average goes:\n\n",
-                           mean, real(latency, "p50-ns"), real(latency, "p95-ns"), real(latency, "p99-ns"),
-                           real(latency, "max-ns"));
+  std::string out = format(
+      "  An access takes %.3f ns on average: half within %.1f, 95 %% within %.1f,\n"
+      "  99 %% within %.1f, the slowest %.1f ns. Where the average goes:\n\n",
+      mean, real(latency, "p50-ns"), real(latency, "p95-ns"), real(latency, "p99-ns"),
+      real(latency, "max-ns"));
   for (const auto& [name, part] : latency.at("parts-ns").items()) {
     const double share = mean > 0 ? part.get<double>() / mean : 0;
     const std::string bar(static_cast<std::size_t>(share * 36 + 0.5), '|');
@@ -143,9 +154,9 @@ std::string kind_table(const Json& results) {
   std::string out = "  Kind of access          count    mean ns     p95 ns     p99 ns     max ns\n";
   for (const auto& [kind, one] : results.at("latency").at("kinds").items()) {
     if (count(one, "count") == 0) continue;
-    out += format("    %-16s %10s %10.2f %10.1f %10.1f %10.1f%s\n", kind.c_str(), counted(one, "count").c_str(),
-                  real(one, "mean-ns"), real(one, "p95-ns"), real(one, "p99-ns"), real(one, "max-ns"),
-                  kind == "write-back" ? " *" : "");
+    out += format("    %-16s %10s %10.2f %10.1f %10.1f %10.1f%s\n", kind.c_str(),
+                  counted(one, "count").c_str(), real(one, "mean-ns"), real(one, "p95-ns"),
+                  real(one, "p99-ns"), real(one, "max-ns"), kind == "write-back" ? " *" : "");
   }
   const bool written_back = count(results.at("latency").at("kinds").at("write-back"), "count") > 0;
   return out + (written_back ? "    * of these no access waits for the end\n" : "");
@@ -157,9 +168,10 @@ std::string bus_table(const Json& results) {
   for (const auto& [kind, number] : bus.at("transactions").items()) {
     const Json& cost = bus.at("costs").at(kind);
     if (number.get<std::uint64_t>() == 0) continue;
-    out += format("    %-14s %10s %10.2f %10.2f %15s %12s\n", kind.c_str(),
-                  with_commas(number.get<std::uint64_t>()).c_str(), real(cost, "mean-ns"), real(cost, "wait-ns"),
-                  counted(cost, "address-cycles").c_str(), counted(cost, "data-cycles").c_str());
+    out +=
+        format("    %-14s %10s %10.2f %10.2f %15s %12s\n", kind.c_str(),
+               with_commas(number.get<std::uint64_t>()).c_str(), real(cost, "mean-ns"), real(cost, "wait-ns"),
+               counted(cost, "address-cycles").c_str(), counted(cost, "data-cycles").c_str());
   }
   return out;
 }
@@ -167,14 +179,17 @@ std::string bus_table(const Json& results) {
 std::string dram_lines(const Json& results) {
   std::string out;
   for (const Json& dram : results.at("memory").at("dram")) {
-    const double hits = real(dram, "row-hits"), closed = real(dram, "row-closed"), conflicts = real(dram, "row-conflicts");
+    const double hits = real(dram, "row-hits"), closed = real(dram, "row-closed"),
+                 conflicts = real(dram, "row-conflicts");
     const double all = std::max(1.0, hits + closed + conflicts);
-    std::string text = "DRAM " + dram.at("grade").get<std::string>() + ", " + counted(dram, "channels") + " x " +
-                       counted(dram, "channel-bits") + " bits";
-    if (results.at("memory").at("dram").size() > 1) text += ", window " + dram.at("window").get<std::string>();
-    text += ": of " + counted(dram, "read-bursts") + " reads and " + counted(dram, "write-bursts") + " writes " +
-            format("%.1f %% found their row open, %.1f %% the bank closed, %.1f %% another row; ", 100 * hits / all,
-                   100 * closed / all, 100 * conflicts / all) +
+    std::string text = "DRAM " + dram.at("grade").get<std::string>() + ", " + counted(dram, "channels") +
+                       " x " + counted(dram, "channel-bits") + " bits";
+    if (results.at("memory").at("dram").size() > 1)
+      text += ", window " + dram.at("window").get<std::string>();
+    text += ": of " + counted(dram, "read-bursts") + " reads and " + counted(dram, "write-bursts") +
+            " writes " +
+            format("%.1f %% found their row open, %.1f %% the bank closed, %.1f %% another row; ",
+                   100 * hits / all, 100 * closed / all, 100 * conflicts / all) +
             counted(dram, "refreshes") + " refreshes";
     if (const std::uint64_t banks = count(dram, "bank-refreshes"); banks > 0)
       text += ", " + with_commas(banks) + " of single banks";
@@ -206,8 +221,8 @@ std::string initiator_table(const Json& results) {
     const Json& accesses = one.at("accesses");
     const double all = static_cast<double>(count(accesses, "reads") + count(accesses, "writes"));
     out += format("    %-7llu %11s %11s %9.2f %10.3f %10.1f %10.1f\n",
-                  static_cast<unsigned long long>(count(one, "initiator")), counted(accesses, "reads").c_str(),
-                  counted(accesses, "writes").c_str(),
+                  static_cast<unsigned long long>(count(one, "initiator")),
+                  counted(accesses, "reads").c_str(), counted(accesses, "writes").c_str(),
                   all > 0 ? 100 * static_cast<double>(count(accesses, "hits")) / all : 0.0,
                   real(one.at("latency"), "mean-ns"), real(one.at("latency"), "p99-ns"),
                   real(one.at("latency"), "max-ns"));
@@ -218,15 +233,16 @@ std::string initiator_table(const Json& results) {
 std::string checks(const Json& results) {
   const Json& done = results.at("checks");
   std::string text = done.at("monitored").get<bool>()
-                         ? "Coherence: " + counted(done, "line-accesses-checked") + " accesses of lines checked, no violation"
+                         ? "Coherence: " + counted(done, "line-accesses-checked") +
+                               " accesses of lines checked, no violation"
                          : "Coherence was not monitored (monitor = on does)";
   if (count(done, "reads-compared-with-recording") > 0)
     text += "; " + counted(done, "reads-compared-with-recording") + " reads returned the recorded value";
   const std::uint64_t dirty = count(done, "dirty-lines-left");
   const std::uint64_t at_end = count(results.at("memory"), "block-writes-at-end");
-  if (at_end > 0) text += "; " + with_commas(at_end) + " dirty lines were written back at the end (counted above)";
-  if (dirty > 0)
-    text += "; " + with_commas(dirty) + " lines are still dirty in caches";
+  if (at_end > 0)
+    text += "; " + with_commas(at_end) + " dirty lines were written back at the end (counted above)";
+  if (dirty > 0) text += "; " + with_commas(dirty) + " lines are still dirty in caches";
   if (count(done, "queues-checked") > 0)
     text += "; Little's law holds in " + counted(done, "queues-checked") + " queues";
   return wrapped(text + ".", 2);
@@ -235,13 +251,15 @@ std::string checks(const Json& results) {
 }  // namespace
 
 std::string text_answer(const Json& results) {
-  return headline(results) + "\n" + decision(results) + "\n" + saturation(results) + "\n" + supplies(results) + "\n" +
-         latency_table(results) + "\n" + kind_table(results) + "\n" + bus_table(results) + "\n" + dram_lines(results) +
-         initiator_table(results) + "\n" + grant_table(results) +
-         checks(results) + "\n" + wrapped(results.at("caution").get<std::string>(), 2);
+  return headline(results) + "\n" + decision(results) + "\n" + saturation(results) + "\n" +
+         supplies(results) + "\n" + latency_table(results) + "\n" + kind_table(results) + "\n" +
+         bus_table(results) + "\n" + dram_lines(results) + initiator_table(results) + "\n" +
+         grant_table(results) + checks(results) + "\n" + wrapped(results.at("caution").get<std::string>(), 2);
 }
 
 // A path need not be UTF-8; JSON must.
-std::string json_text(const Json& results) { return results.dump(2, ' ', false, Json::error_handler_t::replace) + "\n"; }
+std::string json_text(const Json& results) {
+  return results.dump(2, ' ', false, Json::error_handler_t::replace) + "\n";
+}
 
 }  // namespace earshot

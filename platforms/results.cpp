@@ -161,13 +161,14 @@ Json bottleneck(const Settings& settings, const Platform& platform, const Played
 Json checks(Platform& platform, const Played& played) {
   std::uint64_t latencies = 0;
   for (const CacheTotals& one : played.caches) latencies += one.latency().count();
-  return {{"monitored", platform.monitor() != nullptr},
-          {"line-accesses-checked", platform.monitor() == nullptr ? 0 : platform.monitor()->accesses_checked()},
-          {"reads-compared-with-recording",
-           platform.recorded_order() == nullptr ? 0 : platform.recorded_order()->reads_compared()},
-          {"dirty-lines-left", played.dirty_lines},
-          {"latencies-checked", latencies},
-          {"queues-checked", played.queues.size()}};
+  return {
+      {"monitored", platform.monitor() != nullptr},
+      {"line-accesses-checked", platform.monitor() == nullptr ? 0 : platform.monitor()->accesses_checked()},
+      {"reads-compared-with-recording",
+       platform.recorded_order() == nullptr ? 0 : platform.recorded_order()->reads_compared()},
+      {"dirty-lines-left", played.dirty_lines},
+      {"latencies-checked", latencies},
+      {"queues-checked", played.queues.size()}};
 }
 
 std::string in_ns(Picoseconds time) {

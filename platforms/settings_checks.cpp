@@ -32,7 +32,9 @@ class Checks {
  private:
   bool is_given(const std::string& key) const { return given_.find(key) != given_.end(); }
   // Given, and not what it is anyway.
-  bool is_changed(const Key& key) const { return is_given(key.name) && given_.at(key.name).text != key.default_text; }
+  bool is_changed(const Key& key) const {
+    return is_given(key.name) && given_.at(key.name).text != key.default_text;
+  }
   std::string where(const std::string& key) const {
     const auto found = given_.find(key);
     return (found == given_.end() ? std::string("default") : found->second.where) + ": ";
@@ -42,7 +44,9 @@ class Checks {
                         [&](const auto& one) { return one.first == key; })
         ->second;
   }
-  void problem(const std::string& key, const std::string& what) { problems_.push_back(where(key) + key + what); }
+  void problem(const std::string& key, const std::string& what) {
+    problems_.push_back(where(key) + key + what);
+  }
   // A problem of a part of the models, which begins with the part's name for what the key sets.
   void renamed(const std::string& text, const std::vector<std::pair<const char*, const char*>>& keys,
                const char* otherwise);
@@ -74,10 +78,10 @@ void Checks::needs() {
       if (std::find(need.values.begin(), need.values.end(), text) != need.values.end()) continue;
       std::string values;
       for (const char* value : need.values) values += (values.empty() ? "" : " or ") + std::string(value);
-      const std::string left = *key.default_text == '\0' ? "leave the key out"
-                                                         : std::string("leave it at ") + key.default_text;
-      problem(key.name, " = " + text_of(key.name) + ": only with " + need.key + " = " + values + "; set that, or " +
-                            left);
+      const std::string left =
+          *key.default_text == '\0' ? "leave the key out" : std::string("leave it at ") + key.default_text;
+      problem(key.name, " = " + text_of(key.name) + ": only with " + need.key + " = " + values +
+                            "; set that, or " + left);
     }
   }
 }
@@ -90,7 +94,8 @@ void Checks::protocol() {
   }
   if (settings_.table != nullptr && settings_.update_limit != 0 && !settings_.table->counts())
     problem("caches.update-limit", " = " + std::to_string(settings_.update_limit) + ": protocol '" +
-                                       settings_.table->name() + "' does not count updates; leave the key out");
+                                       settings_.table->name() +
+                                       "' does not count updates; leave the key out");
 }
 
 void Checks::caches() {
@@ -109,8 +114,11 @@ void Checks::windows() {
 
 void Checks::arbiter() {
   for (const std::string& what : settings_.arbiter.problems(static_cast<int>(settings_.caches)))
-    renamed(what, {{"priorities", "bus.priorities"}, {"weights", "bus.weights"}, {"slots", "bus.slots"},
-                   {"slot cycles", "bus.slot-cycles"}},
+    renamed(what,
+            {{"priorities", "bus.priorities"},
+             {"weights", "bus.weights"},
+             {"slots", "bus.slots"},
+             {"slot cycles", "bus.slot-cycles"}},
             "bus.arbitration");
 }
 
@@ -127,7 +135,8 @@ void Checks::plain_memory() {
       problem(key.name, ": only with memory.kind = plain or an uncached window; leave the key out");
   if (in_use && settings_.beat_bytes > settings_.geometry.line_bytes)
     problem("memory.beat", ": " + std::to_string(settings_.beat_bytes) + " bytes do not divide a line of " +
-                               std::to_string(settings_.geometry.line_bytes) + "; expected at most caches.line");
+                               std::to_string(settings_.geometry.line_bytes) +
+                               "; expected at most caches.line");
 }
 
 bool Checks::grade() {
@@ -138,7 +147,8 @@ bool Checks::grade() {
       if (wanted == 0 || std::find(values.begin(), values.end(), wanted) != values.end()) return true;
       std::string known;
       for (const unsigned value : values) known += (known.empty() ? "" : ", ") + std::to_string(value);
-      problem(key, " = " + std::to_string(wanted) + ": " + name + " does not cover it; expected one of " + known);
+      problem(key,
+              " = " + std::to_string(wanted) + ": " + name + " does not cover it; expected one of " + known);
       return false;
     };
     const bool density = covered("memory.density", settings_.density, range.density_gbit);
@@ -168,23 +178,31 @@ void Checks::capacity() {
     if (!window.cached) continue;
     window.target_base = 0;
     if (window.size == 0 || window.size > bytes)
-      problem("bus.windows", ": window '" + window.name + "' is larger than the DRAM behind it, which holds " +
-                                 std::to_string(bytes) + " bytes; expected at most its first address + " + last.str());
+      problem("bus.windows", ": window '" + window.name +
+                                 "' is larger than the DRAM behind it, which holds " + std::to_string(bytes) +
+                                 " bytes; expected at most its first address + " + last.str());
   }
 }
 
 void Checks::dram() {
   if (settings_.memory_kind != MemoryKind::dram || !grade()) return;
   settings_.dram.log_commands = !settings_.command_log.empty();
-  settings_.dram.pace = settings_.timing == BusTiming::arbitrated ? DramPace::event_driven : DramPace::annotated;
+  settings_.dram.pace =
+      settings_.timing == BusTiming::arbitrated ? DramPace::event_driven : DramPace::annotated;
   const std::vector<std::string> found = settings_.dram.problems();
   const bool only_low = is_given("memory.write-low") && !is_given("memory.write-high");
   for (const std::string& what : found)
     renamed(what,
-            {{"channels", "memory.channels"}, {"ranks", "memory.ranks"}, {"channel width", "memory.channel-width"},
-             {"read queue", "memory.read-queue"}, {"write queue", "memory.write-queue"},
-             {"write marks", only_low ? "memory.write-low" : "memory.write-high"}, {"age cap", "memory.age-cap"}, {"refresh", "memory.refresh"},
-             {"address map", "memory.address-map"}, {"bank hashing", "memory.bank-hash"}},
+            {{"channels", "memory.channels"},
+             {"ranks", "memory.ranks"},
+             {"channel width", "memory.channel-width"},
+             {"read queue", "memory.read-queue"},
+             {"write queue", "memory.write-queue"},
+             {"write marks", only_low ? "memory.write-low" : "memory.write-high"},
+             {"age cap", "memory.age-cap"},
+             {"refresh", "memory.refresh"},
+             {"address map", "memory.address-map"},
+             {"bank hashing", "memory.bank-hash"}},
             "memory.grade");
   if (found.empty()) capacity();
 }
@@ -206,9 +224,11 @@ void Checks::workload() {
   if (settings_.recording.empty() && !settings_.uses_pattern)
     problems_.push_back("configuration: nothing to play; give workload.recording or workload.pattern");
   if (!settings_.recording.empty() && settings_.uses_pattern)
-    problem("workload.pattern", ": a recording is given too; keep one of workload.recording, workload.pattern");
+    problem("workload.pattern",
+            ": a recording is given too; keep one of workload.recording, workload.pattern");
   if (settings_.packed && settings_.uses_pattern)
-    problem("workload.addresses", " = packed: a pattern's addresses are packed as they are; leave it at recorded");
+    problem("workload.addresses",
+            " = packed: a pattern's addresses are packed as they are; leave it at recorded");
   if (!settings_.recording.empty())
     if (const std::string what = problem_with_recording(settings_.recording); !what.empty())
       problem("workload.recording", ": " + what);

@@ -172,7 +172,8 @@ Json simulate(const Settings& settings, bool progress) {
   Json results = run(settings, progress);
   const Json other = baseline.results();
   results["baseline"] = baseline_summary(other);
-  for (const Json& finding : other.at("findings")) results["findings"].push_back(in_baseline + finding.get<std::string>());
+  for (const Json& finding : other.at("findings"))
+    results["findings"].push_back(in_baseline + finding.get<std::string>());
   return results;
 }
 

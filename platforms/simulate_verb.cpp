@@ -55,7 +55,8 @@ int simulate_verb(const std::vector<std::string>& words) {
       value_expected = word.rfind("--", 0) == 0 && word.find('=') == std::string::npos;
     }
   }
-  if (config.empty() && keys.empty()) throw UsageError("simulate: no configuration; expected the path of an INI file");
+  if (config.empty() && keys.empty())
+    throw UsageError("simulate: no configuration; expected the path of an INI file");
   const Settings settings = read_settings(config, keys);
   if (!json_path.empty()) check_writable(json_path);
 
@@ -64,7 +65,8 @@ int simulate_verb(const std::vector<std::string>& words) {
   if (!quiet) std::fputs(text_answer(results).c_str(), stdout);
   std::fflush(stdout);  // the answer before the findings
   std::string found;
-  for (const Json& finding : results.at("findings")) found += (found.empty() ? "" : "\n") + finding.get<std::string>();
+  for (const Json& finding : results.at("findings"))
+    found += (found.empty() ? "" : "\n") + finding.get<std::string>();
   if (!found.empty()) throw Finding(found);
   return 0;
 }

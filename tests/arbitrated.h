@@ -1,8 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// Helpers for tests of arbitrated timing: a target and an initiator that do what the test says, phase by phase, and
-// caches on a bus between them with the monitor watching. Header only; one simulation per process.
+// Helpers for tests of arbitrated timing: a target and an initiator that do what the test says, phase by
+// phase, and caches on a bus between them with the monitor watching. Header only; one simulation per process.
 #pragma once
 
 #include <array>
@@ -14,11 +14,15 @@
 
 namespace earshot::test {
 
-inline sc_core::sc_time ns(double value) { return {value, sc_core::SC_NS}; }
-inline Picoseconds ps(double nanoseconds) { return to_ps(ns(nanoseconds)); }
+inline sc_core::sc_time ns(double value) {
+  return {value, sc_core::SC_NS};
+}
+inline Picoseconds ps(double nanoseconds) {
+  return to_ps(ns(nanoseconds));
+}
 
-// A memory. By default it completes every access early, `latency` later, one access not delaying another; what is
-// `held` it keeps until the test lets it answer.
+// A memory. By default it completes every access early, `latency` later, one access not delaying another;
+// what is `held` it keeps until the test lets it answer.
 class ScriptedTarget : public sc_core::sc_module, private tlm::tlm_fw_transport_if<> {
  public:
   tlm::tlm_target_socket<> target_socket{"target_socket"};
@@ -37,8 +41,8 @@ class ScriptedTarget : public sc_core::sc_module, private tlm::tlm_fw_transport_
 
   sc_core::sc_time latency = ns(60);
   std::function<bool(const Payload&)> refuses = [](const Payload&) { return false; };
-  bool hold = false;          // keep requests from now on
-  bool end_requests = true;   // those kept: END_REQ at once
+  bool hold = false;         // keep requests from now on
+  bool end_requests = true;  // those kept: END_REQ at once
   std::deque<Payload*> held;
   std::vector<Request> requests;  // every one, in the order of arrival
   // If set, decides all by itself.
@@ -71,7 +75,9 @@ class ScriptedTarget : public sc_core::sc_module, private tlm::tlm_fw_transport_
     }
     payload.set_response_status(tlm::TLM_OK_RESPONSE);
   }
-  void peek(std::uint64_t address, std::uint8_t* to, std::size_t length) const { bytes_.read(address, to, length); }
+  void peek(std::uint64_t address, std::uint8_t* to, std::size_t length) const {
+    bytes_.read(address, to, length);
+  }
   std::uint32_t word(std::uint64_t address) const {
     std::uint32_t value = 0;
     peek(address, reinterpret_cast<std::uint8_t*>(&value), sizeof value);
@@ -88,16 +94,19 @@ class ScriptedTarget : public sc_core::sc_module, private tlm::tlm_fw_transport_
 
  private:
   void b_transport(Payload& payload, sc_core::sc_time& delay) override {
-    requests.push_back({payload.is_write(), payload.get_address(), payload.get_data_length(), now_ps() + to_ps(delay)});
+    requests.push_back(
+        {payload.is_write(), payload.get_address(), payload.get_data_length(), now_ps() + to_ps(delay)});
     move(payload);
     delay += latency;
   }
-  tlm::tlm_sync_enum nb_transport_fw(Payload& payload, tlm::tlm_phase& phase, sc_core::sc_time& time) override {
+  tlm::tlm_sync_enum nb_transport_fw(Payload& payload, tlm::tlm_phase& phase,
+                                     sc_core::sc_time& time) override {
     if (phase == tlm::END_RESP) {
       end_response(payload);
       return tlm::TLM_COMPLETED;
     }
-    requests.push_back({payload.is_write(), payload.get_address(), payload.get_data_length(), now_ps() + to_ps(time)});
+    requests.push_back(
+        {payload.is_write(), payload.get_address(), payload.get_data_length(), now_ps() + to_ps(time)});
     if (answer) return answer(payload, phase, time);
     if (!hold) {
       move(payload);
@@ -145,8 +154,8 @@ class Requester : public sc_core::sc_module, private tlm::tlm_mm_interface {
   }
 
   // ---- Blocking
-  tlm::tlm_response_status transport(tlm::tlm_command command, std::uint64_t address, void* data, unsigned length,
-                                     sc_core::sc_time delay = sc_core::SC_ZERO_TIME,
+  tlm::tlm_response_status transport(tlm::tlm_command command, std::uint64_t address, void* data,
+                                     unsigned length, sc_core::sc_time delay = sc_core::SC_ZERO_TIME,
                                      std::vector<std::uint8_t> enables = {}) {
     tlm::tlm_generic_payload payload;
     prepare(payload, command, address, static_cast<std::uint8_t*>(data), length);
@@ -162,7 +171,9 @@ class Requester : public sc_core::sc_module, private tlm::tlm_mm_interface {
     transport(tlm::TLM_READ_COMMAND, address, &value, sizeof value);
     return value;
   }
-  void write(std::uint64_t address, std::uint32_t value) { transport(tlm::TLM_WRITE_COMMAND, address, &value, sizeof value); }
+  void write(std::uint64_t address, std::uint32_t value) {
+    transport(tlm::TLM_WRITE_COMMAND, address, &value, sizeof value);
+  }
   std::uint32_t debug_read(std::uint64_t address) {
     std::uint32_t value = 0xdeadbeef;
     if (debug(tlm::TLM_READ_COMMAND, address, value) != 4) throw std::logic_error("debug read refused");
@@ -175,8 +186,9 @@ class Requester : public sc_core::sc_module, private tlm::tlm_mm_interface {
 
   // ---- Non-blocking
   // BEGIN_REQ of a new access; it stays valid until the test ends.
-  Access& send(const std::string& name, tlm::tlm_command command, std::uint64_t address, std::uint32_t value = 0,
-               unsigned length = 4, const sc_core::sc_time& later = sc_core::SC_ZERO_TIME) {
+  Access& send(const std::string& name, tlm::tlm_command command, std::uint64_t address,
+               std::uint32_t value = 0, unsigned length = 4,
+               const sc_core::sc_time& later = sc_core::SC_ZERO_TIME) {
     accesses_.push_back(std::make_unique<Access>(static_cast<tlm::tlm_mm_interface*>(this)));
     Access& access = *accesses_.back();
     access.name = name;
@@ -229,7 +241,8 @@ class Requester : public sc_core::sc_module, private tlm::tlm_mm_interface {
     prepare(payload, command, address, reinterpret_cast<std::uint8_t*>(&value), sizeof value);
     return socket->transport_dbg(payload);
   }
-  tlm::tlm_sync_enum backward(tlm::tlm_generic_payload& payload, tlm::tlm_phase& what, sc_core::sc_time& time) {
+  tlm::tlm_sync_enum backward(tlm::tlm_generic_payload& payload, tlm::tlm_phase& what,
+                              sc_core::sc_time& time) {
     Access& access = static_cast<Access&>(payload);
     std::ostringstream text;
     text << (heard.empty() ? "" : ", ") << access.name << ' ' << what;
@@ -251,8 +264,8 @@ struct BenchOptions {
   bool watched = true;
 };
 
-// Caches in arbitrated timing on a bus, a ScriptedTarget behind the cached window [0, 0x100000) and one behind the
-// uncached one from there on, a Requester before every cache.
+// Caches in arbitrated timing on a bus, a ScriptedTarget behind the cached window [0, 0x100000) and one
+// behind the uncached one from there on, a Requester before every cache.
 class Bench {
  public:
   static constexpr std::uint64_t device_base = 0x100000;
@@ -279,8 +292,9 @@ class Bench {
     }
     if (!options.watched) return;
     monitor = std::make_unique<CoherenceMonitor>(
-        options.geometry.line_bytes,
-        [this](std::uint64_t address, std::uint8_t* to, std::size_t length) { memory.peek(address, to, length); });
+        options.geometry.line_bytes, [this](std::uint64_t address, std::uint8_t* to, std::size_t length) {
+          memory.peek(address, to, length);
+        });
     for (const auto& cache : caches) cache->set_observer(monitor.get());
   }
 
@@ -327,7 +341,8 @@ struct BoxedBench : sc_core::sc_module {
   Bench bench;
 };
 
-// Runs the bodies at once, from a simulation process, and waits until all have ended. Rethrows what one throws.
+// Runs the bodies at once, from a simulation process, and waits until all have ended. Rethrows what one
+// throws.
 inline void at_once(const std::vector<std::function<void()>>& bodies) {
   std::exception_ptr error;
   std::size_t running = bodies.size();
@@ -345,14 +360,16 @@ inline void at_once(const std::vector<std::function<void()>>& bodies) {
   if (error) std::rethrow_exception(error);
 }
 
-// Waits, from a simulation process, until the time is a multiple of `clock`, some cycles on: whatever was under way
-// has ended, and clock edges fall as they do at time 0.
+// Waits, from a simulation process, until the time is a multiple of `clock`, some cycles on: whatever was
+// under way has ended, and clock edges fall as they do at time 0.
 inline void settle(const sc_core::sc_time& clock = ns(5)) {
   const Picoseconds step = to_ps(clock) * 2000;
   sc_core::wait(from_ps((now_ps() / step + 2) * step - now_ps()));
 }
 
 // The built-in protocols, and the bus structures by number.
-inline BusStructure structure(int number) { return number == 0 ? BusStructure::split : BusStructure::connected; }
+inline BusStructure structure(int number) {
+  return number == 0 ? BusStructure::split : BusStructure::connected;
+}
 
 }  // namespace earshot::test

@@ -7,9 +7,13 @@
 
 namespace earshot {
 
-NonBlockingPlayer::NonBlockingPlayer(sc_core::sc_module_name name, std::uint32_t initiator, unsigned outstanding,
-                                     sc_core::sc_time think, PlayerHooks hooks)
-    : sc_module(name), initiator_(initiator), outstanding_(outstanding), think_(think), hooks_(std::move(hooks)) {
+NonBlockingPlayer::NonBlockingPlayer(sc_core::sc_module_name name, std::uint32_t initiator,
+                                     unsigned outstanding, sc_core::sc_time think, PlayerHooks hooks)
+    : sc_module(name),
+      initiator_(initiator),
+      outstanding_(outstanding),
+      think_(think),
+      hooks_(std::move(hooks)) {
   initiator_socket.register_nb_transport_bw(this, &NonBlockingPlayer::backward);
   sc_core::sc_spawn([this] { play(); }, "play");
   sc_core::sc_spawn_options options;

@@ -19,12 +19,13 @@ void invent(std::uint32_t initiator, std::uint64_t number, std::uint8_t* bytes, 
 
 std::string text_of(const Access& access) {
   std::ostringstream out;
-  out << "initiator " << access.initiator << ", " << name_of(access.op) << " of " << access.size << " bytes at 0x"
-      << std::hex << access.address;
+  out << "initiator " << access.initiator << ", " << name_of(access.op) << " of " << access.size
+      << " bytes at 0x" << std::hex << access.address;
   return out.str();
 }
 
-void make_payload(const Access& access, std::uint64_t number, std::uint8_t* bytes, tlm::tlm_generic_payload& payload) {
+void make_payload(const Access& access, std::uint64_t number, std::uint8_t* bytes,
+                  tlm::tlm_generic_payload& payload) {
   const bool write = access.op == AccessOp::write;
   if (write && access.has_value)
     std::memcpy(bytes, &access.value, sizeof access.value);  // a fixed size is quicker than access.size

@@ -1,8 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// What stands behind an arbitrated bus: targets that answer in every manner the base protocol allows (IEEE 1666-2011,
-// 15.2), targets that break it, and targets that never answer.
+// What stands behind an arbitrated bus: targets that answer in every manner the base protocol allows (IEEE
+// 1666-2011, 15.2), targets that break it, and targets that never answer.
 #include <catch2/catch.hpp>
 
 #include "arbitrated.h"
@@ -108,13 +108,25 @@ TEST_CASE("one request phase at a time: later requests queue for END_REQ or BEGI
   bench.memory.end_requests = false;
   simulate([&] {
     std::array<Picoseconds, 3> done{};
-    at_once({[&] { bench.cpu(0).read(0x100); done[0] = now_ps(); }, [&] { bench.cpu(1).read(0x200); done[1] = now_ps(); },
-             [&] { bench.cpu(2).read(0x300); done[2] = now_ps(); }, [&] {
+    at_once({[&] {
+               bench.cpu(0).read(0x100);
+               done[0] = now_ps();
+             },
+             [&] {
+               bench.cpu(1).read(0x200);
+               done[1] = now_ps();
+             },
+             [&] {
+               bench.cpu(2).read(0x300);
+               done[2] = now_ps();
+             },
+             [&] {
                sc_core::wait(ns(100));
                CHECK(bench.memory.requests.size() == 1);
                tlm::tlm_phase phase = tlm::END_REQ;
                sc_core::sc_time time = ns(7);
-               CHECK(bench.memory.target_socket->nb_transport_bw(*bench.memory.held.front(), phase, time) == tlm::TLM_ACCEPTED);
+               CHECK(bench.memory.target_socket->nb_transport_bw(*bench.memory.held.front(), phase, time) ==
+                     tlm::TLM_ACCEPTED);
                sc_core::wait(ns(6));
                CHECK(bench.memory.requests.size() == 1);
                sc_core::wait(ns(2));
@@ -126,7 +138,8 @@ TEST_CASE("one request phase at a time: later requests queue for END_REQ or BEGI
                bench.memory.respond();
                bench.memory.respond();
              }});
-    CHECK(done == std::array<Picoseconds, 3>{ps(150), ps(130), ps(170)});  // beats in the order of the answers
+    CHECK(done ==
+          std::array<Picoseconds, 3>{ps(150), ps(130), ps(170)});  // beats in the order of the answers
     // The waiting for the request phase is the memory's queue.
     CHECK(bench.cache(1).totals().parts[LatencyPart::memory_queue] == ps(107 - 25));
     CHECK(bench.broken_laws() == "");
@@ -146,7 +159,8 @@ TEST_CASE("a target that answers within the call of BEGIN_REQ, and at once gets 
   };
   simulate([&] {
     bench.memory.poke(0x200, 5);
-    at_once({[&] { bench.cpu(0).read(0x100); }, [&] { CHECK(bench.cpu(1).read(0x200) == 5); }, [&] { bench.cpu(2).write(0x300, 1); }});
+    at_once({[&] { bench.cpu(0).read(0x100); }, [&] { CHECK(bench.cpu(1).read(0x200) == 5); },
+             [&] { bench.cpu(2).write(0x300, 1); }});
     CHECK(bench.cpu(0).read(0x300) == 1);
     CHECK(bench.broken_laws() == "");
   });
@@ -176,7 +190,8 @@ TEST_CASE("what a target answers to one access is not left in the payload for th
   });
 }
 
-TEST_CASE("an uncached access reaches its target as it is: width, enables, extensions, DMI hint; and back", "[bus]") {
+TEST_CASE("an uncached access reaches its target as it is: width, enables, extensions, DMI hint; and back",
+          "[bus]") {
   struct Note : tlm::tlm_extension<Note> {
     int value = 3;
     tlm::tlm_extension_base* clone() const override { return new Note(*this); }
@@ -249,8 +264,9 @@ TEST_CASE("a byte enable length without byte enables means nothing, on an uncach
 namespace {
 
 // The report of a simulation in which the memory answers a fetch as `answer` does and then `later` happens.
-std::string misuse(const std::function<tlm::tlm_sync_enum(Bench&, Payload&, tlm::tlm_phase&, sc_core::sc_time&)>& answer,
-                   const std::function<void(Bench&, Payload&)>& later = [](Bench&, Payload&) {}) {
+std::string misuse(
+    const std::function<tlm::tlm_sync_enum(Bench&, Payload&, tlm::tlm_phase&, sc_core::sc_time&)>& answer,
+    const std::function<void(Bench&, Payload&)>& later = [](Bench&, Payload&) {}) {
   Bench bench(load_table("msi"));
   Payload* seen = nullptr;
   bench.memory.answer = [&](Payload& payload, tlm::tlm_phase& phase, sc_core::sc_time& time) {
@@ -269,7 +285,8 @@ std::string misuse(const std::function<tlm::tlm_sync_enum(Bench&, Payload&, tlm:
   });
 }
 
-void back(Bench& bench, Payload& payload, tlm::tlm_phase phase, const sc_core::sc_time& time = sc_core::SC_ZERO_TIME) {
+void back(Bench& bench, Payload& payload, tlm::tlm_phase phase,
+          const sc_core::sc_time& time = sc_core::SC_ZERO_TIME) {
   sc_core::sc_time annotated = time;
   bench.memory.target_socket->nb_transport_bw(payload, phase, annotated);
 }
@@ -279,7 +296,9 @@ void check_named(const std::string& report) {
   CHECK(report.find("the target of window 'memory'") != std::string::npos);
 }
 
-constexpr auto accepts = [](Bench&, Payload&, tlm::tlm_phase&, sc_core::sc_time&) { return tlm::TLM_ACCEPTED; };
+constexpr auto accepts = [](Bench&, Payload&, tlm::tlm_phase&, sc_core::sc_time&) {
+  return tlm::TLM_ACCEPTED;
+};
 
 }  // namespace
 
@@ -340,7 +359,8 @@ TEST_CASE("a target that responds within the call and then also ends the request
     return tlm::TLM_UPDATED;
   }));
 }
-TEST_CASE("a target that responds again before the END_RESP of a response on the return path is reported", "[bus]") {
+TEST_CASE("a target that responds again before the END_RESP of a response on the return path is reported",
+          "[bus]") {
   check_named(misuse(
       [](Bench&, Payload&, tlm::tlm_phase& phase, sc_core::sc_time& time) {
         phase = tlm::BEGIN_RESP;
@@ -376,7 +396,9 @@ TEST_CASE("a phase of the target's own is ignored: 15.2.5, ignorable phases", "[
 
 // ---- Targets that never answer
 
-TEST_CASE("a memory that never answers is reported after the limit, with every queue and what its head waits for", "[bus]") {
+TEST_CASE(
+    "a memory that never answers is reported after the limit, with every queue and what its head waits for",
+    "[bus]") {
   BenchOptions options;
   options.caches = 4;
   options.bus.stall_cycles = 100;
@@ -450,7 +472,8 @@ TEST_CASE("a stall is reported at most two limits after the last completion, and
   CHECK(now_ps() <= last + ps(1000));
 }
 
-TEST_CASE("a device that never answers is reported too, and a memory that never takes a supplied line", "[bus]") {
+TEST_CASE("a device that never answers is reported too, and a memory that never takes a supplied line",
+          "[bus]") {
   BenchOptions options;
   options.bus.stall_cycles = 100;
   BoxedBench device("device", load_table("msi"), options), memory("memory", load_table("msi"), options);
@@ -464,7 +487,8 @@ TEST_CASE("a device that never answers is reported too, and a memory that never 
     sc_core::wait(ns(700));
     CHECK(text.find("device.bus: nothing has completed") == 0);
     CHECK(text.find("io-read of port 0") != std::string::npos);
-    CHECK(text.find("window device: read of 4 bytes at 0x4 waits for the target's response (BEGIN_RESP)") != std::string::npos);
+    CHECK(text.find("window device: read of 4 bytes at 0x4 waits for the target's response (BEGIN_RESP)") !=
+          std::string::npos);
     text.clear();
     device.bench.device.respond();
     sc_core::wait(ns(2000));
@@ -515,7 +539,9 @@ TEST_CASE("an idle platform costs no events: nothing is pending once everything 
   CHECK_FALSE(sc_core::sc_pending_activity());
 }
 
-TEST_CASE("a watched platform that is idle has only the watch of the last busy time pending, and then nothing", "[bus]") {
+TEST_CASE(
+    "a watched platform that is idle has only the watch of the last busy time pending, and then nothing",
+    "[bus]") {
   BenchOptions options;
   options.bus.stall_cycles = 1000;
   Bench bench(load_table("mesi"), options);
@@ -527,7 +553,9 @@ TEST_CASE("a watched platform that is idle has only the watch of the last busy t
 TEST_CASE("waiting() names what an initiator that never ends its response holds up", "[bus]") {
   Bench bench(load_table("msi"));
   simulate([&] {
-    bench.cpu(0).on_response = [](Requester::Access&, tlm::tlm_phase&, sc_core::sc_time&) { return tlm::TLM_ACCEPTED; };
+    bench.cpu(0).on_response = [](Requester::Access&, tlm::tlm_phase&, sc_core::sc_time&) {
+      return tlm::TLM_ACCEPTED;
+    };
     bench.cpu(0).send_read("a", 0x40);
     settle();
     CHECK(bench.bus->waiting().find("END_RESP") != std::string::npos);

@@ -1,9 +1,10 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// What a transaction costs in arbitrated timing, to the picosecond, worked out here from the configuration alone; the
-// same in annotated timing when nothing competes. Unless a case says otherwise: clock 5 ns, arbitration 1, address 1,
-// snoop 1, supply 2 cycles, 8 bytes a beat, lines of 32 bytes, hit 1 ns, memory 60 ns.
+// What a transaction costs in arbitrated timing, to the picosecond, worked out here from the configuration
+// alone; the same in annotated timing when nothing competes. Unless a case says otherwise: clock 5 ns,
+// arbitration 1, address 1, snoop 1, supply 2 cycles, 8 bytes a beat, lines of 32 bytes, hit 1 ns, memory 60
+// ns.
 #include <catch2/catch.hpp>
 #include <random>
 
@@ -14,7 +15,8 @@ using namespace earshot::test;
 
 namespace {
 
-// The parts of what cache `i` has done since the last call, as "hit 1000 wait-for-grant 9000": those that are not 0.
+// The parts of what cache `i` has done since the last call, as "hit 1000 wait-for-grant 9000": those that are
+// not 0.
 class PartsOf {
  public:
   explicit PartsOf(const CoherentCache& cache) : cache_(cache) {}
@@ -24,7 +26,8 @@ class PartsOf {
     for (int i = 0; i < latency_parts; ++i) {
       const auto part = static_cast<LatencyPart>(i);
       if (parts[part] == before_[part]) continue;
-      text += (text.empty() ? "" : " ") + std::string(name_of(part)) + " " + std::to_string(parts[part] - before_[part]);
+      text += (text.empty() ? "" : " ") + std::string(name_of(part)) + " " +
+              std::to_string(parts[part] - before_[part]);
     }
     before_ = parts;
     return text;
@@ -96,10 +99,12 @@ void check_write_through_and_upgrade(BusStructure structure) {
 
 }  // namespace
 
-TEST_CASE("arbitrated, split: a miss, an update, an owner's supply and a write miss cost their cycles", "[bus]") {
+TEST_CASE("arbitrated, split: a miss, an update, an owner's supply and a write miss cost their cycles",
+          "[bus]") {
   check_costs(BusStructure::split);
 }
-TEST_CASE("arbitrated, connected: a miss, an update, an owner's supply and a write miss cost their cycles", "[bus]") {
+TEST_CASE("arbitrated, connected: a miss, an update, an owner's supply and a write miss cost their cycles",
+          "[bus]") {
   check_costs(BusStructure::connected);
 }
 TEST_CASE("arbitrated, split: a write-through waits for memory, an upgrade moves nothing", "[bus]") {
@@ -124,7 +129,7 @@ TEST_CASE("arbitrated: a victim's write-back does not delay the fetch it makes r
     CHECK(bench.memory.requests.back().at == start + ps(40));
     const BusKindTotals totals = bench.bus->totals().kind[static_cast<std::size_t>(BusKind::write_back)];
     CHECK(totals.count == 1);
-    CHECK(totals.time == ps(99));   // from its request at 1 to memory's answer at 100
+    CHECK(totals.time == ps(99));  // from its request at 1 to memory's answer at 100
     CHECK(totals.wait == ps(14));
     CHECK(bench.memory.word(0x40) == 1);
   });
@@ -136,7 +141,8 @@ TEST_CASE("arbitrated: an uncached access costs the same as in annotated timing,
   Bench bench(load_table("dirty-owner-update"), options);
   simulate([&] {
     const std::uint64_t device = Bench::device_base;
-    CHECK(took([&] { bench.cpu(0).write(device, 7); }) == ps(5 + 5 + 5 + 60));  // edge, arbitration, address, beat, device
+    CHECK(took([&] { bench.cpu(0).write(device, 7); }) ==
+          ps(5 + 5 + 5 + 60));  // edge, arbitration, address, beat, device
     settle();
     CHECK(took([&] { CHECK(bench.cpu(0).read(device) == 7); }) == ps(5 + 5 + 60 + 5));
     const SnoopingBusTotals totals = bench.bus->totals();
@@ -182,7 +188,8 @@ TEST_CASE("arbitrated: after every transfer nobody drives the data bus for the t
     std::vector<std::function<void()>> reads;
     for (int i = 0; i < 3; ++i)
       reads.push_back([&, i] {
-        latency[static_cast<std::size_t>(i)] = took([&] { bench.cpu(i).read(0x100 * (static_cast<unsigned>(i) + 1)); });
+        latency[static_cast<std::size_t>(i)] =
+            took([&] { bench.cpu(i).read(0x100 * (static_cast<unsigned>(i) + 1)); });
       });
     at_once(reads);
     // Grants at 10, 15, 20; data there at 80, 85, 90. Four beats and two idle cycles each.
@@ -213,7 +220,8 @@ TEST_CASE("arbitrated, connected: a write-through leaves the bus while memory ta
     bench.cpu(0).read(0x40);
     settle();
     Picoseconds latency = 0;
-    at_once({[&] { bench.cpu(0).write(0x40, 1); }, [&] { latency = took([&] { bench.cpu(1).read(0x200); }); }});
+    at_once(
+        {[&] { bench.cpu(0).write(0x40, 1); }, [&] { latency = took([&] { bench.cpu(1).read(0x200); }); }});
     CHECK(latency == ps(25 + 5 + 5 + 60 + 20));  // the word's beat ends at 25, the write-through itself at 85
   });
 }
@@ -224,29 +232,34 @@ TEST_CASE("arbitrated: the data bus serves whoever has data first, not whoever w
     bench.cpu(0).write(0x40, 1);  // so that a supply is quick
     settle();
     Picoseconds slow = 0, quick = 0;
-    at_once({[&] { slow = took([&] { bench.cpu(0).read(0x200); }); }, [&] { quick = took([&] { bench.cpu(1).read(0x40); }); }});
+    at_once({[&] { slow = took([&] { bench.cpu(0).read(0x200); }); },
+             [&] { quick = took([&] { bench.cpu(1).read(0x40); }); }});
     CHECK(slow == ps(100));                    // granted at 10, data at 80
     CHECK(quick == ps(15 + 5 + 5 + 10 + 20));  // granted at 15, data at 35
   });
 }
 
-TEST_CASE("arbitrated: data known of later but ready earlier goes first, unless the other transfer has begun", "[bus]") {
+TEST_CASE("arbitrated: data known of later but ready earlier goes first, unless the other transfer has begun",
+          "[bus]") {
   Bench bench(load_table("msi"), on(BusStructure::split, 3));
   simulate([&] {
     // When memory answers early, the bus knows long before when it will have data.
     bench.memory.latency = ns(200);
     std::array<Picoseconds, 3> latency{};
-    at_once({[&] { latency[0] = took([&] { bench.cpu(0).read(0x100); }); },  // granted at 10, data at 220, 240
-             [&] {
-               sc_core::wait(ns(100));
-               bench.memory.latency = ns(92);
-               latency[1] = took([&] { bench.cpu(1).read(0x200); });  // granted at 110, data at 212, goes first, 215 to 235
-             },
-             [&] {
-               sc_core::wait(ns(185));
-               bench.memory.latency = ns(7);
-               latency[2] = took([&] { bench.cpu(2).read(0x300); });  // granted at 195, data at 212 too: behind it
-             }});
+    at_once(
+        {[&] { latency[0] = took([&] { bench.cpu(0).read(0x100); }); },  // granted at 10, data at 220, 240
+         [&] {
+           sc_core::wait(ns(100));
+           bench.memory.latency = ns(92);
+           latency[1] = took(
+               [&] { bench.cpu(1).read(0x200); });  // granted at 110, data at 212, goes first, 215 to 235
+         },
+         [&] {
+           sc_core::wait(ns(185));
+           bench.memory.latency = ns(7);
+           latency[2] =
+               took([&] { bench.cpu(2).read(0x300); });  // granted at 195, data at 212 too: behind it
+         }});
     CHECK(latency[1] == ps(235 - 100));
     CHECK(latency[2] == ps(255 - 185));
     CHECK(latency[0] == ps(275));
@@ -258,7 +271,8 @@ TEST_CASE("arbitrated: data known of later but ready earlier goes first, unless 
              [&] {
                sc_core::wait(ns(105));
                bench.memory.latency = ns(0);
-               latency[1] = took([&] { bench.cpu(1).read(0x500); });  // granted at 115, data at 125: waits until 140
+               latency[1] =
+                   took([&] { bench.cpu(1).read(0x500); });  // granted at 115, data at 125: waits until 140
              }});
     CHECK(now_ps() - start == ps(160));
     CHECK(latency[0] == ps(140));
@@ -276,11 +290,13 @@ TEST_CASE("arbitrated: no more transactions are under way than the limit", "[bus
     std::vector<std::function<void()>> reads;
     for (int i = 0; i < 4; ++i)
       reads.push_back([&, i] {
-        latency[static_cast<std::size_t>(i)] = took([&] { bench.cpu(i).read(0x100 * (static_cast<unsigned>(i) + 1)); });
+        latency[static_cast<std::size_t>(i)] =
+            took([&] { bench.cpu(i).read(0x100 * (static_cast<unsigned>(i) + 1)); });
       });
     at_once(reads);
     // Data at 220 and 225; the first ends at 240: only then is the third granted.
-    CHECK(latency == std::array<Picoseconds, 4>{ps(240), ps(260), ps(240 + 10 + 200 + 20), ps(260 + 10 + 200 + 20)});
+    CHECK(latency ==
+          std::array<Picoseconds, 4>{ps(240), ps(260), ps(240 + 10 + 200 + 20), ps(260 + 10 + 200 + 20)});
     for (const BusQueue& queue : bench.bus->queues())
       if (queue.name == "outstanding transactions") CHECK(queue.meter->most() == 2);
   });
@@ -333,8 +349,8 @@ struct Both {
 
 std::string text_of(const CacheTotals& totals, bool times) {
   std::ostringstream text;
-  text << totals.reads << " reads " << totals.writes << " writes " << totals.hits << " hits " << totals.misses << " misses "
-       << totals.uncached << " uncached " << totals.errors << " errors, kinds";
+  text << totals.reads << " reads " << totals.writes << " writes " << totals.hits << " hits " << totals.misses
+       << " misses " << totals.uncached << " uncached " << totals.errors << " errors, kinds";
   for (const Histogram& kind : totals.kind) {
     text << ' ' << kind.count();
     if (times) text << " in " << kind.sum();
@@ -351,15 +367,15 @@ std::string text_of(const SnoopingBusTotals& totals, bool times) {
     if (times) text << " in " << kind.time << " wait " << kind.wait;
     text << ", ";
   }
-  text << "supplied " << totals.supplied_by_owner << ' ' << totals.supplied_by_sharer << ' ' << totals.supplied_by_memory
-       << ", blocks " << totals.block_reads << ' ' << totals.block_writes << ", words " << totals.word_writes << ", data "
-       << totals.data_busy;
+  text << "supplied " << totals.supplied_by_owner << ' ' << totals.supplied_by_sharer << ' '
+       << totals.supplied_by_memory << ", blocks " << totals.block_reads << ' ' << totals.block_writes
+       << ", words " << totals.word_writes << ", data " << totals.data_busy;
   if (times) text << " address " << totals.address_busy;
   return text.str();
 }
 
-// Random accesses, the next when everything has ended. `idle`: no access needs a place that another line has, none
-// crosses lines, so that nothing ever competes: then times agree too; else values, states and counts.
+// Random accesses, the next when everything has ended. `idle`: no access needs a place that another line has,
+// none crosses lines, so that nothing ever competes: then times agree too; else values, states and counts.
 void check_agreement(BusStructure structure, unsigned seed, bool idle) {
   std::mt19937 random(seed);
   const auto draw = [&](std::uint64_t below) { return static_cast<unsigned>(random() % below); };
@@ -387,8 +403,8 @@ void check_agreement(BusStructure structure, unsigned seed, bool idle) {
       std::array<std::uint8_t, 48> a{};
       for (auto& byte : a) byte = static_cast<std::uint8_t>(random());
       std::array<std::uint8_t, 48> b = a;
-      INFO(protocol << ", access " << n << ": " << (command == tlm::TLM_WRITE_COMMAND ? "write " : "read ") << length
-                    << " at " << address << " by " << who);
+      INFO(protocol << ", access " << n << ": " << (command == tlm::TLM_WRITE_COMMAND ? "write " : "read ")
+                    << length << " at " << address << " by " << who);
       if (draw(8) == 0) {
         const std::uint64_t line = draw(8) * 32;
         REQUIRE(both.annotated.cache(who).replace(line, sc_core::SC_ZERO_TIME) == tlm::TLM_OK_RESPONSE);
@@ -396,7 +412,8 @@ void check_agreement(BusStructure structure, unsigned seed, bool idle) {
         sc_core::wait(ns(2000));
       }
       if (idle && protocol == "firefly") {
-        // The write-through of a write miss would wait until memory has the line that a dirty owner has supplied.
+        // The write-through of a write miss would wait until memory has the line that a dirty owner has
+        // supplied.
         both.annotated.cpu(who).read(address / 4 * 4);
         both.arbitrated.cpu(who).read(address / 4 * 4);
         sc_core::wait(ns(2000));
@@ -406,7 +423,8 @@ void check_agreement(BusStructure structure, unsigned seed, bool idle) {
       REQUIRE(both.arbitrated.cpu(who).transport(command, address, b.data(), length) == tlm::TLM_OK_RESPONSE);
       if (idle) REQUIRE(now_ps() - start == to_ps(both.annotated.cpu(who).delay));
       REQUIRE(a == b);
-      REQUIRE(text_of(both.annotated.cache(who).totals(), idle) == text_of(both.arbitrated.cache(who).totals(), idle));
+      REQUIRE(text_of(both.annotated.cache(who).totals(), idle) ==
+              text_of(both.arbitrated.cache(who).totals(), idle));
       sc_core::wait(sc_core::sc_time(2000000 + draw(7000), sc_core::SC_PS));
       for (std::uint64_t line = 0; line < 32 * 10; line += 32)
         REQUIRE(both.annotated.states(line) == both.arbitrated.states(line));
@@ -420,18 +438,18 @@ void check_agreement(BusStructure structure, unsigned seed, bool idle) {
 }  // namespace
 
 // The number decides the protocol, its last digit, and everything else.
-#define EARSHOT_AGREE(number)                                                                                    \
-  TEST_CASE("idle, split: both timings agree to the picosecond in every part, seed " #number, "[bus]") {           \
-    check_agreement(BusStructure::split, number, true);                                                          \
-  }                                                                                                              \
-  TEST_CASE("idle, connected: both timings agree to the picosecond in every part, seed " #number, "[bus]") {       \
-    check_agreement(BusStructure::connected, number, true);                                                      \
-  }                                                                                                              \
-  TEST_CASE("both timings agree in values, states and counts, split, seed " #number, "[bus]") {                    \
-    check_agreement(BusStructure::split, number, false);                                                         \
-  }                                                                                                              \
-  TEST_CASE("both timings agree in values, states and counts, connected, seed " #number, "[bus]") {                \
-    check_agreement(BusStructure::connected, number, false);                                                     \
+#define EARSHOT_AGREE(number)                                                                                \
+  TEST_CASE("idle, split: both timings agree to the picosecond in every part, seed " #number, "[bus]") {     \
+    check_agreement(BusStructure::split, number, true);                                                      \
+  }                                                                                                          \
+  TEST_CASE("idle, connected: both timings agree to the picosecond in every part, seed " #number, "[bus]") { \
+    check_agreement(BusStructure::connected, number, true);                                                  \
+  }                                                                                                          \
+  TEST_CASE("both timings agree in values, states and counts, split, seed " #number, "[bus]") {              \
+    check_agreement(BusStructure::split, number, false);                                                     \
+  }                                                                                                          \
+  TEST_CASE("both timings agree in values, states and counts, connected, seed " #number, "[bus]") {          \
+    check_agreement(BusStructure::connected, number, false);                                                 \
   }
 EARSHOT_AGREE(0)
 EARSHOT_AGREE(1)

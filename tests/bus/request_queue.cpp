@@ -19,7 +19,8 @@ BusTransaction transaction(int port, std::uint64_t line) {
 std::string text_of(const std::vector<Contender>& contenders) {
   std::string text;
   for (const Contender& contender : contenders)
-    text += (text.empty() ? "" : " ") + std::to_string(contender.port) + "@" + std::to_string(contender.since);
+    text +=
+        (text.empty() ? "" : " ") + std::to_string(contender.port) + "@" + std::to_string(contender.since);
   return text;
 }
 
@@ -98,7 +99,8 @@ TEST_CASE("an uncached access has no line, but waits for the one before it of it
 }
 
 TEST_CASE("nobody else's transaction for a line is granted before an access's second one", "[bus]") {
-  BusTransaction second = transaction(2, 0x40), waiting = transaction(1, 0x40), another = transaction(1, 0x80);
+  BusTransaction second = transaction(2, 0x40), waiting = transaction(1, 0x40),
+                 another = transaction(1, 0x80);
   second.follows_up = true;
   RequestQueue queue;
   queue.lock(transaction(2, 0x40));
@@ -130,11 +132,14 @@ TEST_CASE("any mix of requests and locks is as a plain list says", "[bus]") {
   std::vector<RequestQueue::Request> plain;  // in the order of asking
   std::vector<std::uint64_t> locks;
   RequestQueue queue;
-  const auto locked = [&](std::uint64_t line) { return std::find(locks.begin(), locks.end(), line) != locks.end(); };
+  const auto locked = [&](std::uint64_t line) {
+    return std::find(locks.begin(), locks.end(), line) != locks.end();
+  };
   for (Picoseconds now = 0; now < 3000; ++now) {
     for (int i = 0; i < 2; ++i)
       if (random() % 2 == 0) {
-        all.push_back(std::make_unique<BusTransaction>(transaction(static_cast<int>(random() % 5), random() % 4 * 64)));
+        all.push_back(
+            std::make_unique<BusTransaction>(transaction(static_cast<int>(random() % 5), random() % 4 * 64)));
         plain.push_back({all.back().get(), now, now + random() % 3});
         queue.push(plain.back());
       }
@@ -159,7 +164,8 @@ TEST_CASE("any mix of requests and locks is as a plain list says", "[bus]") {
     }
     std::vector<Contender> contenders;
     for (std::size_t port = 0; port < 5; ++port)
-      if (expected[port] < plain.size()) contenders.push_back({static_cast<int>(port), plain[expected[port]].since});
+      if (expected[port] < plain.size())
+        contenders.push_back({static_cast<int>(port), plain[expected[port]].since});
     REQUIRE(text_of(queue.contenders(now)) == text_of(contenders));
     REQUIRE(queue.next_ready(now) == next);
     REQUIRE(queue.size() == plain.size());

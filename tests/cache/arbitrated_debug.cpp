@@ -1,8 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// transport_dbg in arbitrated timing, at every stage of every kind of transaction: it reads the coherent value, and
-// what it writes stays written.
+// transport_dbg in arbitrated timing, at every stage of every kind of transaction: it reads the coherent
+// value, and what it writes stays written.
 #include <catch2/catch.hpp>
 
 #include "arbitrated.h"
@@ -12,8 +12,8 @@ using namespace earshot::test;
 
 namespace {
 
-// What happens to a fresh line: prepared in peace, then done under observation. Word 0 is 1 before and, if the
-// transaction writes, 2 afterwards.
+// What happens to a fresh line: prepared in peace, then done under observation. Word 0 is 1 before and, if
+// the transaction writes, 2 afterwards.
 struct Scenario {
   const char* name;
   std::function<void(Bench&, std::uint64_t)> prepare, act;
@@ -51,12 +51,14 @@ const std::vector<Scenario>& scenarios() {
        [](Bench& bench, std::uint64_t line) { bench.cpu(0).write(line, 2); }, true},
       {"a write-back", [](Bench& bench, std::uint64_t line) { bench.cpu(0).write(line, 1); },
        [](Bench& bench, std::uint64_t line) { push_out(bench, 0, line); }, false},
-      {"a write-back while another reads", [](Bench& bench, std::uint64_t line) { bench.cpu(0).write(line, 1); },
+      {"a write-back while another reads",
+       [](Bench& bench, std::uint64_t line) { bench.cpu(0).write(line, 1); },
        [](Bench& bench, std::uint64_t line) {
          at_once({[&] { push_out(bench, 0, line); }, [&] { CHECK(bench.cpu(1).read(line) == 1); }});
        },
        false},
-      {"a write-back while another writes", [](Bench& bench, std::uint64_t line) { bench.cpu(0).write(line, 1); },
+      {"a write-back while another writes",
+       [](Bench& bench, std::uint64_t line) { bench.cpu(0).write(line, 1); },
        [](Bench& bench, std::uint64_t line) {
          at_once({[&] { push_out(bench, 0, line); }, [&] { bench.cpu(1).write(line, 2); }});
        },
@@ -76,7 +78,6 @@ std::vector<std::unique_ptr<BoxedBench>> benches(BusStructure structure) {
   return boxes;
 }
 
-
 // Memory answers early: it has the bytes long before the bus says so.
 void check_reads(BusStructure structure) {
   const auto boxes = benches(structure);
@@ -91,7 +92,10 @@ void check_reads(BusStructure structure) {
         settle();
         bool done = false;
         std::string seen;
-        at_once({[&] { scenario.act(bench, line); done = true; },
+        at_once({[&] {
+                   scenario.act(bench, line);
+                   done = true;
+                 },
                  [&] {
                    for (unsigned n = 0; n < 500 && (!done || n < 300); ++n) {
                      const std::string value = std::to_string(bench.cpu(3).debug_read(line));
@@ -126,7 +130,8 @@ void check_writes(BusStructure structure) {
           bench.memory.poke(line + 4, 0);
           scenario.prepare(bench, line);
           settle();
-          at_once({[&] { scenario.act(bench, line); }, [&] {
+          at_once({[&] { scenario.act(bench, line); },
+                   [&] {
                      sc_core::wait(ns(after));
                      bench.cpu(3).debug_write(line + 4, value);
                      CHECK(bench.cpu(3).debug_read(line + 4) == value);
@@ -175,7 +180,10 @@ TEST_CASE("a debug write stays written while memory has not yet read or written 
         bench.memory.hold = true;
         bool done = false;
         std::uint32_t value = 0;
-        at_once({[&] { scenario.act(bench, line); done = true; },
+        at_once({[&] {
+                   scenario.act(bench, line);
+                   done = true;
+                 },
                  [&] {
                    for (unsigned n = 0; !done || n < 12; ++n) {
                      sc_core::wait(ns(50));

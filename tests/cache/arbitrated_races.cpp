@@ -1,8 +1,9 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// Races between caches in arbitrated timing: what was asked for is judged at its grant, a victim is snooped until its
-// own, one transaction a line. Grants of an idle split bus: a request asked for at 1 ns is granted at 10, the next at 15.
+// Races between caches in arbitrated timing: what was asked for is judged at its grant, a victim is snooped
+// until its own, one transaction a line. Grants of an idle split bus: a request asked for at 1 ns is granted
+// at 10, the next at 15.
 #include <catch2/catch.hpp>
 
 #include "arbitrated.h"
@@ -27,7 +28,9 @@ void prefer(BenchOptions& options, int first) {
     if (port != first) options.bus.arbiter.priorities.push_back(port);
 }
 
-std::uint64_t supplied_by_owner(const Bench& bench) { return bench.bus->totals().supplied_by_owner; }
+std::uint64_t supplied_by_owner(const Bench& bench) {
+  return bench.bus->totals().supplied_by_owner;
+}
 
 }  // namespace
 
@@ -64,7 +67,8 @@ void check_lost_upgrade(const std::string& protocol, BusStructure structure) {
 TEST_CASE("an upgrade whose copy is lost before its grant becomes a read-exclusive: msi", "[cache]") {
   check_lost_upgrade("msi", BusStructure::split);
 }
-TEST_CASE("an upgrade whose copy is lost before its grant becomes a read-exclusive: mesi, connected", "[cache]") {
+TEST_CASE("an upgrade whose copy is lost before its grant becomes a read-exclusive: mesi, connected",
+          "[cache]") {
   check_lost_upgrade("mesi", BusStructure::connected);
 }
 TEST_CASE("an upgrade whose copy is lost before its grant becomes a read-exclusive: moesi", "[cache]") {
@@ -92,7 +96,8 @@ TEST_CASE("an owner's upgrade that loses the line becomes a read-exclusive too",
   });
 }
 
-TEST_CASE("a write-through whose copy is lost before its grant becomes a read-exclusive: write-once", "[cache]") {
+TEST_CASE("a write-through whose copy is lost before its grant becomes a read-exclusive: write-once",
+          "[cache]") {
   Bench bench(load_table("write-once"));
   simulate([&] {
     bench.cpu(0).read(0x40);
@@ -108,7 +113,8 @@ TEST_CASE("a write-through whose copy is lost before its grant becomes a read-ex
   });
 }
 
-TEST_CASE("an update whose copy is lost before its grant fetches the line again and then updates", "[cache]") {
+TEST_CASE("an update whose copy is lost before its grant fetches the line again and then updates",
+          "[cache]") {
   Bench bench(load_table("competitive-update", 1));  // the first update received ends a copy
   simulate([&] {
     bench.cpu(0).read(0x40);
@@ -137,7 +143,8 @@ TEST_CASE("a write miss that finds itself alone needs no update after its fetch"
     bench.cpu(1).read(0x40);
     settle();
     CHECK(bench.states(0x40) == "Sm Sc");
-    at_once({[&] { bench.cpu(0).write(0x40, 11); }, [&] {
+    at_once({[&] { bench.cpu(0).write(0x40, 11); },
+             [&] {
                sc_core::wait(ns(2));
                bench.cache(1).replace(0x40, sc_core::SC_ZERO_TIME);
              }});
@@ -151,7 +158,8 @@ TEST_CASE("of two updates at once the second takes ownership from the first", "[
   simulate([&] {
     for (int i = 0; i < 3; ++i) bench.cpu(i).read(0x40);
     settle();
-    at_once({[&] { bench.cpu(0).write(0x40, 10); }, [&] { bench.cpu(1).write(0x40, 11); }, [&] { bench.cpu(2).write(0x44, 12); }});
+    at_once({[&] { bench.cpu(0).write(0x40, 10); }, [&] { bench.cpu(1).write(0x40, 11); },
+             [&] { bench.cpu(2).write(0x44, 12); }});
     CHECK(bench.count(BusKind::update) == 3);
     CHECK(bench.states(0x40) == "V V D");
     for (int i = 0; i < 3; ++i) {
@@ -189,14 +197,17 @@ void write_together(Bench& bench) {
 
 }  // namespace
 
-TEST_CASE("writers that miss one line at once: every write is there, in every copy and after a flush in memory", "[cache]") {
+TEST_CASE(
+    "writers that miss one line at once: every write is there, in every copy and after a flush in memory",
+    "[cache]") {
   std::vector<std::unique_ptr<BoxedBench>> boxes;
   for (const std::string& protocol : builtin_tables())
     for (const int kind : {0, 1}) {
       BenchOptions options;
       options.caches = 4;
       options.bus.structure = structure(kind);
-      boxes.push_back(std::make_unique<BoxedBench>((protocol + std::to_string(kind)).c_str(), load_table(protocol), options));
+      boxes.push_back(std::make_unique<BoxedBench>((protocol + std::to_string(kind)).c_str(),
+                                                   load_table(protocol), options));
     }
   simulate([&] {
     for (const auto& box : boxes) {
@@ -208,7 +219,8 @@ TEST_CASE("writers that miss one line at once: every write is there, in every co
 
 // ---- A victim in its write-back slot
 
-TEST_CASE("a victim in its slot supplies a reader that is granted first, and is still written back", "[cache]") {
+TEST_CASE("a victim in its slot supplies a reader that is granted first, and is still written back",
+          "[cache]") {
   BenchOptions options = one_line_caches(2);
   prefer(options, 1);
   Bench bench(load_table("dirty-owner-update"), options);
@@ -251,7 +263,8 @@ TEST_CASE("a victim in its slot that is taken by a read-exclusive is not written
   });
 }
 
-TEST_CASE("a victim in its slot that is snooped by a reader memory learns from is not written back either", "[cache]") {
+TEST_CASE("a victim in its slot that is snooped by a reader memory learns from is not written back either",
+          "[cache]") {
   BenchOptions options = one_line_caches(2);
   prefer(options, 1);
   Bench bench(load_table("mesi"), options);
@@ -268,7 +281,8 @@ TEST_CASE("a victim in its slot that is snooped by a reader memory learns from i
   });
 }
 
-TEST_CASE("a victim in its slot takes an update, loses the ownership by it and is not written back", "[cache]") {
+TEST_CASE("a victim in its slot takes an update, loses the ownership by it and is not written back",
+          "[cache]") {
   BenchOptions options = one_line_caches(2);
   prefer(options, 1);
   Bench bench(load_table("dirty-owner-update"), options);
@@ -318,12 +332,14 @@ TEST_CASE("a line that its own cache wants back waits for its write-back and com
     settle();
     const Picoseconds start = now_ps();
     Picoseconds back = 0;
-    at_once({[&] { bench.cpu(0).read(0x80); }, [&] {
+    at_once({[&] { bench.cpu(0).read(0x80); },
+             [&] {
                sc_core::wait(ns(3));
                CHECK(bench.cpu(0).read(0x40) == 7);
                back = now_ps();
              }});
-    // Write-back granted at 15, its beats until 40, memory has it at 100: then arbitration, address, snoop, memory, beats.
+    // Write-back granted at 15, its beats until 40, memory has it at 100: then arbitration, address, snoop,
+    // memory, beats.
     CHECK(back == start + ps(100 + 5 + 5 + 5 + 60 + 20));
     CHECK(bench.memory.requests.back().at == start + ps(115));
     CHECK(bench.count(BusKind::write_back) == 1);
@@ -338,7 +354,8 @@ TEST_CASE("a line that its own cache wants back is somebody else's by then", "[c
   simulate([&] {
     bench.cpu(0).write(0x40, 7);
     settle();
-    at_once({[&] { bench.cpu(0).read(0x80); }, [&] { bench.cpu(1).write(0x44, 8); }, [&] {
+    at_once({[&] { bench.cpu(0).read(0x80); }, [&] { bench.cpu(1).write(0x44, 8); },
+             [&] {
                sc_core::wait(ns(3));
                CHECK(bench.cpu(0).read(0x40) == 7);
                CHECK(bench.cpu(0).read(0x44) == 8);
@@ -359,10 +376,18 @@ TEST_CASE("a transaction for a line under way waits at the bus while others pass
   bench.memory.latency = ns(200);
   simulate([&] {
     Picoseconds same = 0, other = 0;
-    at_once({[&] { bench.cpu(0).read(0x40); }, [&] { bench.cpu(1).read(0x40); same = now_ps(); },
-             [&] { bench.cpu(2).read(0x80); other = now_ps(); }});
-    CHECK(other == ps(240 + 20));               // granted at 15, past port 1: data at 225, beats behind the first's
-    CHECK(same == ps(240 + 5 + 5 + 200 + 20));  // granted with the last beat of the first, which is on an edge
+    at_once({[&] { bench.cpu(0).read(0x40); },
+             [&] {
+               bench.cpu(1).read(0x40);
+               same = now_ps();
+             },
+             [&] {
+               bench.cpu(2).read(0x80);
+               other = now_ps();
+             }});
+    CHECK(other == ps(240 + 20));  // granted at 15, past port 1: data at 225, beats behind the first's
+    CHECK(same ==
+          ps(240 + 5 + 5 + 200 + 20));  // granted with the last beat of the first, which is on an edge
     CHECK(bench.memory.requests.size() == 3);
     CHECK(bench.broken_laws() == "");
   });
@@ -374,7 +399,11 @@ TEST_CASE("a later request of the same port passes one that waits for its line",
   bench.memory.latency = ns(200);
   simulate([&] {
     Picoseconds same = 0, other = 0;
-    at_once({[&] { bench.cpu(0).read(0x40); }, [&] { bench.cpu(1).read(0x40); same = now_ps(); },
+    at_once({[&] { bench.cpu(0).read(0x40); },
+             [&] {
+               bench.cpu(1).read(0x40);
+               same = now_ps();
+             },
              [&] {
                sc_core::wait(ns(3));
                bench.cpu(1).read(0x80);
@@ -395,8 +424,14 @@ TEST_CASE("nobody reads a line before memory has taken what its owner supplied",
     bench.memory.hold = true;
     Picoseconds first = 0, second = 0;
     const Picoseconds start = now_ps();
-    at_once({[&] { CHECK(bench.cpu(1).read(0x40) == 7); first = now_ps(); },
-             [&] { CHECK(bench.cpu(2).read(0x40) == 7); second = now_ps(); },
+    at_once({[&] {
+               CHECK(bench.cpu(1).read(0x40) == 7);
+               first = now_ps();
+             },
+             [&] {
+               CHECK(bench.cpu(2).read(0x40) == 7);
+               second = now_ps();
+             },
              [&] {
                sc_core::wait(ns(300));
                CHECK(first == start + ps(50));  // the requester does not wait for memory
@@ -444,7 +479,8 @@ TEST_CASE("a supplied copy that goes before memory has it loses nothing", "[cach
   });
 }
 
-TEST_CASE("a read that is granted behind a write of the same word sees it, a hit before its effect does not", "[cache]") {
+TEST_CASE("a read that is granted behind a write of the same word sees it, a hit before its effect does not",
+          "[cache]") {
   Bench bench(load_table("write-through-update"));
   simulate([&] {
     bench.cpu(0).read(0x40);
@@ -489,7 +525,8 @@ TEST_CASE("replace() comes to an end while the processor goes on", "[cache]") {
     unsigned n = 0;
     std::vector<std::function<void()>> bodies{[&] {
       sc_core::wait(ns(2000));
-      for (std::uint64_t line = 0; line < 0x200; line += 0x20) bench.cache(0).replace(line, sc_core::SC_ZERO_TIME);
+      for (std::uint64_t line = 0; line < 0x200; line += 0x20)
+        bench.cache(0).replace(line, sc_core::SC_ZERO_TIME);
       replaced = true;
     }};
     for (unsigned who = 0; who < 3; ++who)

@@ -253,7 +253,8 @@ TEST_CASE("flush() counts the lines that memory did not take and comes to an end
   });
 }
 
-TEST_CASE("an uncached access that the target refuses is answered so, with no data moved into it", "[cache]") {
+TEST_CASE("an uncached access that the target refuses is answered so, with no data moved into it",
+          "[cache]") {
   Bench bench(load_table("msi"));
   bench.device.refuses = [](const tlm::tlm_generic_payload&) { return true; };
   simulate([&] {
@@ -271,9 +272,10 @@ TEST_CASE("an uncached access that the target refuses is answered so, with no da
 
 namespace {
 
-// Kills an access of cpu 0 after every number of nanoseconds, on fresh lines: whatever it was, the others go on, and
-// each word holds the old value or the new.
-void check_kills(const std::string& protocol, bool non_idle, const std::function<void(Bench&, std::uint64_t)>& prepare,
+// Kills an access of cpu 0 after every number of nanoseconds, on fresh lines: whatever it was, the others go
+// on, and each word holds the old value or the new.
+void check_kills(const std::string& protocol, bool non_idle,
+                 const std::function<void(Bench&, std::uint64_t)>& prepare,
                  const std::function<void(Bench&, std::uint64_t)>& access) {
   BenchOptions options = one_line_caches(3);
   options.geometry = {256, 2, 32, Replacement::lru, 1};
@@ -311,13 +313,19 @@ void check_kills(const std::string& protocol, bool non_idle, const std::function
   });
 }
 
-void write_one(Bench& bench, std::uint64_t line) { bench.cpu(1).write(line, 1); }
+void write_one(Bench& bench, std::uint64_t line) {
+  bench.cpu(1).write(line, 1);
+}
 void all_read(Bench& bench, std::uint64_t line) {
   write_one(bench, line);
   for (int i = 0; i < 3; ++i) bench.cpu(i).read(line);
 }
-void write_two(Bench& bench, std::uint64_t line) { bench.cpu(0).write(line, 2); }
-void read_it(Bench& bench, std::uint64_t line) { bench.cpu(0).read(line); }
+void write_two(Bench& bench, std::uint64_t line) {
+  bench.cpu(0).write(line, 2);
+}
+void read_it(Bench& bench, std::uint64_t line) {
+  bench.cpu(0).read(line);
+}
 // The written word and one of the next line.
 void write_over(Bench& bench, std::uint64_t line) {
   std::array<std::uint32_t, 9> words{};
@@ -327,7 +335,9 @@ void write_over(Bench& bench, std::uint64_t line) {
 
 }  // namespace
 
-TEST_CASE("a process killed in a write miss harms nobody: msi", "[cache]") { check_kills("msi", false, write_one, write_two); }
+TEST_CASE("a process killed in a write miss harms nobody: msi", "[cache]") {
+  check_kills("msi", false, write_one, write_two);
+}
 TEST_CASE("a process killed in a write miss harms nobody: dirty-owner-update", "[cache]") {
   check_kills("dirty-owner-update", false, write_one, write_two);
 }
@@ -340,7 +350,9 @@ TEST_CASE("a process killed in a write-through harms nobody: write-through-updat
 TEST_CASE("a process killed in a write-through harms nobody: write-once", "[cache]") {
   check_kills("write-once", false, all_read, write_two);
 }
-TEST_CASE("a process killed in an upgrade harms nobody: moesi", "[cache]") { check_kills("moesi", false, all_read, write_two); }
+TEST_CASE("a process killed in an upgrade harms nobody: moesi", "[cache]") {
+  check_kills("moesi", false, all_read, write_two);
+}
 TEST_CASE("a process killed in a read miss harms nobody who joined it: mesi", "[cache]") {
   check_kills("mesi", true, write_one, read_it);
 }
@@ -373,10 +385,12 @@ TEST_CASE("a process killed in an uncached access leaves nothing of its payload 
   simulate([&] {
     for (const bool write : {false, true})
       for (const double after : {3.0, 12.0, 40.0}) {
-        // The dead access's data: whoever owns these bytes afterwards must not see them change, nor the device get them.
+        // The dead access's data: whoever owns these bytes afterwards must not see them change, nor the
+        // device get them.
         std::vector<std::uint8_t> data(4, 0x22);
         sc_core::sc_process_handle doomed = sc_core::sc_spawn([&] {
-          bench.cpu(0).transport(write ? tlm::TLM_WRITE_COMMAND : tlm::TLM_READ_COMMAND, Bench::device_base, data.data(), 4);
+          bench.cpu(0).transport(write ? tlm::TLM_WRITE_COMMAND : tlm::TLM_READ_COMMAND, Bench::device_base,
+                                 data.data(), 4);
         });
         sc_core::wait(ns(after));
         doomed.kill();

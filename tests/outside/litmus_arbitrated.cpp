@@ -1,11 +1,11 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// The litmus tests of litmus_tests.h on caches in arbitrated timing, over many seeded timings: every built-in protocol,
-// both structures of the bus, caches of one line and of four, memory that takes from 5 to 200 ns. With one access
-// outstanding a thread, sequential consistency: no forbidden outcome, none that is not an interleaving. With several,
-// what is in one line keeps its order, which is more than the one-location tests ask for; between lines there is none,
-// and the relaxed outcomes that this allows do come up.
+// The litmus tests of litmus_tests.h on caches in arbitrated timing, over many seeded timings: every built-in
+// protocol, both structures of the bus, caches of one line and of four, memory that takes from 5 to 200 ns.
+// With one access outstanding a thread, sequential consistency: no forbidden outcome, none that is not an
+// interleaving. With several, what is in one line keeps its order, which is more than the one-location tests
+// ask for; between lines there is none, and the relaxed outcomes that this allows do come up.
 #include <algorithm>
 #include <catch2/catch.hpp>
 #include <map>
@@ -47,7 +47,8 @@ const std::vector<PreparedTest>& prepared_tests() {
 
 class Machine : public sc_core::sc_module {
  public:
-  Machine(sc_core::sc_module_name name, const Table& table, BusStructure structure, unsigned lines, bool watched = true)
+  Machine(sc_core::sc_module_name name, const Table& table, BusStructure structure, unsigned lines,
+          bool watched = true)
       : sc_module(name), bench(table, options(structure, lines, watched)) {
     bench.memory.answer = [this](tlm::tlm_generic_payload& payload, tlm::tlm_phase&, sc_core::sc_time& time) {
       bench.memory.move(payload);
@@ -96,7 +97,8 @@ class Machine : public sc_core::sc_module {
     // The start values, each written by anybody, and some copies here and there.
     for (std::size_t place = 0; place < places; ++place)
       any_cpu().write(address_of(place), static_cast<std::uint32_t>(test.start()[place]));
-    for (std::uint64_t copies = random_() % 8; copies > 0; --copies) any_cpu().read(address_of(random_() % places));
+    for (std::uint64_t copies = random_() % 8; copies > 0; --copies)
+      any_cpu().read(address_of(random_() % places));
     if (random_() % 2 == 0) sc_core::wait(ns(400));
 
     test_ = &test;
@@ -126,7 +128,8 @@ class Machine : public sc_core::sc_module {
     Requester& cpu = bench.cpu(who);
     for (const LitmusTest::Step& step : steps) {
       sc_core::wait(thinking());
-      if (random_() % 4 == 0) cpu.write(0x10000 + static_cast<std::uint64_t>(who) * 32, 0);  // something of its own
+      if (random_() % 4 == 0)
+        cpu.write(0x10000 + static_cast<std::uint64_t>(who) * 32, 0);  // something of its own
       if (step.write)
         cpu.write(address_of(step.place), static_cast<std::uint32_t>(step.value));
       else
@@ -157,7 +160,8 @@ class Machine : public sc_core::sc_module {
   }
 
   sc_core::sc_time thinking() {
-    static constexpr Picoseconds choices[] = {0, 0, 1, 7, 23, 40, 90, 200};  // ns: less than a hit to more than a miss
+    static constexpr Picoseconds choices[] = {0,  0,  1,  7,
+                                              23, 40, 90, 200};  // ns: less than a hit to more than a miss
     return from_ps(choices[random_() % std::size(choices)] * 1000 + random_() % 3 * 300);
   }
   Requester& any_cpu() { return bench.cpu(static_cast<int>(random_() % caches)); }
@@ -179,8 +183,8 @@ std::vector<std::unique_ptr<Machine>> machines_for(const Table& table) {
   for (const int kind : {0, 1})
     for (const unsigned lines : {1u, 4u})
       machines.push_back(std::make_unique<Machine>(
-          (table.name() + (kind == 0 ? "_split_" : "_connected_") + std::to_string(lines)).c_str(), table, structure(kind),
-          lines));
+          (table.name() + (kind == 0 ? "_split_" : "_connected_") + std::to_string(lines)).c_str(), table,
+          structure(kind), lines));
   return machines;
 }
 
@@ -201,7 +205,8 @@ void check_one_outstanding(const Table& table) {
   simulate([&] {
     for (const auto& machine : machines)
       for (const PreparedTest& test : prepared_tests())
-        for (const bool one_line : {true, false}) machine->play(test, one_line, Manner::one_outstanding, 80, findings);
+        for (const bool one_line : {true, false})
+          machine->play(test, one_line, Manner::one_outstanding, 80, findings);
     for (const auto& machine : machines) CHECK(machine->bench.broken_laws() == "");
   });
   INFO("seed " << seed << ", " << findings.rounds << " rounds");
@@ -240,7 +245,8 @@ void check_several_outstanding(const Table& table) {
   for (const PreparedTest& prepared : prepared_tests()) {
     if (one_location(prepared.test)) continue;
     const std::set<Outcome>& seen = relaxed.seen.at(prepared.test.name());
-    if (std::any_of(seen.begin(), seen.end(), [&](const Outcome& each) { return prepared.test.forbids(each); }))
+    if (std::any_of(seen.begin(), seen.end(),
+                    [&](const Outcome& each) { return prepared.test.forbids(each); }))
       forbidden += " " + prepared.test.name();
   }
   INFO("relaxed:" << forbidden);
@@ -250,12 +256,14 @@ void check_several_outstanding(const Table& table) {
 
 }  // namespace
 
-#define EARSHOT_LITMUS(protocol)                                                                                  \
-  TEST_CASE("arbitrated, one outstanding: " protocol " is sequentially consistent on 24 litmus tests", "[outside]") { \
-    check_one_outstanding(load_table(protocol));                                                                  \
-  }                                                                                                               \
-  TEST_CASE("arbitrated, several outstanding: " protocol " keeps the order in a line, not between lines", "[outside]") { \
-    check_several_outstanding(load_table(protocol));                                                              \
+#define EARSHOT_LITMUS(protocol)                                                                          \
+  TEST_CASE("arbitrated, one outstanding: " protocol " is sequentially consistent on 24 litmus tests",    \
+            "[outside]") {                                                                                \
+    check_one_outstanding(load_table(protocol));                                                          \
+  }                                                                                                       \
+  TEST_CASE("arbitrated, several outstanding: " protocol " keeps the order in a line, not between lines", \
+            "[outside]") {                                                                                \
+    check_several_outstanding(load_table(protocol));                                                      \
   }
 EARSHOT_LITMUS("write-through-update")
 EARSHOT_LITMUS("dirty-owner-update")
@@ -269,19 +277,23 @@ EARSHOT_LITMUS("berkeley")
 EARSHOT_LITMUS("write-once")
 #undef EARSHOT_LITMUS
 
-TEST_CASE("arbitrated: competitive-update with a limit of one is sequentially consistent on 24 litmus tests", "[outside]") {
+TEST_CASE("arbitrated: competitive-update with a limit of one is sequentially consistent on 24 litmus tests",
+          "[outside]") {
   check_one_outstanding(load_table("competitive-update", 1));
 }
 
-TEST_CASE("arbitrated: the one-location tests notice a protocol whose shared copies miss an update", "[outside]") {
+TEST_CASE("arbitrated: the one-location tests notice a protocol whose shared copies miss an update",
+          "[outside]") {
   const Table dragon = load_table("dragon");
   const std::vector<State>& states = dragon.states();
   const auto shared = static_cast<StateId>(
-      std::find_if(states.begin(), states.end(), [](const State& each) { return each.name == "Sc"; }) - states.begin());
+      std::find_if(states.begin(), states.end(), [](const State& each) { return each.name == "Sc"; }) -
+      states.begin());
   Row row = dragon.row(shared, Event::snoop_update, false);
   REQUIRE(row.take);
   row.take = false;
-  Machine machine("deaf", dragon.with_row(shared, Event::snoop_update, false, row), BusStructure::split, 4, false);
+  Machine machine("deaf", dragon.with_row(shared, Event::snoop_update, false, row), BusStructure::split, 4,
+                  false);
   Findings findings;
   simulate([&] {
     for (const PreparedTest& test : prepared_tests())
@@ -291,7 +303,8 @@ TEST_CASE("arbitrated: the one-location tests notice a protocol whose shared cop
   for (const PreparedTest& prepared : prepared_tests()) {
     if (!one_location(prepared.test)) continue;
     const std::set<Outcome>& seen = findings.seen.at(prepared.test.name());
-    forbidden += std::any_of(seen.begin(), seen.end(), [&](const Outcome& each) { return prepared.test.forbids(each); });
+    forbidden += std::any_of(seen.begin(), seen.end(),
+                             [&](const Outcome& each) { return prepared.test.forbids(each); });
   }
   CHECK(findings.not_sequential > 0);
   CHECK(forbidden >= 3);

@@ -14,8 +14,12 @@ const std::string some = "--workload.accesses=3000 ";
 const std::string arbitrated = uniform + some + "--timing=arbitrated ";
 const std::string dram = "--memory.kind=dram --memory.channel-width=32 --memory.device-width=16 ";
 
-double real(const Json& json) { return json.get<double>(); }
-std::uint64_t whole(const Json& json) { return json.get<std::uint64_t>(); }
+double real(const Json& json) {
+  return json.get<double>();
+}
+std::uint64_t whole(const Json& json) {
+  return json.get<std::uint64_t>();
+}
 
 // Every initiator's latencies, by kind and together, are those of all.
 void check_kinds(const Json& json) {
@@ -49,7 +53,8 @@ TEST_CASE("the kinds of access, and the parts of their latencies, add up in both
     }
 }
 
-TEST_CASE("queues and grants are in the document, and every arrival at the bus is granted or over", "[command]") {
+TEST_CASE("queues and grants are in the document, and every arrival at the bus is granted or over",
+          "[command]") {
   const Json json = results_of(arbitrated + "--caches.protocol=mesi");
   REQUIRE(json["bus"]["queues"].size() == 5);
   const Json& requests = json["bus"]["queues"][0];
@@ -83,7 +88,8 @@ TEST_CASE("the bottleneck obeys the utilisation law and the asymptotic bound", "
   for (const std::string timing : {"annotated", "arbitrated"}) {
     // Think time far above the latencies: nothing waits for anything, so utilisation is N / N* as Denning and Buzen
     // have it, but for the first misses.
-    const Json json = results_of(uniform + "--workload.think=2us --workload.accesses=1000 --timing=" + timing);
+    const Json json =
+        results_of(uniform + "--workload.think=2us --workload.accesses=1000 --timing=" + timing);
     const Json& bottleneck = json["bottleneck"];
     INFO(bottleneck.dump());
     const double busy = real(bottleneck["utilisation"]);
@@ -105,15 +111,17 @@ TEST_CASE("a connected bus is one resource, and held while memory works", "[comm
 }
 
 TEST_CASE("twice as many initiators as the bound says saturate the bottleneck", "[command]") {
-  const Json few = results_of("--workload.pattern=private --workload.lines=256 --workload.accesses=2000 "
-                              "--workload.order=concurrent --caches.size=1KiB --baseline=off --timing=arbitrated "
-                              "--workload.think=300ns --caches.count=2");
+  const Json few = results_of(
+      "--workload.pattern=private --workload.lines=256 --workload.accesses=2000 "
+      "--workload.order=concurrent --caches.size=1KiB --baseline=off --timing=arbitrated "
+      "--workload.think=300ns --caches.count=2");
   CHECK(real(few["bottleneck"]["utilisation"]) < 0.5);
   const int many = static_cast<int>(2 * real(few["bottleneck"]["initiators-at-saturation"]) + 1);
-  const Json saturated = results_of("--workload.pattern=private --workload.lines=256 --workload.accesses=2000 "
-                                    "--workload.order=concurrent --caches.size=1KiB --baseline=off "
-                                    "--timing=arbitrated --workload.think=300ns --caches.count=" +
-                                    std::to_string(many));
+  const Json saturated = results_of(
+      "--workload.pattern=private --workload.lines=256 --workload.accesses=2000 "
+      "--workload.order=concurrent --caches.size=1KiB --baseline=off "
+      "--timing=arbitrated --workload.think=300ns --caches.count=" +
+      std::to_string(many));
   CHECK(saturated["bottleneck"]["resource"] == few["bottleneck"]["resource"]);
   CHECK(real(saturated["bottleneck"]["utilisation"]) > 0.97);
 }
@@ -134,9 +142,9 @@ TEST_CASE("DRAM counts every burst once, and its energy is marked as an estimate
   CHECK(memory["energy"]["estimated"] == true);
   CHECK(memory["energy"]["method"].get<std::string>().find("an estimate") == 0);
   const Json& energy = memory["energy"];
-  CHECK(real(energy["total-nj"]) == Approx(real(energy["activate-nj"]) + real(energy["read-nj"]) +
-                                           real(energy["write-nj"]) + real(energy["refresh-nj"]) +
-                                           real(energy["background-nj"])));
+  CHECK(real(energy["total-nj"]) ==
+        Approx(real(energy["activate-nj"]) + real(energy["read-nj"]) + real(energy["write-nj"]) +
+               real(energy["refresh-nj"]) + real(energy["background-nj"])));
   const Json unknown = results_of(arbitrated + "--memory.kind=dram");
   CHECK(unknown["memory"]["dram"][0]["energy"]["estimated"] == false);
   CHECK(unknown["memory"]["dram"][0]["energy"]["method"].get<std::string>().find("no estimate") == 0);
@@ -144,17 +152,21 @@ TEST_CASE("DRAM counts every burst once, and its energy is marked as an estimate
 
 TEST_CASE("every grade, scheduling, row policy and arbiter plays without a violation", "[command]") {
   std::vector<std::string> variants;
-  for (const std::string grade : {"ddr3-1600k", "ddr4-2400r", "ddr4-2400t", "ddr4-3200aa", "lpddr4-3200", "ddr5-4800b"})
+  for (const std::string grade :
+       {"ddr3-1600k", "ddr4-2400r", "ddr4-2400t", "ddr4-3200aa", "lpddr4-3200", "ddr5-4800b"})
     variants.push_back("--memory.kind=dram --memory.grade=" + grade);
   for (const std::string scheduling : {"first-ready", "first-come", "one-at-a-time"})
     for (const std::string rows : {"open", "closed", "idle-timeout"})
-      variants.push_back("--memory.kind=dram --memory.scheduling=" + scheduling + " --memory.row-policy=" + rows);
+      variants.push_back("--memory.kind=dram --memory.scheduling=" + scheduling +
+                         " --memory.row-policy=" + rows);
   for (const std::string arbitration :
        {"first-come", "round-robin", "fixed-priority", "time-slots", "weighted-round-robin", "lottery"})
     for (const std::string kind : {"split", "connected"})
-      variants.push_back("--bus.turnaround-cycles=1 --bus.kind=" + kind + " --bus.arbitration=" + arbitration);
-  variants.push_back("--memory.kind=dram --memory.channels=2 --memory.ranks=2 --memory.bank-hash=on "
-                     "--memory.refresh=off --memory.frontend=4 --memory.backend=3");
+      variants.push_back("--bus.turnaround-cycles=1 --bus.kind=" + kind +
+                         " --bus.arbitration=" + arbitration);
+  variants.push_back(
+      "--memory.kind=dram --memory.channels=2 --memory.ranks=2 --memory.bank-hash=on "
+      "--memory.refresh=off --memory.frontend=4 --memory.backend=3");
   variants.push_back("--memory.kind=dram --memory.grade=lpddr4-3200 --memory.refresh=per-bank");
   for (const std::string& variant : variants) {
     const Outcome outcome = earshot("simulate --quiet " + arbitrated + "--workload.lines=512 " + variant);
@@ -166,9 +178,11 @@ TEST_CASE("every grade, scheduling, row policy and arbiter plays without a viola
 TEST_CASE("several accesses in flight are coherent, and quicker than one", "[command]") {
   // One initiator that only waits for memory: with four accesses in flight it waits a quarter of the time, or less
   // where they share a line.
-  const std::string run = "--workload.pattern=private --workload.accesses=3000 --workload.lines=4096 --caches.count=1 "
-                          "--workload.write-percent=0 --workload.order=concurrent --caches.size=1KiB --baseline=off "
-                          "--monitor=on --timing=arbitrated " + dram;
+  const std::string run =
+      "--workload.pattern=private --workload.accesses=3000 --workload.lines=4096 --caches.count=1 "
+      "--workload.write-percent=0 --workload.order=concurrent --caches.size=1KiB --baseline=off "
+      "--monitor=on --timing=arbitrated " +
+      dram;
   const Json one = results_of(run);
   const Json four = results_of(run + "--workload.outstanding=4");
   CHECK(four["accesses"]["reads"] == one["accesses"]["reads"]);
@@ -184,8 +198,10 @@ TEST_CASE("a replace in a recording is carried out in arbitrated timing too", "[
   const Folder folder;
   std::string rows = "initiator,op,address,size\n";
   for (int i = 0; i < 40; ++i) rows += "0,write,0x40,4\n0,replace,0x40,4\n1,read,0x80,4\n";
-  const std::string run = "simulate --quiet --baseline=off --monitor=on --caches.count=2 --timing=arbitrated "
-                          "--workload.recording=" + folder.write("r.csv", rows) + " --json " + (folder / "o.json");
+  const std::string run =
+      "simulate --quiet --baseline=off --monitor=on --caches.count=2 --timing=arbitrated "
+      "--workload.recording=" +
+      folder.write("r.csv", rows) + " --json " + (folder / "o.json");
   for (const std::string order : {"recorded", "concurrent", "concurrent --workload.outstanding=4"}) {
     const Outcome outcome = earshot(run + " --workload.order=" + order);
     INFO(order << "\n" << outcome.out);
@@ -198,7 +214,8 @@ TEST_CASE("a replace in a recording is carried out in arbitrated timing too", "[
 
 TEST_CASE("the same input gives the same bytes in arbitrated timing", "[command]") {
   const Folder folder;
-  for (const std::string variant : {"--bus.arbitration=lottery", "--workload.outstanding=3", "--memory.kind=dram"}) {
+  for (const std::string variant :
+       {"--bus.arbitration=lottery", "--workload.outstanding=3", "--memory.kind=dram"}) {
     const std::string run = "simulate " + arbitrated + variant + " --json ";
     CHECK(earshot(run + (folder / "a.json")).out == earshot(run + (folder / "b.json")).out);
     CHECK(file_text(folder / "a.json") == file_text(folder / "b.json"));
@@ -213,7 +230,8 @@ TEST_CASE("a wait beyond the limit is a finding, and the answer is given all the
   const Outcome outcome = earshot(run + "30ns");
   INFO(outcome.out);
   CHECK(outcome.status == 1);
-  CHECK(outcome.out.find("An access takes") < outcome.out.find("for a grant of the bus; bus.longest-wait allows 30.0 ns"));
+  CHECK(outcome.out.find("An access takes") <
+        outcome.out.find("for a grant of the bus; bus.longest-wait allows 30.0 ns"));
   const Json json = Json::parse(file_text(folder / "o.json"));
   REQUIRE(json["findings"].size() == 4);
   const std::string first = json["findings"][0].get<std::string>();
@@ -224,8 +242,10 @@ TEST_CASE("a wait beyond the limit is a finding, and the answer is given all the
 }
 
 TEST_CASE("nothing completing for too long is a finding that prints who waits for what", "[command]") {
-  const Outcome outcome = earshot("simulate --baseline=off --workload.pattern=private --workload.accesses=10 "
-                                  "--timing=arbitrated --bus.stall-cycles=6 " + dram);
+  const Outcome outcome = earshot(
+      "simulate --baseline=off --workload.pattern=private --workload.accesses=10 "
+      "--timing=arbitrated --bus.stall-cycles=6 " +
+      dram);
   INFO(outcome.out);
   CHECK(outcome.status == 1);
   CHECK(outcome.out.find("nothing has completed for 6 bus cycles") != std::string::npos);
@@ -243,9 +263,10 @@ TEST_CASE("the command log is written whole, with a header, one command a line i
   std::string line;
   std::getline(lines, line);
   CHECK(line == "window,channel,clock,time-ps,command,rank,bank-group,bank,row,column");
-  const std::regex form("memory,0,([0-9]+),([0-9]+),"
-                        "(ACT,0,[0-3],[0-3],[0-9]+,|(RD|RDA|WR|WRA),0,[0-3],[0-3],,[0-9]+|PRE,0,[0-3],[0-3],,|"
-                        "(PREA|REF),0,,,,)");
+  const std::regex form(
+      "memory,0,([0-9]+),([0-9]+),"
+      "(ACT,0,[0-3],[0-3],[0-9]+,|(RD|RDA|WR|WRA),0,[0-3],[0-3],,[0-9]+|PRE,0,[0-3],[0-3],,|"
+      "(PREA|REF),0,,,,)");
   std::uint64_t reads = 0;
   long long last = -1;
   while (std::getline(lines, line)) {
@@ -259,9 +280,11 @@ TEST_CASE("the command log is written whole, with a header, one command a line i
   CHECK(reads == whole(json["memory"]["dram"][0]["read-bursts"]));
 }
 
-TEST_CASE("the DDR4 demo names its bottleneck, splits the latency, and every access is coherent", "[command]") {
+TEST_CASE("the DDR4 demo names its bottleneck, splits the latency, and every access is coherent",
+          "[command]") {
   const Folder folder;
-  const Outcome outcome = earshot("simulate " EARSHOT_SOURCE "/configs/sonar-buoy-ddr4.ini --json " + (folder / "o.json"));
+  const Outcome outcome =
+      earshot("simulate " EARSHOT_SOURCE "/configs/sonar-buoy-ddr4.ini --json " + (folder / "o.json"));
   INFO(outcome.out);
   REQUIRE(outcome.status == 0);
   const Json json = Json::parse(file_text(folder / "o.json"));
@@ -284,7 +307,8 @@ TEST_CASE("packing moves pages together and changes nothing but addresses", "[co
                           "/configs/recordings/sonar-buoy.earshot.zst --caches.size=8KiB ";
   const Json as_recorded = results_of(run);
   const Json packed = results_of(run + "--workload.addresses=packed");
-  CHECK(packed["checks"]["reads-compared-with-recording"] == as_recorded["checks"]["reads-compared-with-recording"]);
+  CHECK(packed["checks"]["reads-compared-with-recording"] ==
+        as_recorded["checks"]["reads-compared-with-recording"]);
   CHECK(packed["accesses"] == as_recorded["accesses"]);  // a way of these caches is smaller than a page
   CHECK(packed["latency"]["total-ps"] == as_recorded["latency"]["total-ps"]);
 }
@@ -292,11 +316,13 @@ TEST_CASE("packing moves pages together and changes nothing but addresses", "[co
 TEST_CASE("an uncached window keeps its plain memory beside DRAM", "[command]") {
   const Folder folder;
   const std::string recording = folder.write(
-      "r.csv", "initiator,op,address,size\n0,read,0x40,4\n0,write,0x90000000,4\n1,read,0x90000000,4\n1,read,0x40,4\n");
+      "r.csv",
+      "initiator,op,address,size\n0,read,0x40,4\n0,write,0x90000000,4\n1,read,0x90000000,4\n1,read,0x40,4\n");
   for (const std::string timing : {"annotated", "arbitrated"}) {
-    const Json json = results_of("--baseline=off --caches.count=2 --workload.recording=" + recording + " --timing=" +
-                                 timing + " --memory.kind=dram --memory.read-latency=20ns "
-                                          "\"--bus.windows=ram 0x0..0x7fffffff cached, io 0x90000000..0x9000ffff uncached\"");
+    const Json json = results_of(
+        "--baseline=off --caches.count=2 --workload.recording=" + recording + " --timing=" + timing +
+        " --memory.kind=dram --memory.read-latency=20ns "
+        "\"--bus.windows=ram 0x0..0x7fffffff cached, io 0x90000000..0x9000ffff uncached\"");
     CHECK(json["accesses"]["uncached"] == 2);
     CHECK(json["memory"]["dram"][0]["window"] == "ram");
     CHECK(json["findings"].empty());

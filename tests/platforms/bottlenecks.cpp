@@ -22,7 +22,8 @@ TEST_CASE("the busiest resource is the bottleneck, with its utilisation and dema
 
 // E. D. Lazowska et al., Quantitative System Performance, 1984, section 5.4 (value from memory: the form of the
 // example, a terminal system with demands of 5, 4, 3 s and a think time of 15 s; the bound N* = (D + Z) / Dmax).
-TEST_CASE("the bounds of a terminal system meet at total demand and think time over the largest demand", "[platforms]") {
+TEST_CASE("the bounds of a terminal system meet at total demand and think time over the largest demand",
+          "[platforms]") {
   Load load;
   load.accesses = 1;
   load.elapsed = 100;
@@ -41,7 +42,8 @@ TEST_CASE("latencies of accesses in flight at once overlap, think times do not",
   load.in_flight = 4;
   CHECK(find_bottleneck({{"bus", 50}}, load).initiators_at_saturation == Approx(4));  // (10 + 70) / 4 / 5
   load.in_flight = 16;
-  CHECK(find_bottleneck({{"bus", 50}}, load).initiators_at_saturation == Approx(2));  // 10 / 5: thinking is the limit
+  CHECK(find_bottleneck({{"bus", 50}}, load).initiators_at_saturation ==
+        Approx(2));  // 10 / 5: thinking is the limit
 }
 
 TEST_CASE("nothing that was busy has no bound", "[platforms]") {

@@ -30,9 +30,10 @@ Table broken(const std::string& name, const std::string& state, Event event, Cha
 // Plays a uniform pattern and returns the finding's text.
 std::string finding(const Table& table, const std::string& order, const std::vector<std::string>& more = {},
                     PlayerHooks hooks = {}) {
-  std::vector<std::string> arguments{"--workload.pattern=uniform", "--workload.accesses=2000", "--workload.lines=16",
-                                     "--caches.size=256", "--caches.ways=2", "--monitor=on",
-                                     "--workload.order=" + order};
+  std::vector<std::string> arguments{
+      "--workload.pattern=uniform", "--workload.accesses=2000", "--workload.lines=16",
+      "--caches.size=256",          "--caches.ways=2",          "--monitor=on",
+      "--workload.order=" + order};
   arguments.insert(arguments.end(), more.begin(), more.end());
   const Settings settings = read_settings("", arguments);
   hooks.failed = [] { sc_core::sc_stop(); };
@@ -48,7 +49,8 @@ std::string finding(const Table& table, const std::string& order, const std::vec
 
 }  // namespace
 
-TEST_CASE("a dropped supply is found as a stale read or stale memory, with the line's last events", "[platforms]") {
+TEST_CASE("a dropped supply is found as a stale read or stale memory, with the line's last events",
+          "[platforms]") {
   const std::string text = finding(
       broken("dirty-owner-update", "D", Event::snoop_read, [](Row& row) { row.supply = false; }), "recorded");
   CHECK_THAT(text, Catch::StartsWith("coherence violation at access "));
@@ -57,20 +59,23 @@ TEST_CASE("a dropped supply is found as a stale read or stale memory, with the l
 }
 
 TEST_CASE("a copy that does not take an update is found in concurrent order too", "[platforms]") {
-  CHECK_THAT(finding(broken("dragon", "Sc", Event::snoop_update, [](Row& row) { row.take = false; }), "concurrent"),
-             Catch::Contains("the last value written there is"));
+  CHECK_THAT(
+      finding(broken("dragon", "Sc", Event::snoop_update, [](Row& row) { row.take = false; }), "concurrent"),
+      Catch::Contains("the last value written there is"));
 }
 
 TEST_CASE("a second owner is found", "[platforms]") {
   const Table dragon = load_table("dragon");
-  CHECK_THAT(finding(broken("dragon", "Sm", Event::snoop_update, [&](Row& row) { row.next = id_of(dragon, "Sm"); }),
-                     "recorded"),
-             Catch::Contains("the line has two owners, cache "));
+  CHECK_THAT(
+      finding(broken("dragon", "Sm", Event::snoop_update, [&](Row& row) { row.next = id_of(dragon, "Sm"); }),
+              "recorded"),
+      Catch::Contains("the line has two owners, cache "));
 }
 
 TEST_CASE("memory left stale without an owner is found", "[platforms]") {
-  CHECK_THAT(finding(broken("msi", "M", Event::snoop_read, [](Row& row) { row.write_memory = false; }), "recorded"),
-             Catch::Contains("nobody owns the line, but memory is stale"));
+  CHECK_THAT(
+      finding(broken("msi", "M", Event::snoop_read, [](Row& row) { row.write_memory = false; }), "recorded"),
+      Catch::Contains("nobody owns the line, but memory is stale"));
 }
 
 TEST_CASE("a silently writable copy that is not alone is found", "[platforms]") {
@@ -84,7 +89,8 @@ TEST_CASE("a silently writable copy that is not alone is found", "[platforms]") 
              Catch::Contains("may write the line silently, but it is not the only copy"));
 }
 
-TEST_CASE("a violation is found in arbitrated timing, whose accesses take effect in method processes", "[platforms]") {
+TEST_CASE("a violation is found in arbitrated timing, whose accesses take effect in method processes",
+          "[platforms]") {
   const Table table =
       broken("dirty-owner-update", "D", Event::snoop_read, [](Row& row) { row.supply = false; });
   const std::string text = finding(table, "concurrent", {"--timing=arbitrated"});
@@ -93,8 +99,8 @@ TEST_CASE("a violation is found in arbitrated timing, whose accesses take effect
 }
 
 TEST_CASE("a violation is found with several accesses in flight over DRAM", "[platforms]") {
-  CHECK_THAT(finding(broken("dragon", "Sc", Event::snoop_update, [](Row& row) { row.take = false; }), "concurrent",
-                     {"--timing=arbitrated", "--workload.outstanding=4", "--memory.kind=dram"}),
+  CHECK_THAT(finding(broken("dragon", "Sc", Event::snoop_update, [](Row& row) { row.take = false; }),
+                     "concurrent", {"--timing=arbitrated", "--workload.outstanding=4", "--memory.kind=dram"}),
              Catch::Contains("the last value written there is"));
 }
 
@@ -106,7 +112,8 @@ TEST_CASE("an initiator that never goes on is a finding, annotated", "[platforms
     if (++accesses == 100) sc_core::wait(never);
   };
   CHECK_THAT(finding(load_table("mesi"), "concurrent", {}, hooks),
-             Catch::StartsWith("nothing can happen any more, at ") && Catch::Contains("1 of the players have not played all"));
+             Catch::StartsWith("nothing can happen any more, at ") &&
+                 Catch::Contains("1 of the players have not played all"));
 }
 
 TEST_CASE("an initiator that never goes on is a finding, arbitrated", "[platforms]") {
@@ -117,5 +124,6 @@ TEST_CASE("an initiator that never goes on is a finding, arbitrated", "[platform
     if (++accesses == 100) sc_core::wait(never);
   };
   CHECK_THAT(finding(load_table("mesi"), "recorded", {"--timing=arbitrated"}, hooks),
-             Catch::StartsWith("nothing can happen any more, at ") && Catch::Contains("1 of the players have not played all"));
+             Catch::StartsWith("nothing can happen any more, at ") &&
+                 Catch::Contains("1 of the players have not played all"));
 }

@@ -68,7 +68,8 @@ TEST_CASE("an agenda calls in order of time and, within one time, as asked", "[t
   });
 }
 
-TEST_CASE("what an agenda's call adds for the same time is done in the same run, behind the rest", "[timing]") {
+TEST_CASE("what an agenda's call adds for the same time is done in the same run, behind the rest",
+          "[timing]") {
   Owner owner("owner");
   simulate([&] {
     owner.at(1000, 1).also = [&] {
@@ -132,7 +133,8 @@ TEST_CASE("an agenda does any mix of times as a sorted list would", "[timing]") 
       sc_core::wait(sc_core::sc_time::from_value(random() % 8));
     }
     sc_core::wait(ns(10));
-    std::stable_sort(expected.begin(), expected.end(), [](const auto& a, const auto& b) { return a.first < b.first; });
+    std::stable_sort(expected.begin(), expected.end(),
+                     [](const auto& a, const auto& b) { return a.first < b.first; });
     std::string order;
     for (const auto& [time, which] : expected) order += (order.empty() ? "" : " ") + std::to_string(which);
     CHECK(owner.order == order);
