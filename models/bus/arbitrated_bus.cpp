@@ -18,9 +18,11 @@ void SnoopingBus::Arbitrated::start() {
 
 void SnoopingBus::Arbitrated::request(BusTransaction& transaction) {
   const Picoseconds now = now_ps();
+  // An access's second transaction is as old as its first: first come, first served as a whole.
+  const Picoseconds since = transaction.follows_up ? transaction.timeline.begin() : now;
   transaction.timeline = Timeline(now);
   const Picoseconds ready = next_edge(now, bus_.period_) + bus_.cycles(bus_.config_.arbitration_cycles);
-  requests_.push({&transaction, now, ready});
+  requests_.push({&transaction, since, ready});
   request_meter_.enter(now);
   if (!held_) schedule(std::max(ready, address_free_));
   if (watching_ || bus_.config_.stall_cycles == 0) return;
@@ -76,16 +78,17 @@ bool SnoopingBus::Arbitrated::grant(const RequestQueue::Request& request) {
   const Picoseconds now = now_ps();
   BusTransaction& transaction = *request.transaction;
   const int port = transaction.requester;
+  const Picoseconds asked = transaction.timeline.begin();
   transaction.timeline.spend(LatencyPart::wait_for_grant, now);
-  request_meter_.leave(now, request.since);
+  request_meter_.leave(now, asked);
   if (transaction.io == nullptr && !bus_.caches_[static_cast<std::size_t>(port)]->granted(transaction)) {
     ++completions_;
     return false;
   }
   BusPortTotals& totals = bus_.totals_.ports[static_cast<std::size_t>(port)];
   ++totals.grants;
-  totals.wait += now - request.since;
-  totals.longest_wait = std::max(totals.longest_wait, now - request.since);
+  totals.wait += now - asked;
+  totals.longest_wait = std::max(totals.longest_wait, now - asked);
 
   Active& active = new_active();
   active.transaction = &transaction;
