@@ -45,7 +45,7 @@ TEST_CASE("a window too small for the pages touched is refused", "[platforms]") 
   for (std::uint64_t page = 0; page < 9; ++page) accesses.push_back(access_to(page << 20));
   write_all(path, accesses);
   CHECK(message_of([&] { PackedAddresses(path, ram_and_io); }) ==
-        path + ": touches 9 pages of 4 KiB; window 'ram' has room for 8");
+        "r.csv: touches 9 pages of 4 KiB; window 'ram' has room for 8");
   accesses.pop_back();
   write_all(path, accesses);
   CHECK(message_of([&] { PackedAddresses(path, ram_and_io); }) == "no error");
