@@ -157,10 +157,17 @@ class Requester : public sc_core::sc_module, private tlm::tlm_mm_interface {
   tlm::tlm_response_status transport(tlm::tlm_command command, std::uint64_t address, void* data,
                                      unsigned length, sc_core::sc_time delay = sc_core::SC_ZERO_TIME,
                                      std::vector<std::uint8_t> enables = {}) {
-    tlm::tlm_generic_payload payload;
+    // Ends with the call, also if its process is killed; a caller that still waits at the end is never unwound.
+    struct Ending {
+      std::list<Call>& calls;
+      std::list<Call>::iterator call;
+      ~Ending() { calls.erase(call); }
+    } ending{calls_, calls_.emplace(calls_.end())};
+    tlm::tlm_generic_payload& payload = ending.call->payload;
+    ending.call->enables.swap(enables);
     prepare(payload, command, address, static_cast<std::uint8_t*>(data), length);
-    payload.set_byte_enable_ptr(enables.empty() ? nullptr : enables.data());
-    payload.set_byte_enable_length(static_cast<unsigned>(enables.size()));
+    payload.set_byte_enable_ptr(ending.call->enables.empty() ? nullptr : ending.call->enables.data());
+    payload.set_byte_enable_length(static_cast<unsigned>(ending.call->enables.size()));
     socket->b_transport(payload, delay);
     if (delay != sc_core::SC_ZERO_TIME) throw std::logic_error("b_transport leaves a delay");
     status = payload.get_response_status();
@@ -253,6 +260,11 @@ class Requester : public sc_core::sc_module, private tlm::tlm_mm_interface {
   }
   void free(tlm::tlm_generic_payload*) override { ++freed; }
 
+  struct Call {
+    tlm::tlm_generic_payload payload;
+    std::vector<std::uint8_t> enables;
+  };
+  std::list<Call> calls_;  // of blocking callers
   std::vector<std::unique_ptr<Access>> accesses_;
 };
 
