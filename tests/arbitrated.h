@@ -7,6 +7,7 @@
 
 #include <array>
 #include <deque>
+#include <list>
 #include <map>
 #include <sstream>
 
