@@ -7,7 +7,7 @@
 //
 // Runs are long enough for what happens at their beginning, when all initiators miss at once, not to matter, and
 // initiators think at least 20 ns: one that goes through hundreds of accesses within one quantum sees other sharing,
-// not other timing.
+// not other timing. The loads are chosen: README.md says where the two are known to differ by more.
 #include <cstdio>
 
 #include "command_runner.h"
