@@ -229,6 +229,8 @@ std::vector<Key> workload_keys() {
       {"workload.outstanding", "1", "accesses an initiator keeps in flight", number(at(&S::in_flight), 1, 64),
        {arbitrated, {"workload.order", {"concurrent"}}}},
       {"workload.think", "0ns", "passes in an initiator before each access", time(at(&S::think), 0)},
+      {"workload.think-spread", "0", "percent by which it is more or less, evenly",
+       number(at(&S::think_spread), 0, 100)},
       {"workload.pattern", "",
        "instead of a recording: private, read-shared, producer-consumer, migratory, false-sharing, uniform",
        apply_pattern},
@@ -238,7 +240,7 @@ std::vector<Key> workload_keys() {
       {"workload.word", "4", "bytes in each of a pattern's accesses", number(at(&S::pattern, &P::word_bytes), 1, 8)},
       {"workload.write-percent", "30", "share of writes, for patterns that choose",
        number(at(&S::pattern, &P::write_percent), 0, 100)},
-      {"workload.seed", "1", "for a pattern", number(at(&S::pattern, &P::seed), 0, ~std::uint64_t{0})},
+      {"workload.seed", "1", "for a pattern, and for think-spread", number(at(&S::pattern, &P::seed), 0, ~std::uint64_t{0})},
   };
 }
 

@@ -103,9 +103,10 @@ void Platform::build_players(const Settings& settings, PlayerHooks hooks) {
   };
   const bool concurrent = settings.order == Order::concurrent;
   playing_ = concurrent ? settings.caches : 1;
-  const sc_core::sc_time think = from_ps(settings.think);
   for (unsigned i = 0; i < settings.caches; ++i) {
     const std::string name = "player" + std::to_string(i);
+    const ThinkTime think(from_ps(settings.think), settings.think_spread,
+                          SplitMix64::mix(settings.pattern.seed + i));
     if (settings.in_flight > 1) {
       non_blocking_players_.push_back(
           std::make_unique<NonBlockingPlayer>(name.c_str(), i, settings.in_flight, think, hooks));

@@ -72,6 +72,7 @@ struct Settings {
   bool packed = false;            // addresses of a recording: see PackedAddresses
   unsigned in_flight = 1;         // accesses of an initiator
   Picoseconds think = 0;
+  unsigned think_spread = 0;      // percent
   Picoseconds quantum = 0;
 
   // the run

@@ -49,7 +49,9 @@ void SnoopingBus::transact(BusTransaction& transaction, sc_core::sc_time& delay)
   data_bus_.forget_before(base);
 
   Picoseconds time = requested;
-  const Hold hold = address_phase(transaction.kind, data_bytes(transaction), time, transaction.parts);
+  LineTimes::Line& line = lines_->of(transaction.line);
+  line.under_way.forget_before(base);
+  const Hold hold = address_phase(transaction.kind, data_bytes(transaction), &line.under_way, time, transaction.parts);
 
   Snoop snoop;
   if (transaction.kind != BusKind::write_back) {
@@ -61,9 +63,12 @@ void SnoopingBus::transact(BusTransaction& transaction, sc_core::sc_time& delay)
   requester_ = transaction.requester;
   const bool accepted = memory_phase(transaction, snoop, hold, time);
   requester_ = -1;
+  if (config_.structure == BusStructure::split) line.under_way.occupy(hold.start, time);
   if (accepted) {
     transaction.shared = snoop.shared;
     commit_others(transaction, snoop.others);
+    line.lose(snoop.others & ~presence_.holders(transaction.line), hold.start);
+    line.gain(transaction.requester);
     if (transaction.kind == BusKind::read || transaction.kind == BusKind::read_exclusive) {
       presence_.add(transaction.line, transaction.requester);
       count_supply(transaction);
@@ -164,12 +169,22 @@ unsigned SnoopingBus::data_bytes(const BusTransaction& transaction) const {
   }
 }
 
-SnoopingBus::Hold SnoopingBus::address_phase(BusKind kind, unsigned bytes, Picoseconds& time, LatencyParts& parts) {
+SnoopingBus::Hold SnoopingBus::address_phase(BusKind kind, unsigned bytes, const Calendar* line, Picoseconds& time,
+                                             LatencyParts& parts) {
   const Picoseconds address = cycles(config_.address_cycles);
   const Picoseconds ready = next_edge(time, period_) + cycles(config_.arbitration_cycles);
-  const Picoseconds start = config_.structure == BusStructure::split
-                                ? address_bus_.book(ready, address)
-                                : address_bus_.earliest(ready, address + cycles(beats(bytes)));
+  const Picoseconds whole = address + cycles(beats(bytes));
+  Picoseconds start = ready;
+  if (config_.structure == BusStructure::connected) {
+    start = address_bus_.earliest(ready, whole);
+  } else {
+    for (Picoseconds free = ready; line != nullptr;) {  // until both are free
+      free = next_edge(line->earliest(start, whole), period_);
+      start = address_bus_.earliest(free, address);
+      if (start == free) break;
+    }
+    start = address_bus_.book(start, address);
+  }
   parts[LatencyPart::wait_for_grant] += start - time;
   parts[LatencyPart::transfer] += address;
   totals_.kind[static_cast<std::size_t>(kind)].address_cycles += config_.address_cycles;
@@ -194,6 +209,14 @@ void SnoopingBus::data_phase(BusKind kind, unsigned bytes, const Hold& hold, Pic
 // A connected bus was held until `time`.
 void SnoopingBus::let_go(const Hold& hold, Picoseconds time) {
   if (config_.structure == BusStructure::connected) address_bus_.occupy(hold.start, next_edge(time, period_));
+}
+
+const std::uint8_t* SnoopingBus::copy_before_loss(int requester, std::uint64_t line, Picoseconds time) const {
+  const LineTimes::Line* const times = lines_->find(line);
+  if (times == nullptr || !times->still_had_it(requester, time)) return nullptr;
+  const PresenceIndex::Mask holders = presence_.holders(line);
+  bool owner = false;
+  return holders == 0 ? nullptr : caches_[static_cast<std::size_t>(__builtin_ctzll(holders))]->copy_of(line, owner);
 }
 
 void SnoopingBus::access_target(int window, tlm::tlm_generic_payload& payload, Picoseconds& time,
@@ -240,7 +263,7 @@ void SnoopingBus::pass_through(tlm::tlm_generic_payload& payload, sc_core::sc_ti
   Picoseconds time = requested;
   const Picoseconds waited_before = parts[LatencyPart::wait_for_grant];
 
-  const Hold hold = address_phase(kind, payload.get_data_length(), time, parts);
+  const Hold hold = address_phase(kind, payload.get_data_length(), nullptr, time, parts);
   const int window =
       map_.find(payload.get_address(), std::min(payload.get_data_length(), payload.get_streaming_width()));
   if (kind == BusKind::io_write) data_phase(kind, payload.get_data_length(), hold, time, parts);

@@ -41,7 +41,10 @@ SnoopingBus::SnoopingBus(sc_core::sc_module_name name, const SnoopingBusConfig& 
                                                     static_cast<WindowPort::Listener&>(*this)));
   cache_socket.bind(static_cast<RequestInterface&>(*this));
   memory_payload_.set_extension(&memory_times_);
-  if (config.timing == BusTiming::annotated) return;
+  if (config.timing == BusTiming::annotated) {
+    lines_ = std::make_unique<LineTimes>();
+    return;
+  }
   arbitrated_ = std::make_unique<Arbitrated>(*this);
   SC_HAS_PROCESS(SnoopingBus);
   SC_METHOD(work);

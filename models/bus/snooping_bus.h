@@ -13,7 +13,9 @@
 // memory access and data. connected: the bus is held from the grant to the last beat.
 //
 // Timing annotated: nothing waits unless a target does (then later transactions queue behind it), the time is added
-// to the caller's delay and safe under temporal decoupling; the buses are calendars booked earliest gap first.
+// to the caller's delay and safe under temporal decoupling; the buses are calendars booked earliest gap first, and so is
+// each line of a split bus, which has one transaction at a time. A transaction takes effect when it is asked for, before
+// the time of its grant: a read that another cache makes at a time before that grant still costs a hit.
 // Timing arbitrated: requests queue and an arbiter grants them by event; at most `outstanding` transactions are under
 // way, at most one for a line: later ones for it wait. The data bus serves whoever has data first. A request is judged
 // at its grant, in the state the line is in then. Targets are called with nb_transport; one is told of a fetch at the
@@ -44,6 +46,7 @@
 #include "earshot/bus/transaction.h"
 #include "earshot/bus/window_port.h"
 #include "earshot/observe/histogram.h"
+#include "earshot/bus/line_times.h"
 #include "earshot/timing/calendar.h"
 #include "earshot/timing/queue_meter.h"
 
@@ -152,6 +155,7 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface, private
   void pass_through(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay, LatencyParts& parts) override;
   void request(BusTransaction& transaction) override;
   bool in_flight(std::uint64_t line) const override;
+  const std::uint8_t* copy_before_loss(int requester, std::uint64_t line, Picoseconds time) const override;
   void dropped(int requester, std::uint64_t line) override { presence_.remove(line, requester); }
   unsigned debug(tlm::tlm_generic_payload& payload) override;
   bool direct_memory(tlm::tlm_generic_payload& payload, tlm::tlm_dmi& dmi) override;
@@ -180,7 +184,7 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface, private
   void fetch_line(BusTransaction& transaction, Snoop& snoop, const Hold& hold, Picoseconds& time);
   unsigned data_bytes(const BusTransaction& transaction) const;
   // Books the address phase / `bytes` of data at or after `time`, and moves `time` to its end.
-  Hold address_phase(BusKind kind, unsigned bytes, Picoseconds& time, LatencyParts& parts);
+  Hold address_phase(BusKind kind, unsigned bytes, const Calendar* line, Picoseconds& time, LatencyParts& parts);
   void data_phase(BusKind kind, unsigned bytes, const Hold& hold, Picoseconds& time, LatencyParts& parts);
   void let_go(const Hold& hold, Picoseconds time);
   // One access to a window's target, starting at `time`, which moves to its end.
@@ -199,6 +203,7 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface, private
 
   PresenceIndex presence_;
   Calendar address_bus_;
+  std::unique_ptr<LineTimes> lines_;   // annotated timing
   Calendar data_bus_;
   SnoopingBusTotals totals_;
   std::uint64_t transfers_ = 0;     // over the data bus

@@ -79,6 +79,9 @@ class RequestInterface : public virtual sc_core::sc_interface {
   // REQUIRES: the bus is held. Carries the transaction out, atomically unless a target waits; adds its time to
   // `delay`. On a status other than TLM_OK_RESPONSE nothing has changed in any cache.
   virtual void transact(BusTransaction& transaction, sc_core::sc_time& delay) = 0;
+  // REQUIRES: annotated timing, the bus is held. If the requester has lost its copy of the line to a transaction whose
+  // grant comes after `time`: the line as another cache holds it now. Null: it has not, or nobody holds it.
+  virtual const std::uint8_t* copy_before_loss(int requester, std::uint64_t line, Picoseconds time) const = 0;
   // An access to an uncached window: passed to the window's target as it is, address translated.
   virtual void pass_through(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay, LatencyParts& parts) = 0;
 

@@ -100,8 +100,22 @@ void CoherentCache::access_line(const Piece& piece, Progress& progress) {
     if (passed > progress.delay) progress.parts[LatencyPart::wait_for_grant] += to_ps(passed - progress.delay);
     progress.delay = passed > progress.delay ? sc_core::SC_ZERO_TIME : progress.delay - passed;
   }
-  judge(piece, progress);
+  if (!hit_before_loss(piece, progress)) judge(piece, progress);
+  last_end_ = now_ps() + to_ps(progress.delay);
   if (observer_ != nullptr) observer_->settled(piece.line);
+}
+
+// A read at a time before the grant of the transaction that has taken the copy: the copy would still have been there,
+// so it costs a hit. What it reads is the line's value now. An initiator that lets no time pass for its accesses has no
+// such time: for it, what is lost is lost.
+bool CoherentCache::hit_before_loss(const Piece& piece, const Progress& progress) {
+  const Picoseconds looked_up = now_ps() + to_ps(progress.delay) - hit_ps_;
+  if (piece.write || looked_up < last_end_ || store_.find(piece.line) != nullptr) return false;
+  const std::uint8_t* const copy = bus_socket->copy_before_loss(port_, piece.line, looked_up);
+  if (copy == nullptr) return false;
+  std::memcpy(incoming_.data(), copy, incoming_.size());
+  perform(piece, incoming_.data());
+  return true;
 }
 
 // Does what the table says for the state the line is in now, until the access is done.

@@ -171,6 +171,7 @@ class CoherentCache : public sc_core::sc_module,
   class Arrival;
   void access(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay);
   void access_line(const Piece& piece, Progress& progress);
+  bool hit_before_loss(const Piece& piece, const Progress& progress);
   void judge(const Piece& piece, Progress& progress);
   void fetch(const Piece& piece, BusTransaction& transaction, Progress& progress, Slot*& slot);
   void surrender(const Piece& piece, const BusTransaction& transaction, sc_core::sc_time& delay);
@@ -200,6 +201,8 @@ class CoherentCache : public sc_core::sc_module,
   std::vector<std::uint8_t> leaving_;
   std::uint64_t incoming_line_ = ~std::uint64_t{0};
   std::vector<std::uint8_t> incoming_;  // a line being fetched
+
+  Picoseconds last_end_ = 0;           // of the last access that needed a table walk
 
   std::uint64_t fast_reads_ = 0;       // hits that took the short path: all cost hit_ps_
   std::uint64_t fast_writes_ = 0;

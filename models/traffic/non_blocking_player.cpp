@@ -8,7 +8,7 @@
 namespace earshot {
 
 NonBlockingPlayer::NonBlockingPlayer(sc_core::sc_module_name name, std::uint32_t initiator,
-                                     unsigned outstanding, sc_core::sc_time think, PlayerHooks hooks)
+                                     unsigned outstanding, ThinkTime think, PlayerHooks hooks)
     : sc_module(name),
       initiator_(initiator),
       outstanding_(outstanding),
@@ -34,7 +34,7 @@ void NonBlockingPlayer::play() {
         if (hooks_.done) hooks_.done();
         continue;
       }
-      if (think_ != sc_core::SC_ZERO_TIME) wait(think_);
+      if (const sc_core::sc_time think = think_.next(); think != sc_core::SC_ZERO_TIME) wait(think);
       issue(access);
     }
   } catch (const sc_core::sc_report&) {

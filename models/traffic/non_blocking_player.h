@@ -17,6 +17,7 @@
 
 #include "earshot/timing/agenda.h"
 #include "earshot/traffic/playing.h"
+#include "earshot/traffic/think_time.h"
 
 namespace earshot {
 
@@ -26,7 +27,7 @@ class NonBlockingPlayer : public sc_core::sc_module, private tlm::tlm_mm_interfa
 
   // `outstanding`: accesses in flight at most, at least 1. Plays nothing until given a source before simulation starts.
   NonBlockingPlayer(sc_core::sc_module_name name, std::uint32_t initiator, unsigned outstanding,
-                    sc_core::sc_time think, PlayerHooks hooks);
+                    ThinkTime think, PlayerHooks hooks);
   const char* kind() const override { return "earshot::NonBlockingPlayer"; }
 
   void set_source(std::unique_ptr<AccessSource> source) { source_ = std::move(source); }
@@ -55,7 +56,7 @@ class NonBlockingPlayer : public sc_core::sc_module, private tlm::tlm_mm_interfa
 
   const std::uint32_t initiator_;
   const unsigned outstanding_;
-  const sc_core::sc_time think_;
+  ThinkTime think_;
   PlayerHooks hooks_;
   std::unique_ptr<AccessSource> source_;
   PlayerEnd end_;

@@ -4,7 +4,7 @@
 
 #include <algorithm>
 
-#include "earshot/traffic/pattern_random.h"
+#include "earshot/traffic/seeded_random.h"
 #include "earshot/traffic/recording_rules.h"
 
 namespace earshot {

@@ -39,7 +39,7 @@ void run_decoupled(const PlayerHooks& hooks, PlayerEnd& end, Step step) {
 
 }  // namespace
 
-Player::Player(sc_core::sc_module_name name, std::uint32_t initiator, sc_core::sc_time think, PlayerHooks hooks)
+Player::Player(sc_core::sc_module_name name, std::uint32_t initiator, ThinkTime think, PlayerHooks hooks)
     : sc_module(name), initiator_(initiator), think_(think), hooks_(std::move(hooks)), bytes_(largest_access) {
   sc_core::sc_spawn([this] { play(); }, "play");
 }
@@ -61,7 +61,7 @@ void Player::perform(const Access& access, sc_core::sc_time& delay) {
     if (hooks_.done) hooks_.done();
     return;
   }
-  delay += think_;
+  delay += think_.next();
   make_payload(access, performed_, bytes_.data(), payload_);
   under_way_ = &access;
   initiator_socket->b_transport(payload_, delay);

@@ -23,6 +23,7 @@
 #include <vector>
 
 #include "earshot/traffic/playing.h"
+#include "earshot/traffic/think_time.h"
 
 namespace earshot {
 
@@ -31,7 +32,7 @@ class Player : public sc_core::sc_module {
   tlm_utils::simple_initiator_socket<Player> initiator_socket{"initiator_socket"};
 
   // Plays nothing of its own until given a source before simulation starts. `think` passes before every access.
-  Player(sc_core::sc_module_name name, std::uint32_t initiator, sc_core::sc_time think, PlayerHooks hooks);
+  Player(sc_core::sc_module_name name, std::uint32_t initiator, ThinkTime think, PlayerHooks hooks);
   const char* kind() const override { return "earshot::Player"; }
 
   void set_source(std::unique_ptr<AccessSource> source) { source_ = std::move(source); }
@@ -50,7 +51,7 @@ class Player : public sc_core::sc_module {
   void play();
 
   std::uint32_t initiator_;
-  sc_core::sc_time think_;
+  ThinkTime think_;
   PlayerHooks hooks_;
   std::unique_ptr<AccessSource> source_;
   tlm::tlm_generic_payload payload_;

@@ -4,7 +4,7 @@
 
 #include <catch2/catch.hpp>
 
-#include "earshot/traffic/pattern_random.h"
+#include "earshot/traffic/seeded_random.h"
 #include "traffic/recording_files.h"
 
 namespace earshot {

@@ -6,7 +6,7 @@
 #include <set>
 
 #include "earshot/traffic/pattern.h"
-#include "earshot/traffic/pattern_random.h"
+#include "earshot/traffic/seeded_random.h"
 #include "traffic/recording_files.h"
 
 namespace earshot {

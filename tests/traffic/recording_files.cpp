@@ -12,7 +12,7 @@
 #include <fstream>
 #include <iterator>
 
-#include "earshot/traffic/pattern_random.h"
+#include "earshot/traffic/seeded_random.h"
 
 namespace earshot {
 
