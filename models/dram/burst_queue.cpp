@@ -34,10 +34,12 @@ BurstQueue::Slot BurstQueue::append(const Entry& entry, std::uint64_t number, Cl
     bank.place = static_cast<unsigned>(turns_.size());
     turns_.emplace_back().bank = e.bank;
   }
-  turns_[bank.place].known = false;
   e.bank_older = bank.youngest;
   (bank.youngest == none ? bank.oldest : entries_[bank.youngest].bank_younger) = slot;
   bank.youngest = slot;
+  // A younger burst takes the turn from others only if it alone hits.
+  const Turn& turn = turns_[bank.place];
+  if (turn.slot == none || (turn.step < DramStep::read && e.row == turn.open_row)) look_again(e.bank);
   return slot;
 }
 
@@ -50,7 +52,7 @@ void BurstQueue::remove(Slot slot, Clocks now) {
   Bank& bank = by_bank_[e.bank];
   (e.bank_older == none ? bank.oldest : entries_[e.bank_older].bank_younger) = e.bank_younger;
   (e.bank_younger == none ? bank.youngest : entries_[e.bank_younger].bank_older) = e.bank_older;
-  turns_[bank.place].known = false;
+  look_again(e.bank);
   if (bank.oldest == none) {
     by_bank_[turns_.back().bank].place = bank.place;
     turns_[bank.place] = turns_.back();
@@ -73,6 +75,7 @@ unsigned BurstQueue::count(std::uint64_t number) const {
 
 void BurstQueue::know(Turn& turn, std::uint64_t open_row) {
   turn.known = true;
+  turn.open_row = open_row;
   turn.slot = none;
   turn.step = open_row == DramBanks::no_row ? DramStep::activate : DramStep::precharge;
   for (Slot slot = by_bank_[turn.bank].oldest; slot != none; slot = entries_[slot].bank_younger) {

@@ -61,20 +61,36 @@ class BurstQueue {
   // the oldest; held ones do not count.
   struct Turn {
     std::uint64_t order = 0;
-    // The scheduler's: when the step is possible, and of those possible at one clock the lowest goes first.
-    Clocks clock = 0;
+    std::uint64_t open_row = 0;
+    // The scheduler's. When the step is possible: not before `own` and what DramBanks says for `shared`, both
+    // together `clock`. Of those possible at one clock the one with the lowest `place` goes first.
+    Clocks own = 0, clock = 0;
     std::uint64_t place = 0;
+    unsigned shared = 0;
     unsigned bank = 0;
-    Slot slot = none;
+    Slot slot = none;  // none: all are held
     DramStep step = DramStep::activate;
     bool known = false;  // else the rest, but for the bank, is not valid: see know()
   };
   std::vector<Turn>& turns() { return turns_; }  // of the banks with bursts
   Turn& turn_of(unsigned bank) { return turns_[by_bank_[bank].place]; }  // REQUIRES: it has bursts
   void know(Turn& turn, std::uint64_t open_row);
-  // The bank's open row has changed, or which of its bursts are held.
+  // The bank's state has changed, or which of its bursts are held.
   void look_again(unsigned bank) {
-    if (by_bank_[bank].oldest != none) turn_of(bank).known = false;
+    if (by_bank_[bank].oldest == none) return;
+    turn_of(bank).known = false;
+    if (by_bank_[bank].doubtful) return;
+    by_bank_[bank].doubtful = true;
+    doubtful_.push_back(bank);
+  }
+  // Calls `learn` for each turn that is not known.
+  template <typename Learn>
+  void for_unknown_turns(Learn learn) {
+    for (const unsigned bank : doubtful_) {
+      by_bank_[bank].doubtful = false;
+      if (by_bank_[bank].oldest != none && !turn_of(bank).known) learn(turn_of(bank));
+    }
+    doubtful_.clear();
   }
 
   const QueueMeter& meter() const { return meter_; }
@@ -82,7 +98,8 @@ class BurstQueue {
  private:
   struct Bank {
     Slot oldest = none, youngest = none;
-    unsigned place = 0;  // in turns_
+    unsigned place = 0;      // in turns_
+    bool doubtful = false;  // is in doubtful_
   };
 
   bool write_;
@@ -92,6 +109,7 @@ class BurstQueue {
   std::vector<Slot> free_;
   std::vector<Bank> by_bank_;
   std::vector<Turn> turns_;
+  std::vector<unsigned> doubtful_;  // the banks whose turns are not known, and perhaps others
   Slot oldest_ = none, youngest_ = none;
   QueueMeter meter_;
 };

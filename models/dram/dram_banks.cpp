@@ -13,7 +13,7 @@ void not_before(Clocks& from, Clocks clock) {
 DramBanks::DramBanks(const Grade& grade, unsigned ranks)
     : grade_(grade),
       banks_(std::size_t{ranks} * grade.banks()),
-      groups_(std::size_t{ranks} * grade.bank_groups),
+      shared_from_(std::size_t{ranks} * grade.bank_groups * dram_steps),
       ranks_(ranks) {
   for (unsigned b = 0; b < banks_.size(); ++b) {
     banks_[b].rank = b / grade.banks();
@@ -47,11 +47,11 @@ Clocks DramBanks::refresh_from(unsigned rank) const {
 // A per-bank refresh counts as an activation for tRRD and tFAW (JESD209-4; value from memory).
 void DramBanks::count_activate(const Bank& bank, Clocks now) {
   Rank& r = ranks_[bank.rank];
-  groups_[bank.group].from.not_before(DramStep::activate, now + grade_.trrd_l);
-  r.from.not_before(DramStep::activate, now + grade_.trrd_s);
   r.four_activates[r.oldest] = now + grade_.tfaw;
   r.oldest = (r.oldest + 1) % 4;
-  r.from.not_before(DramStep::activate, r.four_activates[r.oldest]);
+  group_not_before(bank.group, DramStep::activate, now + grade_.trrd_l);
+  rank_not_before(bank.rank, DramStep::activate,
+                  std::max<Clocks>(now + grade_.trrd_s, r.four_activates[r.oldest]));
 }
 
 void DramBanks::activate(unsigned bank, std::uint64_t row, Clocks now) {
@@ -90,20 +90,19 @@ void DramBanks::precharge_all(unsigned rank, Clocks now) {
 
 Clocks DramBanks::column(unsigned bank, bool write, bool then_precharge, Clocks now) {
   Bank& b = banks_[bank];
-  Group& g = groups_[b.group];
-  Rank& r = ranks_[b.rank];
   b.last_use = now;
   if (write) {
     b.from.not_before(DramStep::precharge, now + grade_.write_to_precharge());
-    g.from.not_before(DramStep::write, now + (grade_.tccd_l_wr != 0 ? grade_.tccd_l_wr : grade_.tccd_l));
-    r.from.not_before(DramStep::write, now + grade_.tccd_s);
-    g.from.not_before(DramStep::read, now + grade_.write_to_read_l());
-    r.from.not_before(DramStep::read, now + grade_.write_to_read_s());
+    group_not_before(b.group, DramStep::write,
+                     now + (grade_.tccd_l_wr != 0 ? grade_.tccd_l_wr : grade_.tccd_l));
+    rank_not_before(b.rank, DramStep::write, now + grade_.tccd_s);
+    group_not_before(b.group, DramStep::read, now + grade_.write_to_read_l());
+    rank_not_before(b.rank, DramStep::read, now + grade_.write_to_read_s());
   } else {
     b.from.not_before(DramStep::precharge, now + grade_.trtp);
-    g.from.not_before(DramStep::read, now + grade_.tccd_l);
-    r.from.not_before(DramStep::read, now + grade_.tccd_s);
-    r.from.not_before(DramStep::write, now + grade_.read_to_write);
+    group_not_before(b.group, DramStep::read, now + grade_.tccd_l);
+    rank_not_before(b.rank, DramStep::read, now + grade_.tccd_s);
+    rank_not_before(b.rank, DramStep::write, now + grade_.read_to_write);
   }
   const Clocks end = now + (write ? grade_.cwl : grade_.cl) + grade_.burst_clocks();
   occupy_bus(b.rank, end);
@@ -115,9 +114,18 @@ Clocks DramBanks::column(unsigned bank, bool write, bool then_precharge, Clocks 
 void DramBanks::occupy_bus(unsigned rank, Clocks end) {
   for (unsigned r = 0; r < ranks_.size(); ++r) {
     const Clocks bus = end + (r == rank ? 0 : grade_.rank_switch);
-    ranks_[r].from.not_before(DramStep::read, bus - std::min<Clocks>(bus, grade_.cl));
-    ranks_[r].from.not_before(DramStep::write, bus - std::min<Clocks>(bus, grade_.cwl));
+    rank_not_before(r, DramStep::read, bus - std::min<Clocks>(bus, grade_.cl));
+    rank_not_before(r, DramStep::write, bus - std::min<Clocks>(bus, grade_.cwl));
   }
+}
+
+void DramBanks::group_not_before(unsigned group, DramStep step, Clocks clock) {
+  not_before(shared_from_[group * dram_steps + static_cast<std::size_t>(step)], clock);
+}
+
+void DramBanks::rank_not_before(unsigned rank, DramStep step, Clocks clock) {
+  for (unsigned g = rank * grade_.bank_groups; g < (rank + 1) * grade_.bank_groups; ++g)
+    group_not_before(g, step, clock);
 }
 
 void DramBanks::refresh(unsigned rank, Clocks now) {

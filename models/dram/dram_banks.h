@@ -42,13 +42,17 @@ class DramBanks {
   // The earliest clock that violates nothing. REQUIRES: the bank is open, respectively precharged, as the
   // command wants it.
   Clocks from(unsigned bank, DramStep step) const {
-    const Bank& b = banks_[bank];
-    const auto s = static_cast<std::size_t>(step);
-    // Values, for of references the compiler makes branches, which nobody can predict.
-    const Clocks own = b.from[s], group = groups_[b.group].from[s], rank = ranks_[b.rank].from[s];
-    const Clocks common = group < rank ? rank : group;
-    return own < common ? common : own;
+    return std::max(own_from(bank, step), shared_from(shared(bank, step)));
   }
+  // The same in two parts, for who compares many banks: as far as the bank itself is concerned, which changes
+  // with commands to this bank or refreshes of its rank only; and for its group, its rank and the data bus.
+  Clocks own_from(unsigned bank, DramStep step) const {
+    return banks_[bank].from[static_cast<std::size_t>(step)];
+  }
+  unsigned shared(unsigned bank, DramStep step) const {
+    return static_cast<unsigned>(banks_[bank].group * dram_steps + static_cast<std::size_t>(step));
+  }
+  Clocks shared_from(unsigned shared) const { return shared_from_[shared]; }
   Clocks precharge_from(unsigned bank) const { return from(bank, DramStep::precharge); }
   Clocks precharge_all_from(unsigned rank) const;
   Clocks refresh_from(unsigned rank) const;
@@ -65,8 +69,7 @@ class DramBanks {
   void refresh_bank(unsigned bank, Clocks now);
 
  private:
-  // From when on each step is possible, as far as one bank, one group or one rank with the data bus is
-  // concerned.
+  // From when on each step is possible, as far as one bank is concerned.
   struct Steps : std::array<Clocks, dram_steps> {
     void not_before(DramStep step, Clocks clock) {
       Clocks& own = (*this)[static_cast<std::size_t>(step)];
@@ -80,11 +83,7 @@ class DramBanks {
     unsigned rank = 0;
     unsigned group = 0;  // of all ranks
   };
-  struct Group {
-    Steps from{};
-  };
   struct Rank {
-    Steps from{};
     Clocks refresh_bank_from = 0;
     std::array<Clocks, 4> four_activates{};  // tFAW after the last four
     unsigned oldest = 0;
@@ -95,10 +94,12 @@ class DramBanks {
   void count_activate(const Bank& bank, Clocks now);
   void close(Bank& bank, Clocks at, Clocks trp);
   void occupy_bus(unsigned rank, Clocks end);
+  void group_not_before(unsigned group, DramStep step, Clocks clock);
+  void rank_not_before(unsigned rank, DramStep step, Clocks clock);
 
   Grade grade_;
   std::vector<Bank> banks_;
-  std::vector<Group> groups_;
+  std::vector<Clocks> shared_from_;  // by group of all ranks, and step
   std::vector<Rank> ranks_;
 };
 

@@ -20,11 +20,13 @@ Clocks refresh_warning(const Grade& grade) {
 DramChannel::DramChannel(const DramConfig& config, unsigned channel)
     : config_(config),
       channel_(channel),
+      until_column_{std::min(config.grade.trp, config.grade.trp_all) + config.grade.trcd, config.grade.trcd},
       banks_(config.grade, config.ranks),
       bank_states_(banks_.count()),
       ranks_(config.ranks),
       reads_(false, config.read_queue, banks_.count()),
-      writes_(true, config.write_queue, banks_.count()) {
+      writes_(true, config.write_queue, banks_.count()),
+      ties_(banks_.count() + 1) {
   if (config.refresh == DramRefresh::off) return;
 
   const Grade& grade = config.grade;
@@ -37,7 +39,7 @@ DramChannel::DramChannel(const DramConfig& config, unsigned channel)
 }
 
 void DramChannel::enqueue(const DramBurst& burst, Clocks now, std::vector<DramCompletion>& completions) {
-  if (empty() && now > 0) run_until(now - 1, unused_);
+  catch_up_idle_time(now);
   const unsigned bank = banks_.number(burst.place.rank, burst.place.group, burst.place.bank);
   chosen_ = choice_stands(burst.write, bank, now);
   cursor_ = std::max(cursor_, now);
@@ -51,8 +53,10 @@ void DramChannel::enqueue(const DramBurst& burst, Clocks now, std::vector<DramCo
     append(reads_, burst, now);
     if (!chosen_ || served_ != &reads_) return;
     BurstQueue::Turn& turn = reads_.turn_of(bank);
-    turn.clock = clock_of(reads_, turn, no_sooner(0));
-    consider_turn(reads_, turn);
+    if (!turn.known) learn(reads_, turn);
+    turn.clock = no_sooner(std::max(turn.own, banks_.shared_from(turn.shared)));
+    column_ = std::min(column_, turn.clock + until_column(turn.step));
+    if (bank_states_[bank].shut != choices_) consider_turn(reads_, turn);
   }
 }
 
@@ -118,7 +122,7 @@ void DramChannel::remove(BurstQueue& queue, Slot slot, Clocks now) {
   if (empty()) counts_.occupied += now - occupied_since_;
 }
 
-void DramChannel::row_changed(unsigned bank) {
+void DramChannel::bank_changed(unsigned bank) {
   reads_.look_again(bank);
   writes_.look_again(bank);
 }
@@ -129,8 +133,20 @@ Clocks DramChannel::next_event() {
   return std::min(choice_.clock, change_);
 }
 
+Clocks DramChannel::next_column() {
+  if (empty()) return never;
+  return std::max(next_event(), column_);
+}
+
 void DramChannel::advance(Clocks now, std::vector<DramCompletion>& completions) {
   if (!empty()) run_until(now, completions);
+}
+
+void DramChannel::catch_up(Clocks now) {
+  while (!empty() && next_event() <= now) {
+    if (choice_.clock <= change_ && is_column(choice_.command)) return;
+    run_until(next_event(), unused_);
+  }
 }
 
 void DramChannel::run_until(Clocks now, std::vector<DramCompletion>& completions) {
@@ -143,7 +159,12 @@ void DramChannel::run_until(Clocks now, std::vector<DramCompletion>& completions
     chosen_ = false;
     if (choice_.clock <= change_) issue(completions);
   }
-  cursor_ = std::max(cursor_, now);
+}
+
+void DramChannel::catch_up_idle_time(Clocks now) {
+  if (!empty() || now == 0) return;
+  run_until(now - 1, unused_);
+  cursor_ = std::max(cursor_, now - 1);
 }
 
 // All but the last of the refreshes of a long idle time, when nobody wants to see them one by one.
@@ -188,29 +209,31 @@ void DramChannel::issue(std::vector<DramCompletion>& completions) {
     case DramCommand::activate:
       ++counts_.activates;
       banks_.activate(bank, row, now);
-      row_changed(bank);
+      bank_changed(bank);
       break;
     case DramCommand::precharge:
       ++counts_.precharges;
       row = banks_.row(bank);
       banks_.precharge(bank, now);
-      row_changed(bank);
+      bank_changed(bank);
       if (choice_.priority == refresh_first) ranks_[rank].begun = true;
       break;
     case DramCommand::precharge_all:
       counts_.precharges += banks_.open_banks(rank);
       banks_.precharge_all(rank, now);
-      for (unsigned b = bank; b < bank + banks_.banks_of_rank(); ++b) row_changed(b);
+      for (unsigned b = bank; b < bank + banks_.banks_of_rank(); ++b) bank_changed(b);
       ranks_[rank].begun = true;
       break;
     case DramCommand::refresh:
       ++counts_.refreshes;
       banks_.refresh(rank, now);
+      for (unsigned b = bank; b < bank + banks_.banks_of_rank(); ++b) bank_changed(b);
       pay(rank, now);
       break;
     case DramCommand::refresh_bank:
       ++counts_.bank_refreshes;
       banks_.refresh_bank(bank, now);
+      bank_changed(bank);
       pay(rank, now);
       ranks_[rank].next_bank = (ranks_[rank].next_bank + 1) % banks_.banks_of_rank();
       break;
@@ -238,10 +261,8 @@ void DramChannel::issue_column(std::vector<DramCompletion>& completions) {
   ++(e.found == Found::hit      ? counts_.row_hits
      : e.found == Found::closed ? counts_.row_closed
                                 : counts_.row_conflicts);
-  if (close) {
-    ++counts_.precharges;
-    row_changed(e.bank);
-  }
+  if (close) ++counts_.precharges;
+  bank_changed(e.bank);
   beats_ += config_.grade.burst_length;
   const Clocks begin = now + (write ? config_.grade.cwl : config_.grade.cl);
   counts_.data_bus_busy += end - std::max(begin, data_end_);  // an overlap would break the law of the beats
@@ -277,12 +298,12 @@ void DramChannel::log(DramCommand command, unsigned bank, std::uint64_t row, std
 }
 
 const std::vector<CommandRecord>& DramChannel::commands(Clocks now) {
-  if (empty() && now > 0) run_until(now - 1, unused_);
+  catch_up_idle_time(now);
   return log_;
 }
 
 DramCounts DramChannel::counts(Clocks now) {
-  if (empty() && now > 0) run_until(now - 1, unused_);
+  catch_up_idle_time(now);
   DramCounts counts = counts_;
   counts.elapsed = now;
   if (!empty()) counts.occupied += std::max(now, occupied_since_) - occupied_since_;

@@ -61,6 +61,12 @@ class DramChannel {
   void enqueue(const DramBurst& burst, Clocks now, std::vector<DramCompletion>& completions);
 
   Clocks next_event();
+  // For who would rather not come for every event. No read or write command is issued before next_column(),
+  // unless more is queued: until then nothing completes and no queue gets room. So it is enough to call
+  // advance() then, and before anything else at a clock `now` catch_up(now), which issues every command up to
+  // and including `now`, but no read or write.
+  Clocks next_column();
+  void catch_up(Clocks now);
   // Issues every command up to and including `now`. Appends reads, whose `done` may be later than `now`, in
   // that order.
   void advance(Clocks now, std::vector<DramCompletion>& completions);
@@ -93,6 +99,7 @@ class DramChannel {
     unsigned queued = 0;     // bursts
     bool begun = false;      // precharged for the refresh that comes next
   };
+  static constexpr Clocks out_of_reach = never / 2;  // the clock of a bank all of whose bursts are held
   enum Priority : unsigned { refresh_first, over_age, first_kind, second_kind, third_kind, idle_last };
   // The command to issue next, if nothing arrives before.
   struct Choice {
@@ -115,8 +122,9 @@ class DramChannel {
   void hold(Slot write);
   void release(std::uint64_t number);
   void remove(BurstQueue& queue, Slot slot, Clocks now);
-  void row_changed(unsigned bank);
+  void bank_changed(unsigned bank);
   void run_until(Clocks now, std::vector<DramCompletion>& completions);
+  void catch_up_idle_time(Clocks now);
   void skip_idle_refreshes(Clocks now);
   void issue(std::vector<DramCompletion>& completions);
   void issue_column(std::vector<DramCompletion>& completions);
@@ -135,8 +143,15 @@ class DramChannel {
   Slot oldest_free(const BurstQueue& queue) const;
   Choice next_command(BurstQueue& queue, Slot slot) const;
   bool choice_stands(bool write, unsigned bank, Clocks now) const;
-  Clocks clock_of(BurstQueue& queue, BurstQueue::Turn& turn, Clocks floor) const;
+  DramStep step_of(const BurstQueue& queue, Slot slot) const;
+  static bool gives_way(const BurstQueue::Turn& turn, const Choice& aged);
+  Clocks find_clocks(BurstQueue& queue);
+  void consider_turns(BurstQueue& queue, Clocks first);
+  void learn(BurstQueue& queue, BurstQueue::Turn& turn) const;
   void consider_turn(BurstQueue& queue, const BurstQueue::Turn& turn);
+  static bool is_column(DramCommand command) {
+    return command == DramCommand::read || command == DramCommand::write;
+  }
   static DramCommand command_of(DramStep step) {
     if (step >= DramStep::read) return step == DramStep::read ? DramCommand::read : DramCommand::write;
     return step == DramStep::activate ? DramCommand::activate : DramCommand::precharge;
@@ -161,11 +176,13 @@ class DramChannel {
     choice.bank = bank;
     consider(choice);
   }
+  Clocks until_column(DramStep step) const { return until_column_[static_cast<std::size_t>(step)]; }
   void look_again_at(Clocks clock) { change_ = std::min(change_, clock); }
   Clocks no_sooner(Clocks clock) const { return std::max({clock, cursor_, command_bus_free_}); }
 
   const DramConfig config_;
   const unsigned channel_;
+  const std::array<Clocks, dram_steps> until_column_;  // at least, from a bank's next step
   DramBanks banks_;
   std::vector<BankState> bank_states_;
   std::vector<Rank> ranks_;
@@ -179,9 +196,11 @@ class DramChannel {
   Clocks command_bus_free_ = 0;
   bool chosen_ = false;  // what follows is valid
   Choice choice_;
+  Clocks column_ = 0;      // no column command comes before
   Clocks change_ = never;  // when another choice may be due although nothing arrives
   BurstQueue* served_ = nullptr;  // the queue whose banks all took part, if not limited by a request over age
   bool some_shut_ = false;
+  std::vector<const BurstQueue::Turn*> ties_;  // room for as many as there are banks, and one more
 
   DramCounts counts_;
   std::uint64_t beats_ = 0;

@@ -10,6 +10,7 @@ namespace earshot {
 void DramChannel::choose() {
   choice_ = Choice{};
   change_ = never;
+  column_ = 0;
   served_ = nullptr;
   some_shut_ = false;
   ++choices_;
@@ -52,18 +53,23 @@ void DramChannel::choose_refresh() {
   }
 }
 
-DramChannel::Choice DramChannel::next_command(BurstQueue& queue, Slot slot) const {
+DramStep DramChannel::step_of(const BurstQueue& queue, Slot slot) const {
   const Entry& e = queue[slot];
   const std::uint64_t row = banks_.row(e.bank);
+  return row == DramBanks::no_row ? DramStep::activate
+         : row != e.row           ? DramStep::precharge
+         : queue.write()          ? DramStep::write
+                                  : DramStep::read;
+}
+
+DramChannel::Choice DramChannel::next_command(BurstQueue& queue, Slot slot) const {
+  const Entry& e = queue[slot];
   Choice choice;
   choice.order = e.order;
   choice.bank = e.bank;
   choice.queue = &queue;
   choice.slot = slot;
-  const DramStep step = row == DramBanks::no_row ? DramStep::activate
-                        : row != e.row           ? DramStep::precharge
-                        : queue.write()          ? DramStep::write
-                                                 : DramStep::read;
+  const DramStep step = step_of(queue, slot);
   choice.priority = priority_of(step);
   choice.clock = no_sooner(banks_.from(e.bank, step));
   choice.command = command_of(step);
@@ -85,9 +91,9 @@ void DramChannel::choose_in_order() {
   const bool write_first =
       read == BurstQueue::none || (write != BurstQueue::none && writes_[write].order < reads_[read].order);
   Choice choice = write_first ? next_command(writes_, write) : next_command(reads_, read);
-  if (bank_states_[choice.bank].shut == choices_) return;
   if (config_.scheduling == DramScheduling::one_at_a_time) choice.clock = std::max(choice.clock, data_end_);
-  consider(choice);
+  column_ = choice.clock + until_column(step_of(*choice.queue, choice.slot));
+  if (bank_states_[choice.bank].shut != choices_) consider(choice);
 }
 
 BurstQueue& DramChannel::queue_to_serve() {
@@ -116,36 +122,61 @@ void DramChannel::choose_first_ready(BurstQueue& queue) {
     consider(aged);
   }
   if (aged.queue == nullptr) served_ = &queue;
-  // Here the scheduler spends its time, so the clocks are compared first, all of them, without branches that
-  // nobody can predict.
-  const Clocks floor = no_sooner(0);
-  Clocks first = choice_.clock;
-  for (BurstQueue::Turn& turn : queue.turns()) {
-    turn.clock = clock_of(queue, turn, floor);
-    if (aged.queue != nullptr &&
-        (turn.bank == aged.bank || turn.step >= DramStep::read ||
-         (turn.step == DramStep::activate && aged.command == DramCommand::activate)))
-      turn.clock = never;
-    first = turn.clock < first ? turn.clock : first;
+  Clocks first = find_clocks(queue);
+  if (some_shut_ || aged.queue != nullptr) {
+    first = never;
+    for (BurstQueue::Turn& turn : queue.turns()) {
+      if (bank_states_[turn.bank].shut == choices_ || (aged.queue != nullptr && gives_way(turn, aged)))
+        turn.clock = never;
+      first = std::min(first, turn.clock);
+    }
   }
-  const BurstQueue::Turn* best = nullptr;
-  std::uint64_t lowest = ~std::uint64_t{0};
-  for (const BurstQueue::Turn& turn : queue.turns()) {
-    const std::uint64_t place = turn.clock == first ? turn.place : ~std::uint64_t{0};
-    best = place < lowest ? &turn : best;
-    lowest = place < lowest ? place : lowest;
-  }
-  if (best != nullptr && first != never) consider_turn(queue, *best);
+  if (first <= choice_.clock && first < out_of_reach) consider_turns(queue, first);
 }
 
-Clocks DramChannel::clock_of(BurstQueue& queue, BurstQueue::Turn& turn, Clocks floor) const {
-  if (!turn.known) {
-    queue.know(turn, banks_.row(turn.bank));
-    turn.place = std::uint64_t{priority_of(turn.step)} << 60 | turn.order;  // no run has 2^60 bursts
+bool DramChannel::gives_way(const BurstQueue::Turn& turn, const Choice& aged) {
+  return turn.bank == aged.bank || turn.step >= DramStep::read ||
+         (turn.step == DramStep::activate && aged.command == DramCommand::activate);
+}
+
+// When each bank can take its step; the first of these clocks. Here and in consider_turns() the scheduler
+// spends its time: loops without branches that nobody can predict, which is why they compare values and not,
+// as std::min() does, references.
+Clocks DramChannel::find_clocks(BurstQueue& queue) {
+  queue.for_unknown_turns([&](BurstQueue::Turn& turn) { learn(queue, turn); });
+  const Clocks floor = no_sooner(0);
+  Clocks first = never, column = never;
+  for (BurstQueue::Turn& turn : queue.turns()) {
+    const Clocks own = turn.own < floor ? floor : turn.own;
+    const Clocks shared = banks_.shared_from(turn.shared);
+    const Clocks clock = own < shared ? shared : own;
+    const Clocks then = clock + until_column(turn.step);
+    turn.clock = clock;
+    first = clock < first ? clock : first;
+    column = then < column ? then : column;
   }
-  if (turn.slot == BurstQueue::none || (some_shut_ && bank_states_[turn.bank].shut == choices_)) return never;
-  const Clocks from = banks_.from(turn.bank, turn.step);
-  return from < floor ? floor : from;
+  column_ = column;
+  return first;
+}
+
+// Of those possible at this clock the one with the lowest place. REQUIRES: there is one.
+void DramChannel::consider_turns(BurstQueue& queue, Clocks first) {
+  std::size_t found = 0;
+  for (const BurstQueue::Turn& turn : queue.turns()) {
+    ties_[found] = &turn;  // overwritten by the next one if it is none
+    found += turn.clock == first ? 1 : 0;
+  }
+  const BurstQueue::Turn* best = ties_[0];
+  for (std::size_t i = 1; i < found; ++i)
+    if (ties_[i]->place < best->place) best = ties_[i];
+  consider_turn(queue, *best);
+}
+
+void DramChannel::learn(BurstQueue& queue, BurstQueue::Turn& turn) const {
+  queue.know(turn, banks_.row(turn.bank));
+  turn.own = turn.slot == BurstQueue::none ? out_of_reach : banks_.own_from(turn.bank, turn.step);
+  turn.shared = banks_.shared(turn.bank, turn.step);
+  turn.place = std::uint64_t{priority_of(turn.step)} << 60 | turn.order;  // no run has 2^60 bursts
 }
 
 void DramChannel::consider_turn(BurstQueue& queue, const BurstQueue::Turn& turn) {

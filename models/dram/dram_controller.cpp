@@ -27,8 +27,7 @@ DramController::DramController(sc_core::sc_module_name name, const DramConfig& c
     return;
   }
   for (unsigned c = 0; c < config.channels; ++c)
-    channels_.push_back(std::make_unique<DramChannel>(config, c));
-  event_memos_.resize(config.channels);
+    lanes_.push_back({std::make_unique<DramChannel>(config, c), 0, {}});
   SC_HAS_PROCESS(DramController);
   SC_METHOD(work);
   sensitive << wake_;
@@ -38,8 +37,13 @@ DramController::DramController(sc_core::sc_module_name name, const DramConfig& c
 // The only process. Whatever is due now, in the order of cause and effect.
 void DramController::work() {
   const Picoseconds now = now_ps();
-  for (unsigned c = 0; c < channels_.size(); ++c)
-    if (event_time(c) <= now) channels_[c]->advance(clock_now(), completions_);
+  if (wake_moment_.time == now && wake_moment_.clock != DramChannel::never)
+    instant_ = {now, wake_moment_.clock, wake_moment_.clock};
+  working_ = true;
+  for (Lane& lane : lanes_) {
+    lane.channel->advance(instant().passed, completions_);
+    lane.caught_up = instant().passed + 1;
+  }
   note_completions();
   while (!coming_.empty() && coming_.top().time <= now) {
     const unsigned id = coming_.top().id;
@@ -53,7 +57,28 @@ void DramController::work() {
     complete(id);
   }
   send_responses();
+  working_ = false;
   schedule();
+}
+
+// Commands that nobody outside can see are issued late: when the next thing happens that depends on them.
+// What comes at the instant of an edge finds the command of that edge issued, but for one that has become
+// possible only at this instant.
+void DramController::catch_up(Lane& lane) {
+  const Clocks passed = instant().passed;
+  if (passed < lane.caught_up) return;
+  lane.caught_up = passed + 1;
+  lane.channel->catch_up(passed);
+}
+
+// For who asks. The kernel puts off what happens at the time at which it pauses.
+void DramController::catch_up() {
+  for (Lane& lane : lanes_) {
+    if (sc_core::sc_get_status() == sc_core::SC_RUNNING)
+      catch_up(lane);
+    else if (clock_now() > 0)
+      lane.channel->catch_up(clock_now() - 1);
+  }
 }
 
 unsigned DramController::take(tlm::tlm_generic_payload& payload, bool blocking) {
@@ -115,7 +140,9 @@ bool DramController::enter_bursts(unsigned id) {
   const Clocks now = clock_now();
   while (request.entered < request.bursts) {
     const DramBurst burst = burst_of(request, id, request.entered);
-    DramChannel& channel = *channels_[burst.place.channel];
+    Lane& lane = lanes_[burst.place.channel];
+    catch_up(lane);
+    DramChannel& channel = *lane.channel;
     if (!channel.accepts(burst.write)) break;
     channel.enqueue(burst, now, completions_);
     ++request.entered;
@@ -143,8 +170,9 @@ void DramController::note_completions() {
     Request& request = *requests_[completion.id];
     request.started = std::min(request.started, completion.started);
     request.done = std::max(request.done, completion.done);
-    if (++request.finished == request.bursts)
-      completing_.push({config_.grade.clock.edge(request.done + latency()), order_++, completion.id});
+    if (++request.finished != request.bursts) continue;
+    const Clocks clock = request.done + latency();
+    completing_.push({config_.grade.clock.edge(clock), clock, order_++, completion.id});
   }
   completions_.clear();
 }
@@ -186,49 +214,60 @@ void DramController::forget(unsigned id) {
   free_ids_.push_back(id);
 }
 
-Picoseconds DramController::event_time(unsigned channel) const {
-  const Clocks next = channels_[channel]->next_event();
-  if (next == DramChannel::never) return ~Picoseconds{0};
-  Moment& memo = event_memos_[channel];
-  if (next != memo.clock) memo = {next, config_.grade.clock.edge(next)};
-  return memo.time;
+// A command that has become possible at this instant is issued before whatever comes later at this instant.
+DramController::Moment DramController::wake_of(Lane& lane) const {
+  Clocks next = lane.channel->next_event();
+  if (next > instant().passed) next = lane.channel->next_column();
+  if (next == DramChannel::never) return {};
+  if (next != lane.wake.clock) lane.wake = {config_.grade.clock.edge(next), next};
+  return lane.wake;
 }
 
 // An sc_event keeps the earliest of the times it is told.
 void DramController::schedule() {
-  Picoseconds next = ~Picoseconds{0};
-  for (unsigned c = 0; c < channels_.size(); ++c) next = std::min(next, event_time(c));
-  if (!completing_.empty()) next = std::min(next, completing_.top().time);
-  if (!coming_.empty()) next = std::min(next, coming_.top().time);
-  if (!responses_.empty() && response_open_ == nobody) next = std::min(next, response_from_);
-  if (next == ~Picoseconds{0}) return;
+  if (working_) {
+    // Done at its end. But the channels decide whether they go on with writes before they see what comes
+    // next.
+    for (Lane& lane : lanes_) lane.channel->next_event();
+    return;
+  }
+  Moment next;
+  const auto consider = [&](const Moment& moment) { next = moment.time < next.time ? moment : next; };
+  for (Lane& lane : lanes_) consider(wake_of(lane));
+  if (!completing_.empty()) consider({completing_.top().time, completing_.top().clock});
+  if (!coming_.empty()) consider({coming_.top().time, DramChannel::never});
+  if (!responses_.empty() && response_open_ == nobody) consider({response_from_, DramChannel::never});
+  if (next.time == ~Picoseconds{0}) return;
   const Picoseconds now = now_ps();
-  wake_.notify(next > now ? from_ps(next - now) : sc_core::SC_ZERO_TIME);
+  wake_.notify(next.time > now ? from_ps(next.time - now) : sc_core::SC_ZERO_TIME);
+  wake_moment_ = next;
 }
 
 Picoseconds DramController::busy_time() const {
   Clocks busy = 0;
   for (unsigned c = 0; c < config_.channels; ++c)
-    busy = std::max(busy, estimate_ ? estimate_->data_bus_busy(c) : channels_[c]->data_bus_busy());
+    busy = std::max(busy, estimate_ ? estimate_->data_bus_busy(c) : lanes_[c].channel->data_bus_busy());
   return config_.grade.clock.edge(busy);
 }
 
 Picoseconds DramController::busy_until() const {
   Clocks end = estimate_ ? estimate_->last_data_end() : 0;
-  for (const auto& channel : channels_) end = std::max(end, channel->data_end());
+  for (const Lane& lane : lanes_) end = std::max(end, lane.channel->data_end());
   return config_.grade.clock.edge(end);
 }
 
 DramCounts DramController::counts() {
   if (estimate_) return estimate_->counts(clock_now());
+  catch_up();
   DramCounts sum;
-  for (const auto& channel : channels_) sum.add(channel->counts(clock_now()));
+  for (const Lane& lane : lanes_) sum.add(lane.channel->counts(clock_now()));
   return sum;
 }
 
 const std::vector<CommandRecord>& DramController::commands(unsigned channel) {
   static const std::vector<CommandRecord> none;
-  return estimate_ ? none : channels_[channel]->commands(clock_now());
+  catch_up();
+  return estimate_ ? none : lanes_[channel].channel->commands(clock_now());
 }
 
 std::vector<std::string> DramController::broken_laws() const {
@@ -236,12 +275,13 @@ std::vector<std::string> DramController::broken_laws() const {
   const auto add = [&](const std::string& law) { broken.push_back(std::string(name()) + ": " + law); };
   if (!entry_meter_.littles_law_holds(now_ps()))
     add("Little's law does not hold for the requests without a place");
-  for (const auto& channel : channels_)
-    for (const std::string& law : channel->broken_laws(clock_now())) add(law);
+  for (const Lane& lane : lanes_)
+    for (const std::string& law : lane.channel->broken_laws(clock_now())) add(law);
   return broken;
 }
 
 std::vector<std::string> DramController::pending() {
+  catch_up();
   std::vector<std::string> lines;
   const auto add = [&](const std::string& line) { lines.push_back(std::string(name()) + ": " + line); };
   const auto describe = [&](unsigned id) {
@@ -254,8 +294,8 @@ std::vector<std::string> DramController::pending() {
   if (!entry_.empty())
     add(std::to_string(entry_.size()) + " requests without a place; the first, " + describe(entry_.front()) +
         ", waits for room in a queue");
-  for (const auto& channel : channels_)
-    for (const std::string& line : channel->pending()) add(line);
+  for (const Lane& lane : lanes_)
+    for (const std::string& line : lane.channel->pending()) add(line);
   if (response_open_ != nobody)
     add(std::to_string(responses_.size() + 1) + " responses; the first, to " + describe(response_open_) +
         ", waits for END_RESP from " + initiator_name());

@@ -70,8 +70,8 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
   const std::vector<CommandRecord>& commands(unsigned channel);
   // Bursts in a channel's queues, in clocks; requests without a place there yet, in picoseconds.
   // REQUIRES of the first two: event_driven.
-  const QueueMeter& read_meter(unsigned channel) const { return channels_[channel]->read_meter(); }
-  const QueueMeter& write_meter(unsigned channel) const { return channels_[channel]->write_meter(); }
+  const QueueMeter& read_meter(unsigned channel) const { return lanes_[channel].channel->read_meter(); }
+  const QueueMeter& write_meter(unsigned channel) const { return lanes_[channel].channel->write_meter(); }
   const QueueMeter& entry_meter() const { return entry_meter_; }
 
   std::vector<std::string> broken_laws() const;  // the self-checks that fail
@@ -99,8 +99,24 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
     bool followed = false;        // a younger one waits for this
     sc_core::sc_event responded;  // wakes the caller of b_transport
   };
+  // A time, and the number of the clock edge at which it is.
+  struct Moment {
+    Picoseconds time = ~Picoseconds{0};
+    Clocks clock = DramChannel::never;  // never: not known
+  };
+  // A time, the first edge at or after it and the last one at or before it.
+  struct Instant {
+    Picoseconds time = 0;
+    Clocks next = 0, passed = 0;
+  };
+  struct Lane {
+    std::unique_ptr<DramChannel> channel;
+    Clocks caught_up = 0;  // arrivals see the commands of all clocks before this one as issued
+    Moment wake;           // the last answer of wake_of()
+  };
   struct Appointment {
     Picoseconds time;
+    Clocks clock;
     std::uint64_t order;
     unsigned id;
     bool operator>(const Appointment& other) const {
@@ -126,13 +142,19 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
   void forget(unsigned id);
   void tell_waiting(Request& request) const;
   void schedule();
-  // The next two remember their last answers, since a division costs more than most of what is done here.
-  Clocks clock_now() const {
-    if (now_ps() != clock_memo_.time)
-      clock_memo_ = {config_.grade.clock.edge_at_or_after(now_ps()), now_ps()};
-    return clock_memo_.clock;
+  void catch_up();
+  void catch_up(Lane& lane);
+  // A division costs more than most of what is done here: its last result is kept.
+  const Instant& instant() const {
+    if (now_ps() != instant_.time) {
+      const ExactClock& clock = config_.grade.clock;
+      const Clocks next = clock.edge_at_or_after(now_ps());
+      instant_ = {now_ps(), next, clock.edge(next) == now_ps() ? next : next - 1};
+    }
+    return instant_;
   }
-  Picoseconds event_time(unsigned channel) const;  // ~0: none
+  Clocks clock_now() const { return instant().next; }
+  Moment wake_of(Lane& lane) const;
   Clocks latency() const { return config_.frontend + config_.backend; }
 
   // dram_controller_socket.cpp: the socket
@@ -153,20 +175,15 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
                       const std::string& expected);
   std::string initiator_name() const;
 
-  struct Moment {
-    Clocks clock = 0;
-    Picoseconds time = 0;
-  };
-
   const DramConfig config_;
   const std::uint64_t burst_bytes_;
   std::uint64_t last_byte_ = 0;
   SparseBytes bytes_;
   std::unique_ptr<DramAddressMap> map_;
-  std::vector<std::unique_ptr<DramChannel>> channels_;  // event_driven
-  mutable std::vector<Moment> event_memos_;             // by channel
-  mutable Moment clock_memo_;
-  std::unique_ptr<DramEstimate> estimate_;              // annotated
+  std::vector<Lane> lanes_;                  // event_driven: by channel
+  std::unique_ptr<DramEstimate> estimate_;  // annotated
+  mutable Instant instant_;                 // the last answer of instant()
+  Moment wake_moment_;                      // what wake_ has been notified for
 
   std::vector<std::unique_ptr<Request>> requests_;  // by id; those of free_ids_ are not in use
   std::vector<unsigned> free_ids_;
@@ -180,7 +197,7 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
   unsigned request_open_ = nobody;   // BEGIN_REQ without END_REQ
   unsigned response_open_ = nobody;  // BEGIN_RESP without END_RESP
   Picoseconds response_from_ = 0;    // an END_RESP takes effect
-  bool entering_ = false, sending_ = false;
+  bool working_ = false, entering_ = false, sending_ = false;
   bool answer_inline_ = false;  // the END_REQ of request_open_ is what nb_transport_fw returns
   std::uint64_t order_ = 0;
 

@@ -97,7 +97,7 @@ tlm::tlm_sync_enum DramController::begin_request(tlm::tlm_generic_payload& paylo
   const unsigned id = take(payload, false);
   request_open_ = id;
   if (time != sc_core::SC_ZERO_TIME) {
-    coming_.push({now_ps() + to_ps(time), order_++, id});
+    coming_.push({now_ps() + to_ps(time), DramChannel::never, order_++, id});
     schedule();
     return tlm::TLM_ACCEPTED;
   }

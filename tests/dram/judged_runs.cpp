@@ -6,6 +6,7 @@
 #include <catch2/catch.hpp>
 #include <map>
 #include <random>
+#include <tuple>
 
 #include "earshot/dram/grade_file.h"
 #include "outside/dram_drive.h"
@@ -86,6 +87,82 @@ TEST_CASE("Whatever is asked of a channel, its commands are legal and its counts
         }
       }
     }
+  }
+}
+
+// Random requests at random clocks to a channel whose driver comes for every event, or only for reads and
+// writes.
+struct Outcome {
+  std::vector<CommandRecord> log;
+  std::vector<DramCompletion> completions;
+  unsigned columns_too_soon = 0;
+};
+
+Outcome outcome_of(const DramConfig& config, unsigned requests, std::mt19937 random, bool every_event) {
+  DramChannel channel(config);
+  Outcome outcome;
+  const auto next = [&] { return every_event ? channel.next_event() : channel.next_column(); };
+  const auto go_on = [&](Clocks clock) {
+    const std::size_t before = outcome.completions.size();
+    const bool too_soon = clock < channel.next_column();
+    channel.advance(clock, outcome.completions);
+    if (too_soon) outcome.columns_too_soon += static_cast<unsigned>(outcome.completions.size() - before);
+  };
+  Clocks clock = 0;
+  for (unsigned i = 0; i < requests; ++i) {
+    clock += random() % 4 == 0 ? random() % 60 : 0;
+    if (random() % 200 == 0) clock += random() % (3 * config.grade.trefi);
+    DramBurst burst;
+    burst.id = i;
+    burst.write = random() % 3 == 0;
+    burst.place.rank = static_cast<unsigned>(random() % config.ranks);
+    burst.place.group = static_cast<unsigned>(random() % config.grade.bank_groups);
+    burst.place.bank = static_cast<unsigned>(random() % config.grade.banks_per_group);
+    burst.place.row = random() % 3;
+    burst.place.column = random() % 8;
+    burst.number = DramAddressMap(config).burst(burst.place);
+    burst.last = config.burst_bytes();
+    while (next() <= clock) go_on(next());
+    while (!channel.accepts(burst.write)) go_on(clock = std::max(clock, next()));
+    if (!every_event) channel.catch_up(clock);
+    channel.enqueue(burst, clock, outcome.completions);
+  }
+  while (next() != DramChannel::never) go_on(clock = std::max(clock, next()));
+  outcome.log = channel.commands(clock + 1);
+  return outcome;
+}
+
+TEST_CASE("A channel does the same for a driver who comes for reads and writes only", "[dram]") {
+  std::mt19937 random(11);
+  for (unsigned run = 0; run < 120; ++run) {
+    DramConfig config;
+    config.grade = load_grade(builtin_grades()[random() % builtin_grades().size()]);
+    config.log_commands = true;
+    config.ranks = 1 + random() % 2;
+    config.scheduling = static_cast<DramScheduling>(random() % 3);
+    config.rows = static_cast<DramRows>(random() % 3);
+    config.row_first = random() % 2 == 0;
+    config.age_cap = random() % 2 == 0 ? 100 : 2000;
+    config.refresh = config.grade.trefi_bank != 0 && random() % 2 == 0 ? DramRefresh::per_bank
+                                                                         : DramRefresh::all_bank;
+    const std::mt19937 seed(static_cast<unsigned>(random()));
+    const Outcome eager = outcome_of(config, 500, seed, true);
+    const Outcome late = outcome_of(config, 500, seed, false);
+    CHECK(eager.columns_too_soon == 0);
+    REQUIRE(eager.log.size() == late.log.size());
+    unsigned differences = 0;
+    for (std::size_t i = 0; i < eager.log.size(); ++i) {
+      const CommandRecord &one = eager.log[i], &other = late.log[i];
+      differences += std::tie(one.clock, one.command, one.rank, one.bank_group, one.bank) !=
+                     std::tie(other.clock, other.command, other.rank, other.bank_group, other.bank);
+      differences += std::tie(one.row, one.column) != std::tie(other.row, other.column);
+    }
+    REQUIRE(eager.completions.size() == late.completions.size());
+    for (std::size_t i = 0; i < eager.completions.size(); ++i) {
+      const DramCompletion &one = eager.completions[i], &other = late.completions[i];
+      differences += std::tie(one.id, one.started, one.done) != std::tie(other.id, other.started, other.done);
+    }
+    CHECK(differences == 0);
   }
 }
 
