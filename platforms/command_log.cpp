@@ -15,7 +15,7 @@ std::string line_of(const CommandRecord& record, const ExactClock& clock) {
   };
   return std::to_string(record.channel) + "," + std::to_string(record.clock) + "," +
          std::to_string(clock.edge(record.clock)) + "," + name_of(record.command) + field(true, record.rank) +
-         field(!of_rank, record.bank_group) + field(!of_rank, record.bank) + field(opens, record.row) +
+         field(!of_rank, record.bank_group) + field(!of_rank, record.bank) + field(opens || moves, record.row) +
          field(moves, record.column) + "\n";
 }
 

@@ -7,7 +7,8 @@
 //     window,channel,clock,time-ps,command,rank,bank-group,bank,row,column
 //
 // `command` is the JEDEC name: ACT, RD, RDA, WR, WRA, PRE, PREA, REF, REFpb. Of bank group, bank, row and column a
-// command has those that it is sent with; others are empty. Numbers are decimal; columns count bursts.
+// command has those that it is sent with; others are empty. RD, RDA, WR and WRA also have the row that they are meant for,
+// so that a log can be judged. Numbers are decimal; columns count bursts.
 #pragma once
 
 #include <string>

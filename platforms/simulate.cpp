@@ -71,8 +71,17 @@ Json run(const Settings& settings, bool progress) {
   sc_core::sc_report_handler::set_actions("/OSCI/SystemC", sc_core::SC_INFO, sc_core::SC_DO_NOTHING);
   sc_core::sc_set_stop_mode(sc_core::SC_STOP_IMMEDIATE);
   Platform platform(settings, settings.table, hooks);
-  const Played played = play(settings, platform);
-  if (!settings.command_log.empty()) write_whole_file(settings.command_log, command_log(platform));
+  const auto keep_log = [&] {
+    if (!settings.command_log.empty()) write_whole_file(settings.command_log, command_log(platform));
+  };
+  Played played;
+  try {
+    played = play(settings, platform);
+  } catch (const Finding&) {  // it may show why
+    keep_log();
+    throw;
+  }
+  keep_log();
   return collect_results(settings, *settings.table, platform, played);
 }
 

@@ -255,6 +255,16 @@ TEST_CASE("nothing completing for too long is a finding that prints who waits fo
   CHECK(outcome.out.find("memory_memory: ") != std::string::npos);
 }
 
+TEST_CASE("the command log of a run that ends in a finding is written, too", "[command]") {
+  const Folder folder;
+  const Outcome outcome = earshot(
+      "simulate --baseline=off --workload.pattern=private --workload.accesses=10 --bus.stall-cycles=6 "
+      "--timing=arbitrated --memory.command-log=" +
+      (folder / "log.csv") + " " + dram);
+  CHECK(outcome.status == 1);
+  CHECK(file_text(folder / "log.csv").find(",ACT,") != std::string::npos);
+}
+
 TEST_CASE("the command log is written whole, with a header, one command a line in order", "[command]") {
   const Folder folder;
   const Json json = results_of(arbitrated + dram + "--memory.command-log=" + (folder / "log.csv"));
@@ -265,7 +275,7 @@ TEST_CASE("the command log is written whole, with a header, one command a line i
   CHECK(line == "window,channel,clock,time-ps,command,rank,bank-group,bank,row,column");
   const std::regex form(
       "memory,0,([0-9]+),([0-9]+),"
-      "(ACT,0,[0-3],[0-3],[0-9]+,|(RD|RDA|WR|WRA),0,[0-3],[0-3],,[0-9]+|PRE,0,[0-3],[0-3],,|"
+      "(ACT,0,[0-3],[0-3],[0-9]+,|(RD|RDA|WR|WRA),0,[0-3],[0-3],[0-9]+,[0-9]+|PRE,0,[0-3],[0-3],,|"
       "(PREA|REF),0,,,,)");
   std::uint64_t reads = 0;
   long long last = -1;
@@ -300,6 +310,10 @@ TEST_CASE("the DDR4 demo names its bottleneck, splits the latency, and every acc
   CHECK(text.find("miss-from-memory") != std::string::npos);
   std::istringstream lines(outcome.out);
   for (std::string line; std::getline(lines, line);) CHECK(line.size() <= 80);
+  // The baseline on its own, which has its DRAM commands judged, is what was compared with.
+  const Json alone =
+      results_of(EARSHOT_SOURCE "/configs/sonar-buoy-ddr4.ini --caches.protocol=write-through-update --baseline=off");
+  CHECK(alone["elapsed-ns"] == json["baseline"]["elapsed-ns"]);
 }
 
 TEST_CASE("packing moves pages together and changes nothing but addresses", "[command]") {

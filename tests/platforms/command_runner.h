@@ -1,7 +1,7 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// Runs build/earshot as a user would, for the tests of the command.
+// Runs build/earshot as a user would, for the tests of the command. Runs over DRAM are judged: judged_command.h.
 #pragma once
 
 #include <sys/wait.h>
@@ -14,6 +14,8 @@
 #include <nlohmann/json.hpp>
 #include <regex>
 #include <string>
+
+#include "judged_command.h"
 
 namespace command_tests {
 
@@ -57,7 +59,8 @@ class Folder {
 };
 
 inline Outcome earshot(const std::string& arguments) {
-  const std::string command = std::string(EARSHOT_COMMAND) + " " + arguments + " 2>&1";
+  const JudgedCommand judged(arguments);
+  const std::string command = std::string(EARSHOT_COMMAND) + " " + judged.arguments() + " 2>&1";
   std::FILE* pipe = popen(command.c_str(), "r");
   REQUIRE(pipe != nullptr);
   Outcome outcome;
@@ -69,6 +72,7 @@ inline Outcome earshot(const std::string& arguments) {
                                        "False positive error reports may follow\nFor details see [^\n]*\n");
   outcome.out = std::regex_replace(outcome.out, about_stacks, "");
   outcome.status = WIFEXITED(status) ? WEXITSTATUS(status) : -1;
+  judged.judge(outcome.status);
   return outcome;
 }
 
