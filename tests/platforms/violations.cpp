@@ -5,6 +5,7 @@
 // the monitor must see what the prover would have refused.
 #include <catch2/catch.hpp>
 
+#include "dram/command_checker.h"
 #include "played.h"
 #include "simulate.h"
 
@@ -35,13 +36,16 @@ std::string finding(const Table& table, const std::string& order, const std::vec
       "--caches.size=256",          "--caches.ways=2",          "--monitor=on",
       "--workload.order=" + order};
   arguments.insert(arguments.end(), more.begin(), more.end());
-  const Settings settings = read_settings("", arguments);
+  Settings settings = read_settings("", arguments);
+  settings.dram.log_commands = true;
   hooks.failed = [] { sc_core::sc_stop(); };
   sc_core::sc_set_stop_mode(sc_core::SC_STOP_IMMEDIATE);
   Platform platform(settings, std::make_shared<const Table>(table), hooks);
   try {
     play(settings, platform);
   } catch (const Finding& found) {
+    for (const WindowMemory* memory : platform.cached_memories())
+      if (memory->dram() != nullptr) require_legal(memory->dram()->commands(0), settings.dram);
     return found.what();
   }
   return "no finding";

@@ -7,6 +7,7 @@
 #include <deque>
 #include <random>
 
+#include "dram/command_checker.h"
 #include "earshot/dram/dram_controller.h"
 #include "earshot/dram/plain_memory.h"
 #include "earshot/traffic/non_blocking_player.h"
@@ -222,6 +223,7 @@ TEST_CASE("a non-blocking player's writes reach memory", "[traffic]") {
   NonBlockingPlayer player("player", 0, 8, sc_core::SC_ZERO_TIME, played.hooks());
   DramConfig config;
   config.grade = load_grade("ddr4-2400t");
+  config.log_commands = true;
   DramController memory("memory", config);
   player.initiator_socket.bind(memory.target_socket);
   player.set_source(std::make_unique<Words>(2000));
@@ -232,6 +234,7 @@ TEST_CASE("a non-blocking player's writes reach memory", "[traffic]") {
     memory.peek(word * 4, reinterpret_cast<std::uint8_t*>(&value), 4);
     CHECK(value == 2 * word + 1);
   }
+  require_legal(memory.commands(0), config);
 }
 
 TEST_CASE("with one access in flight the player takes think time and latency for each", "[traffic]") {
@@ -258,6 +261,7 @@ TEST_CASE("a refused access stops a non-blocking player, and is named", "[traffi
   NonBlockingPlayer player("player", 3, 4, sc_core::SC_ZERO_TIME, played.hooks());
   DramConfig config;
   config.grade = load_grade("ddr4-2400t");
+  config.log_commands = true;
   DramController memory("memory", config);
   player.initiator_socket.bind(memory.target_socket);
   class Beyond : public AccessSource {
@@ -281,6 +285,7 @@ TEST_CASE("a refused access stops a non-blocking player, and is named", "[traffi
   CHECK(text_of(player.end().error) ==
         "access 3 of its initiator (initiator 3, read of 4 bytes at 0x4000000000000) was answered with "
         "TLM_ADDRESS_ERROR_RESPONSE");
+  require_legal(memory.commands(0), config);
 }
 
 TEST_CASE("a player tells which access it still waits for", "[traffic]") {
