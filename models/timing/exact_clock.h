@@ -32,7 +32,7 @@ struct ExactClock {
   }
 
  private:
-  using Wide = unsigned __int128;
+  __extension__ typedef unsigned __int128 Wide;
 };
 
 }  // namespace earshot

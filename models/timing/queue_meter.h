@@ -52,7 +52,7 @@ class QueueMeter {
   }
 
  private:
-  using Wide = unsigned __int128;  // picoseconds times a number present outgrow 64 bits within a long run
+  __extension__ typedef unsigned __int128 Wide;  // picoseconds times a number present outgrow 64 bits within a long run
 
   Wide area(Picoseconds now) const { return area_ + static_cast<Wide>(present_) * (now - last_); }
   void advance(Picoseconds now) {
