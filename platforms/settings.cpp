@@ -13,6 +13,7 @@
 #include "earshot/protocol/nearest.h"
 #include "keys.h"
 #include "settings_checks.h"
+#include "shipped.h"
 
 namespace earshot {
 namespace {
@@ -148,8 +149,9 @@ void Collector::give_up_if_problems() const {
 
 }  // namespace
 
-Settings read_settings(const std::string& config_path, const std::vector<std::string>& arguments) {
+Settings read_settings(const std::string& config, const std::vector<std::string>& arguments) {
   Collector collector;
+  const std::string config_path = config.empty() ? config : configuration_path(config);
   if (!config_path.empty()) collector.read_file(config_path);
   collector.read_arguments(arguments);
 

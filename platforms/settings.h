@@ -88,9 +88,9 @@ struct Settings {
   }
 };
 
-// `arguments`: "--section.key=value" or "--section.key value", and nothing else. `config_path` may be empty.
-// Throws UsageError.
-Settings read_settings(const std::string& config_path, const std::vector<std::string>& arguments);
+// `arguments`: "--section.key=value" or "--section.key value", and nothing else. `config`: the path of a file, the name
+// of a shipped one, or empty. Throws UsageError.
+Settings read_settings(const std::string& config, const std::vector<std::string>& arguments);
 
 // One line a key: name, what it is, its default.
 std::string settings_help();
