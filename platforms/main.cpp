@@ -10,6 +10,7 @@
 #include <vector>
 
 #include "earshot/protocol/nearest.h"
+#include "earshot/version.h"
 #include "simulate.h"
 #include "verbs.h"
 
@@ -42,7 +43,7 @@ int run(const std::vector<std::string>& words) {
     return words.empty() ? 2 : 0;
   }
   if (words[0] == "--version") {
-    std::puts("earshot " EARSHOT_VERSION);
+    std::printf("earshot %s\n", version());
     return 0;
   }
   std::vector<std::string> names;

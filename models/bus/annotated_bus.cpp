@@ -5,6 +5,7 @@
 #include <algorithm>
 #include <cstring>
 
+#include "earshot/bus/line_times.h"
 #include "earshot/bus/snooping_bus.h"
 
 namespace earshot {

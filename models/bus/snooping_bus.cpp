@@ -6,6 +6,9 @@
 #include <cstring>
 
 #include "earshot/bus/arbitrated_bus.h"
+#include "earshot/bus/line_times.h"
+#include "earshot/timing/kernel.h"
+#include "earshot/version_check.h"
 
 namespace earshot {
 namespace {
@@ -32,8 +35,8 @@ void report(const sc_core::sc_module& module, const std::vector<std::string>& fo
 
 }  // namespace
 
-SnoopingBus::SnoopingBus(sc_core::sc_module_name name, const SnoopingBusConfig& config)
-    : sc_module(name), config_(config), period_(to_ps(config.clock)),
+SnoopingBus::SnoopingBus(sc_core::sc_module_name name, const SnoopingBusConfig& config, HeadersVersion headers)
+    : sc_module((require_same_version(headers, name), name)), config_(config), period_(to_ps(config.clock)),
       width_shift_(static_cast<unsigned>(__builtin_ctz(std::max(config.width_bytes, 1u)))), map_(config.windows) {
   report(*this, problems(config));
   for (const Window& window : map_.windows())
@@ -46,7 +49,7 @@ SnoopingBus::SnoopingBus(sc_core::sc_module_name name, const SnoopingBusConfig& 
     return;
   }
   arbitrated_ = std::make_unique<Arbitrated>(*this);
-  SC_HAS_PROCESS(SnoopingBus);
+  EARSHOT_HAS_PROCESS(SnoopingBus);
   SC_METHOD(work);
   sensitive << arbitrated_->due();
   dont_initialize();

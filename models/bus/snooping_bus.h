@@ -46,11 +46,13 @@
 #include "earshot/bus/transaction.h"
 #include "earshot/bus/window_port.h"
 #include "earshot/observe/histogram.h"
-#include "earshot/bus/line_times.h"
 #include "earshot/timing/calendar.h"
 #include "earshot/timing/queue_meter.h"
+#include "earshot/version.h"
 
 namespace earshot {
+
+class LineTimes;
 
 enum class BusStructure : std::uint8_t { connected, split };
 
@@ -117,7 +119,8 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface, private
  public:
   BusTargetSocket cache_socket{"cache_socket"};
 
-  SnoopingBus(sc_core::sc_module_name name, const SnoopingBusConfig& config);
+  SnoopingBus(sc_core::sc_module_name name, const SnoopingBusConfig& config,
+              HeadersVersion headers = EARSHOT_HEADERS_VERSION);
   ~SnoopingBus() override;
   const char* kind() const override { return "earshot::SnoopingBus"; }
 

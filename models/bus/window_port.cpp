@@ -5,6 +5,8 @@
 #include <algorithm>
 #include <sstream>
 
+#include "earshot/timing/kernel.h"
+
 namespace earshot {
 
 WindowAccess& WindowAccessPool::acquire() {
@@ -29,7 +31,7 @@ void WindowAccessPool::free(tlm::tlm_generic_payload* payload) {
 WindowPort::WindowPort(sc_core::sc_module_name name, const Window& window, Listener& listener)
     : sc_module(name), window_(window), listener_(listener) {
   socket.bind(*this);
-  SC_HAS_PROCESS(WindowPort);
+  EARSHOT_HAS_PROCESS(WindowPort);
   SC_METHOD(work);
   sensitive << agenda_.due();
   dont_initialize();

@@ -7,6 +7,8 @@
 
 #include "earshot/cache/arbitrated_cache.h"
 #include "earshot/cache/copy_bytes.h"
+#include "earshot/timing/kernel.h"
+#include "earshot/version_check.h"
 
 namespace earshot {
 namespace {
@@ -51,8 +53,9 @@ Histogram CacheTotals::latency() const {
   return all;
 }
 
-CoherentCache::CoherentCache(sc_core::sc_module_name name, const CacheConfig& config, Family family)
-    : sc_module(name),
+CoherentCache::CoherentCache(sc_core::sc_module_name name, const CacheConfig& config, Family family,
+                             HeadersVersion headers)
+    : sc_module((require_same_version(headers, name), name)),
       config_(config),
       table_(config.table),
       hit_ps_(to_ps(config.hit_time)),
@@ -62,7 +65,7 @@ CoherentCache::CoherentCache(sc_core::sc_module_name name, const CacheConfig& co
       incoming_(store_.line_bytes()) {
   cpu_socket.bind(static_cast<tlm::tlm_fw_transport_if<>&>(*this));
   bus_socket.bind(static_cast<SnoopInterface&>(*this));
-  SC_HAS_PROCESS(CoherentCache);
+  EARSHOT_HAS_PROCESS(CoherentCache);
   SC_METHOD(work);
   sensitive << agenda_.due();
   dont_initialize();

@@ -52,6 +52,7 @@
 #include "earshot/timing/agenda.h"
 #include "earshot/timing/latency.h"
 #include "earshot/timing/queue_meter.h"
+#include "earshot/version.h"
 
 namespace earshot {
 
@@ -124,7 +125,8 @@ class CoherentCache : public sc_core::sc_module,
   void set_observer(Observer* observer) { observer_ = observer; }
 
  protected:
-  CoherentCache(sc_core::sc_module_name name, const CacheConfig& config, Family family);
+  CoherentCache(sc_core::sc_module_name name, const CacheConfig& config, Family family, HeadersVersion headers);
+
  private:
   class Arbitrated;  // the engine of arbitrated timing
   friend class Arbitrated;

@@ -11,8 +11,9 @@ namespace earshot {
 class InvalidatingCache : public CoherentCache {
  public:
   // REQUIRES: config.table is of the invalidate family; anything else is a configuration error.
-  InvalidatingCache(sc_core::sc_module_name name, const CacheConfig& config)
-      : CoherentCache(name, config, Family::invalidate) {}
+  InvalidatingCache(sc_core::sc_module_name name, const CacheConfig& config,
+                    HeadersVersion headers = EARSHOT_HEADERS_VERSION)
+      : CoherentCache(name, config, Family::invalidate, headers) {}
   const char* kind() const override { return "earshot::InvalidatingCache"; }
 };
 

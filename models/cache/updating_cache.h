@@ -13,8 +13,9 @@ namespace earshot {
 class UpdatingCache : public CoherentCache {
  public:
   // REQUIRES: config.table is of the update family; anything else is a configuration error.
-  UpdatingCache(sc_core::sc_module_name name, const CacheConfig& config)
-      : CoherentCache(name, config, Family::update) {}
+  UpdatingCache(sc_core::sc_module_name name, const CacheConfig& config,
+                HeadersVersion headers = EARSHOT_HEADERS_VERSION)
+      : CoherentCache(name, config, Family::update, headers) {}
   const char* kind() const override { return "earshot::UpdatingCache"; }
 };
 

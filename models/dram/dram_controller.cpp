@@ -7,11 +7,16 @@
 #include <algorithm>
 
 #include "earshot/dram/payload_bytes.h"
+#include "earshot/timing/kernel.h"
+#include "earshot/version_check.h"
 
 namespace earshot {
 
-DramController::DramController(sc_core::sc_module_name name, const DramConfig& config)
-    : sc_module(name), config_(config), burst_bytes_(config.burst_bytes()), wake_("wake") {
+DramController::DramController(sc_core::sc_module_name name, const DramConfig& config, HeadersVersion headers)
+    : sc_module((require_same_version(headers, name), name)),
+      config_(config),
+      burst_bytes_(config.burst_bytes()),
+      wake_("wake") {
   target_socket.bind(static_cast<tlm::tlm_fw_transport_if<>&>(*this));
   const std::vector<std::string> problems = config.problems();
   if (!problems.empty()) {
@@ -28,7 +33,7 @@ DramController::DramController(sc_core::sc_module_name name, const DramConfig& c
   }
   for (unsigned c = 0; c < config.channels; ++c)
     lanes_.push_back({std::make_unique<DramChannel>(config, c), 0, {}});
-  SC_HAS_PROCESS(DramController);
+  EARSHOT_HAS_PROCESS(DramController);
   SC_METHOD(work);
   sensitive << wake_;
   dont_initialize();

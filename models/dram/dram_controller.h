@@ -48,6 +48,7 @@
 #include "earshot/dram/dram_estimate.h"
 #include "earshot/dram/sparse_bytes.h"
 #include "earshot/timing/latency.h"
+#include "earshot/version.h"
 
 namespace earshot {
 
@@ -55,7 +56,8 @@ class DramController : public sc_core::sc_module, private tlm::tlm_fw_transport_
  public:
   tlm::tlm_target_socket<> target_socket{"target_socket"};
 
-  DramController(sc_core::sc_module_name name, const DramConfig& config);
+  DramController(sc_core::sc_module_name name, const DramConfig& config,
+                 HeadersVersion headers = EARSHOT_HEADERS_VERSION);
   const char* kind() const override { return "earshot::DramController"; }
 
   const DramConfig& config() const { return config_; }

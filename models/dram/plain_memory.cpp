@@ -5,6 +5,7 @@
 #include <string>
 
 #include "earshot/dram/payload_bytes.h"
+#include "earshot/version_check.h"
 
 namespace earshot {
 
@@ -12,8 +13,8 @@ namespace {
 constexpr std::uint64_t last_byte = ~std::uint64_t{0};
 }
 
-PlainMemory::PlainMemory(sc_core::sc_module_name name, const PlainMemoryConfig& config)
-    : sc_module(name), config_(config) {
+PlainMemory::PlainMemory(sc_core::sc_module_name name, const PlainMemoryConfig& config, HeadersVersion headers)
+    : sc_module((require_same_version(headers, name), name)), config_(config) {
   const unsigned beat = config.beat_bytes;
   if (beat < 1 || beat > 256 || (beat & (beat - 1)) != 0)
     SC_REPORT_ERROR("/earshot/dram/config", (std::string(this->name()) + "\n  beat: " + std::to_string(beat) +

@@ -16,6 +16,7 @@
 #include "earshot/dram/sparse_bytes.h"
 #include "earshot/timing/calendar.h"
 #include "earshot/timing/latency.h"
+#include "earshot/version.h"
 
 namespace earshot {
 
@@ -30,7 +31,8 @@ class PlainMemory : public sc_core::sc_module, private tlm::tlm_fw_transport_if<
  public:
   tlm::tlm_target_socket<> target_socket{"target_socket"};
 
-  PlainMemory(sc_core::sc_module_name name, const PlainMemoryConfig& config);
+  PlainMemory(sc_core::sc_module_name name, const PlainMemoryConfig& config,
+              HeadersVersion headers = EARSHOT_HEADERS_VERSION);
   const char* kind() const override { return "earshot::PlainMemory"; }
 
   // Serving accesses: the sum over all of them. Utilisation is this over elapsed time.

@@ -18,9 +18,12 @@ inline sc_core::sc_time from_ps(Picoseconds ps) { return sc_core::sc_time::from_
 
 // The kernel keeps its time in one place: asked for once, since the call costs more than the models can afford.
 inline Picoseconds now_ps() {
-  static_assert(std::is_reference_v<decltype(sc_core::sc_time_stamp())>, "the kernel returns a copy of its time");
-  static const sc_core::sc_time& now = sc_core::sc_time_stamp();
-  return now.value();
+  if constexpr (std::is_reference_v<decltype(sc_core::sc_time_stamp())>) {
+    static const sc_core::sc_time& now = sc_core::sc_time_stamp();
+    return now.value();
+  } else {  // the standard leaves it open
+    return sc_core::sc_time_stamp().value();
+  }
 }
 
 // The first edge at or after `time` of a clock with this period whose edge 0 is at time 0.

@@ -5,11 +5,14 @@
 
 #include <algorithm>
 
+#include "earshot/version_check.h"
+
 namespace earshot {
 
 NonBlockingPlayer::NonBlockingPlayer(sc_core::sc_module_name name, std::uint32_t initiator,
-                                     unsigned outstanding, ThinkTime think, PlayerHooks hooks)
-    : sc_module(name),
+                                     unsigned outstanding, ThinkTime think, PlayerHooks hooks,
+                                     HeadersVersion headers)
+    : sc_module((require_same_version(headers, name), name)),
       initiator_(initiator),
       outstanding_(outstanding),
       think_(think),

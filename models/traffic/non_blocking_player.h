@@ -18,6 +18,7 @@
 #include "earshot/timing/agenda.h"
 #include "earshot/traffic/playing.h"
 #include "earshot/traffic/think_time.h"
+#include "earshot/version.h"
 
 namespace earshot {
 
@@ -27,7 +28,8 @@ class NonBlockingPlayer : public sc_core::sc_module, private tlm::tlm_mm_interfa
 
   // `outstanding`: accesses in flight at most, at least 1. Plays nothing until given a source before simulation starts.
   NonBlockingPlayer(sc_core::sc_module_name name, std::uint32_t initiator, unsigned outstanding,
-                    ThinkTime think, PlayerHooks hooks);
+                    ThinkTime think, PlayerHooks hooks,
+                    HeadersVersion headers = EARSHOT_HEADERS_VERSION);
   const char* kind() const override { return "earshot::NonBlockingPlayer"; }
 
   void set_source(std::unique_ptr<AccessSource> source) { source_ = std::move(source); }

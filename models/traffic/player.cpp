@@ -7,6 +7,8 @@
 #include <cstring>
 #include <sstream>
 
+#include "earshot/version_check.h"
+
 namespace earshot {
 namespace {
 
@@ -39,8 +41,13 @@ void run_decoupled(const PlayerHooks& hooks, PlayerEnd& end, Step step) {
 
 }  // namespace
 
-Player::Player(sc_core::sc_module_name name, std::uint32_t initiator, ThinkTime think, PlayerHooks hooks)
-    : sc_module(name), initiator_(initiator), think_(think), hooks_(std::move(hooks)), bytes_(largest_access) {
+Player::Player(sc_core::sc_module_name name, std::uint32_t initiator, ThinkTime think, PlayerHooks hooks,
+               HeadersVersion headers)
+    : sc_module((require_same_version(headers, name), name)),
+      initiator_(initiator),
+      think_(think),
+      hooks_(std::move(hooks)),
+      bytes_(largest_access) {
   sc_core::sc_spawn([this] { play(); }, "play");
 }
 
@@ -82,8 +89,9 @@ void Player::preset(std::uint64_t address, const std::uint8_t* bytes, unsigned l
 }
 
 RecordedOrder::RecordedOrder(sc_core::sc_module_name name, std::vector<Player*> players,
-                             std::unique_ptr<AccessSource> source, bool check_values, PlayerHooks hooks)
-    : sc_module(name),
+                             std::unique_ptr<AccessSource> source, bool check_values, PlayerHooks hooks,
+                             HeadersVersion headers)
+    : sc_module((require_same_version(headers, name), name)),
       players_(std::move(players)),
       source_(std::move(source)),
       check_values_(check_values),

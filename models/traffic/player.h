@@ -24,6 +24,7 @@
 
 #include "earshot/traffic/playing.h"
 #include "earshot/traffic/think_time.h"
+#include "earshot/version.h"
 
 namespace earshot {
 
@@ -32,7 +33,8 @@ class Player : public sc_core::sc_module {
   tlm_utils::simple_initiator_socket<Player> initiator_socket{"initiator_socket"};
 
   // Plays nothing of its own until given a source before simulation starts. `think` passes before every access.
-  Player(sc_core::sc_module_name name, std::uint32_t initiator, ThinkTime think, PlayerHooks hooks);
+  Player(sc_core::sc_module_name name, std::uint32_t initiator, ThinkTime think, PlayerHooks hooks,
+         HeadersVersion headers = EARSHOT_HEADERS_VERSION);
   const char* kind() const override { return "earshot::Player"; }
 
   void set_source(std::unique_ptr<AccessSource> source) { source_ = std::move(source); }
@@ -67,7 +69,7 @@ class RecordedOrder : public sc_core::sc_module {
   // `players` are indexed by initiator and must outlive this. With `check_values`, a read's recorded value is
   // compared with what the platform returned; bytes no access has touched before take their recorded value.
   RecordedOrder(sc_core::sc_module_name name, std::vector<Player*> players, std::unique_ptr<AccessSource> source,
-                bool check_values, PlayerHooks hooks);
+                bool check_values, PlayerHooks hooks, HeadersVersion headers = EARSHOT_HEADERS_VERSION);
   const char* kind() const override { return "earshot::RecordedOrder"; }
 
   const PlayerEnd& end() const { return end_; }

@@ -13,6 +13,7 @@
 
 #include "earshot/bus/snooping_bus.h"
 #include "earshot/cache/updating_cache.h"
+#include "earshot/version.h"
 
 struct Memory : sc_core::sc_module {
   tlm_utils::simple_target_socket<Memory> socket{"socket"};
@@ -49,7 +50,11 @@ struct Processor : sc_core::sc_module {
   }
 };
 
-int sc_main(int, char*[]) {
+int sc_main(int argc, char*[]) {
+  if (argc > 1) {  // --version
+    std::puts(earshot::version());
+    return 0;
+  }
   earshot::SnoopingBusConfig bus_config;
   bus_config.windows = {{"ram", 0, 4096, true, 0}};
   earshot::CacheConfig cache_config;
