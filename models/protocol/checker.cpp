@@ -15,7 +15,7 @@ bool is_fetch(const RowText& row) {
 }
 
 bool receives_word(Event event) {
-  return event == Event::snoop_update || event == Event::snoop_write_through;
+  return event == Event::snoop_update || event == Event::snoop_write_through || event == Event::snoop_io_write;
 }
 
 class Checker {
@@ -179,16 +179,18 @@ class Checker {
     }
     if (row.uses_bus) problems_.add(row.line, "a snoop row cannot issue a bus transaction");
     if (row.again) problems_.add(row.line, "again belongs to a write");
-    if (row.supply && (receives_word(row.event) || row.event == Event::snoop_upgrade)) {
+    const bool under_word = row.event == Event::snoop_io_write && row.write_memory;
+    if (row.supply && !under_word && (receives_word(row.event) || row.event == Event::snoop_upgrade)) {
       problems_.add(row.line, std::string("nobody asks for the line in a ") + name_of(row.event) +
-                                  ", supply belongs to snoop-read and snoop-read-exclusive");
+                                  ", supply belongs to snoop-read, snoop-read-exclusive and snoop-io-read, or with "
+                                  "write-memory to snoop-io-write");
     }
     if (row.write_memory && !row.supply) {
       problems_.add(row.line, "write-memory needs supply: memory takes the supplied line");
     }
     if (row.take && !receives_word(row.event)) {
       problems_.add(row.line, std::string("no word is broadcast in a ") + name_of(row.event) +
-                                  ", take belongs to snoop-update and snoop-write-through");
+                                  ", take belongs to snoop-update, snoop-write-through and snoop-io-write");
     }
     if (row.take && next(row).absent) problems_.add(row.line, "take needs a copy, next is " + next(row).name);
     if (row.take && table_.family == Family::invalidate && table_.family_line != 0) {
@@ -214,7 +216,8 @@ class Checker {
     if (row.when != When::below && row.when != When::at_limit) return;
     if (!receives_word(row.event)) {
       problems_.add(row.line,
-                    std::string(name_of(row.when)) + " belongs to snoop-update and snoop-write-through");
+                    std::string(name_of(row.when)) +
+                        " belongs to snoop-update, snoop-write-through and snoop-io-write");
     } else if (table_.limit_line == 0) {
       problems_.add(row.line, std::string(name_of(row.when)) + " needs a line `limit N`");
     }

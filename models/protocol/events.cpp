@@ -28,6 +28,8 @@ const char* name_of(Event event) {
     case Event::snoop_upgrade:        return "snoop-upgrade";
     case Event::snoop_update:         return "snoop-update";
     case Event::snoop_write_through:  return "snoop-write-through";
+    case Event::snoop_io_read:        return "snoop-io-read";
+    case Event::snoop_io_write:       return "snoop-io-write";
   }
   return "?";
 }

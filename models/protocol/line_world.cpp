@@ -18,6 +18,18 @@ class Step {
     return wrong_;
   }
 
+  std::string run_io(Event event) {
+    note_states();
+    const BusKind kind = event == Event::snoop_io_read ? BusKind::io_read : BusKind::io_write;
+    const Answer answer = broadcast(kind);
+    note_transaction(kind, answer);
+    note_states();
+    const bool fresh = answer.supplied ? answer.supplied_fresh : world_.memory_fresh;
+    if (wrong_.empty() && kind == BusKind::io_read && !fresh) wrong_ = "the I/O port reads a stale value";
+    if (wrong_.empty()) check_rules();
+    return wrong_;
+  }
+
  private:
   // What the other caches answered to one transaction.
   struct Answer {
@@ -63,7 +75,9 @@ class Step {
   }
 
   static bool is_fetch(BusKind kind) { return kind == BusKind::read || kind == BusKind::read_exclusive; }
-  static bool carries_word(BusKind kind) { return kind == BusKind::update || kind == BusKind::write_through; }
+  static bool carries_word(BusKind kind) {
+    return kind == BusKind::update || kind == BusKind::write_through || kind == BusKind::io_write;
+  }
 
   // Every other cache that holds the line sees the transaction.
   Answer broadcast(BusKind kind) {
@@ -193,6 +207,10 @@ class Step {
 
 std::string cache_name(int cache) {
   return std::string(1, static_cast<char>('A' + cache));
+}
+
+std::string take_io_step(const Table& table, LineWorld& world, Event event, StepStory* story) {
+  return Step(table, world, -1, story).run_io(event);
 }
 
 std::string take_step(const Table& table, LineWorld& world, int cache, Event event, StepStory* story) {

@@ -46,4 +46,7 @@ std::string cache_name(int cache);
 // afterwards. `story` may be null.
 std::string take_step(const Table& table, LineWorld& world, int cache, Event event, StepStory* story);
 
+// The same for an I/O port, which keeps no copy: `event` is snoop_io_read or snoop_io_write.
+std::string take_io_step(const Table& table, LineWorld& world, Event event, StepStory* story);
+
 }  // namespace earshot

@@ -24,7 +24,9 @@ constexpr Event all_events[] = {Event::read,
                                 Event::snoop_read_exclusive,
                                 Event::snoop_upgrade,
                                 Event::snoop_update,
-                                Event::snoop_write_through};
+                                Event::snoop_write_through,
+                                Event::snoop_io_read,
+                                Event::snoop_io_write};
 constexpr BusKind table_kinds[] = {BusKind::read,   BusKind::read_exclusive, BusKind::upgrade,
                                    BusKind::update, BusKind::write_through,  BusKind::write_back};
 constexpr When all_conditions[] = {When::shared, When::alone, When::below, When::at_limit};

@@ -69,8 +69,11 @@ std::uint64_t permutations(const LineWorld& world) {
   return count;
 }
 
+bool is_io(Event event) { return event == Event::snoop_io_read || event == Event::snoop_io_write; }
+
 const char* verb(Event event) {
-  return event == Event::read ? "reads" : event == Event::write ? "writes" : "replaces";
+  const bool read = event == Event::read || event == Event::snoop_io_read;
+  return read ? "reads" : event == Event::replace ? "replaces" : "writes";
 }
 
 // "A M -> Sm -> Sc"
@@ -87,7 +90,8 @@ std::string way(const Table& table, int cache, const std::vector<StateId>& visit
 // "2. cache B writes: bus update (shared); A Sm -> Sc, B Sc -> Sm; memory stale"
 std::string tell(const Table& table, const LineWorld& after, int number, int cache, Event event,
                  const StepStory& story) {
-  std::string text = std::to_string(number) + ". cache " + cache_name(cache) + " " + verb(event) + ": ";
+  const std::string who = is_io(event) ? "the I/O port" : "cache " + cache_name(cache);
+  std::string text = std::to_string(number) + ". " + who + " " + verb(event) + ": ";
   for (const std::string& transaction : story.transactions) {
     text += transaction + (&transaction == &story.transactions.back() ? "; " : ", ");
   }
@@ -139,13 +143,28 @@ class Search {
       if (c > 0 && state == world.copies[static_cast<std::size_t>(c - 1)].state) continue;
       for (const Event event : {Event::read, Event::write, Event::replace}) {
         if (event == Event::replace && state == absent) continue;
-        LineWorld after = world;
-        const Move move{folded, state, event, false};
-        proof_.violation = take_step(table_, after, c, event, nullptr);
-        if (!proof_.violation.empty()) return retell(move);
-        reach(fold(after), move);
+        if (!explore(world, Move{folded, state, event, false}, c)) return;
       }
     }
+    if (!table_.serves_io()) return;
+    for (const Event event : {Event::snoop_io_read, Event::snoop_io_write})
+      if (!explore(world, Move{folded, absent, event, false}, -1)) return;
+  }
+
+  // One event from one world. False: it breaks a rule.
+  bool explore(const LineWorld& world, const Move& move, int actor) {
+    LineWorld after = world;
+    proof_.violation = act(after, move.event, actor, nullptr);
+    if (!proof_.violation.empty()) {
+      retell(move);
+      return false;
+    }
+    reach(fold(after), move);
+    return true;
+  }
+
+  std::string act(LineWorld& world, Event event, int actor, StepStory* story) const {
+    return is_io(event) ? take_io_step(table_, world, event, story) : take_step(table_, world, actor, event, story);
   }
 
   void count(const LineWorld& world) {
@@ -169,10 +188,10 @@ class Search {
     LineWorld world;
     world.caches = proof_.caches;
     for (const Move& move : moves) {
-      int actor = 0;
-      while (world.copies[static_cast<std::size_t>(actor)].state != move.actor) ++actor;
+      int actor = is_io(move.event) ? -1 : 0;
+      while (actor >= 0 && world.copies[static_cast<std::size_t>(actor)].state != move.actor) ++actor;
       StepStory story;
-      proof_.violation = take_step(table_, world, actor, move.event, &story);
+      proof_.violation = act(world, move.event, actor, &story);
       const int number = static_cast<int>(proof_.steps.size()) + 1;
       proof_.steps.push_back(tell(table_, world, number, actor, move.event, story));
     }

@@ -87,6 +87,13 @@ Table Table::with_row(StateId state, Event event, bool shared, const Row& replac
   return copy;
 }
 
+bool Table::serves_io() const {
+  for (std::size_t id = 0; id < states_.size(); ++id)
+    for (const Event event : {Event::snoop_io_read, Event::snoop_io_write})
+      if (row(static_cast<StateId>(id), event, false).defined) return true;
+  return false;
+}
+
 std::string Table::dump() const {
   std::ostringstream out;
   out << "protocol " << name_ << ", family " << (family_ == Family::update ? "update" : "invalidate");

@@ -66,6 +66,8 @@ class Table {
   // True if the table counts updates received without a local use, so that `limit` means something to it.
   bool counts() const { return limit_ != 0; }
   int limit() const { return limit_; }
+  // False: no row says what a copy does about an I/O port, so none can be on the bus.
+  bool serves_io() const;
 
   // The row for a state, an event and the shared answer. For rows that use no bus, and for snoop events,
   // both answers give the same row.

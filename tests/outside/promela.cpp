@@ -17,6 +17,9 @@ class Writer {
                                BusKind::write_through}) {
       write_transaction(kind);
     }
+    if (table_.serves_io()) {
+      for (const BusKind kind : {BusKind::io_read, BusKind::io_write}) write_transaction(kind);
+    }
     write_others_stale();
     for (const Event event : {Event::read, Event::write, Event::replace}) write_event(event);
     write_check();
@@ -39,8 +42,8 @@ class Writer {
   // What all caches but `me` do on one transaction. Afterwards: shared; for a fetch also `good`, the
   // freshness of the line that arrives.
   void write_transaction(BusKind kind) {
-    const bool fetch = kind == BusKind::read || kind == BusKind::read_exclusive;
-    const bool word = kind == BusKind::update || kind == BusKind::write_through;
+    const bool fetch = kind == BusKind::read || kind == BusKind::read_exclusive || kind == BusKind::io_read;
+    const bool word = kind == BusKind::update || kind == BusKind::write_through || kind == BusKind::io_write;
     out_ << "inline bus_" << int(kind) << "(me) {  /* " << name_of(kind) << " */\n"
          << "  shared = 0; supplied = 0; good = 1; tomem = 0;\n"
          << "  for (j : 0 .. " << caches_ - 1 << ") {\n"
@@ -66,6 +69,8 @@ class Writer {
     if (fetch) {
       out_ << "  if :: tomem -> mem = good :: else -> skip fi;\n"
            << "  if :: supplied -> skip :: else -> good = mem fi\n";
+    } else if (kind == BusKind::io_write) {
+      out_ << "  if :: tomem -> mem = good :: else -> skip fi\n";  // the word itself leaves memory as fresh as it was
     } else {
       out_ << "  skip\n";
     }
@@ -166,6 +171,13 @@ class Writer {
       out_ << "  :: d_step { true -> do_read(" << cache << ") }\n"
            << "  :: d_step { true -> do_write(" << cache << ") }\n"
            << "  :: d_step { (st[" << cache << "] != 0) -> do_replace(" << cache << ") }\n";
+    }
+    if (table_.serves_io()) {
+      const int nobody = 255;
+      out_ << "  :: d_step { true -> bus_" << int(BusKind::io_read) << "(" << nobody
+           << "); assert(!row_missing && good); check() }\n"
+           << "  :: d_step { true -> bus_" << int(BusKind::io_write) << "(" << nobody
+           << "); assert(!row_missing); check() }\n";
     }
     out_ << "  od\n"
          << "}\n";

@@ -55,11 +55,15 @@ TEST_CASE("the compiled table holds every row, the defaults included, in a stabl
         "S snoop-read |  | S\n"
         "S snoop-read-exclusive |  | I\n"
         "S snoop-upgrade |  | I\n"
+        "S snoop-io-read |  | S\n"
+        "S snoop-io-write |  | I\n"
         "M read |  | M\n"
         "M write |  | M\n"
         "M replace | bus write-back | I\n"
         "M snoop-read | supply, write-memory | S\n"
-        "M snoop-read-exclusive | supply | I\n");
+        "M snoop-read-exclusive | supply | I\n"
+        "M snoop-io-read | supply | M\n"
+        "M snoop-io-write | supply, write-memory | I\n");
 }
 
 TEST_CASE("a counting state becomes as many states as the limit says", "[protocol]") {

@@ -192,4 +192,37 @@ TEST_CASE("a sound table's account fits 80 columns", "[protocol]") {
         "  3 reachable states, 3 if the caches are told apart\n");
 }
 
+TEST_CASE("an I/O port that reads past the owner is told", "[protocol]") {
+  const Table table = edited("msi", "M     snoop-io-read", "  M snoop-io-read | | M");
+  CHECK(account_of(table, 2) ==
+        "msi: NOT sound with 2 caches: the I/O port reads a stale value\n"
+        "  1. cache A writes: bus read-exclusive (alone); A I -> M; memory stale\n"
+        "  2. the I/O port reads: bus io-read (shared); no state changes; memory stale\n");
+}
+
+TEST_CASE("an I/O write that takes an owner's other bytes with it is told", "[protocol]") {
+  const Table table = edited("mesi", "M     snoop-io-write", "  M snoop-io-write | | I");
+  CHECK(account_of(table, 2) ==
+        "mesi: NOT sound with 2 caches: nobody owns the line, but memory is stale\n"
+        "  1. cache A writes: bus read-exclusive (alone); A I -> M; memory stale\n"
+        "  2. the I/O port writes: bus io-write (alone); A M -> I; memory stale\n");
+}
+
+TEST_CASE("a copy that an I/O write does not reach is told", "[protocol]") {
+  const Table table = edited("dragon", "Sc    snoop-io-write", "  Sc snoop-io-write | | Sc");
+  const Proof proof = prove(table, 2);
+  CHECK_FALSE(proof.sound);
+  CHECK(proof.violation == "cache A in Sc can read a stale value");
+}
+
+TEST_CASE("a table without rows for an I/O port is proved without one", "[protocol]") {
+  CHECK(load_table("mesi").serves_io());
+  const Table table = Table::parse("protocol p\nfamily invalidate\nstate I absent\nstate S readable\n"
+                                   "I read | bus read | S\nI write | bus write-through | I\nS write | bus write-through | S\n"
+                                   "S snoop-read | | S\nS snoop-write-through | | I\n",
+                                   "p");
+  CHECK_FALSE(table.serves_io());
+  CHECK(prove(table, 3).sound);
+}
+
 }  // namespace earshot

@@ -96,7 +96,7 @@ TEST_CASE("a misspelt word is refused with the words that were expected and the 
        "mean writable?"},
       {6, "I raed | bus read | S",
        "t.table:6: unknown event 'raed', expected read, write, replace, snoop-read, snoop-read-exclusive, "
-       "snoop-upgrade, snoop-update, snoop-write-through; did you mean read?"},
+       "snoop-upgrade, snoop-update, snoop-write-through, snoop-io-read, snoop-io-write; did you mean read?"},
       {6, "I read shred | bus read | S",
        "t.table:6: unknown condition 'shred', expected shared, alone, below, at-limit; did you mean shared?"},
       {6, "I read | bus raed | S",
@@ -270,12 +270,12 @@ TEST_CASE("an action or condition that does not fit its event is refused", "[pro
       {10, "M snoop-read | write-memory | S",
        "t.table:10: write-memory needs supply: memory takes the supplied line"},
       {10, "M snoop-read | supply, take | S",
-       "t.table:10: no word is broadcast in a snoop-read, take belongs to snoop-update and "
-       "snoop-write-through\n"
+       "t.table:10: no word is broadcast in a snoop-read, take belongs to snoop-update, "
+       "snoop-write-through and snoop-io-write\n"
        "t.table:10: take belongs to the update family, this table is `family invalidate`"},
       {13, "S snoop-upgrade | supply | I",
-       "t.table:13: nobody asks for the line in a snoop-upgrade, supply belongs to snoop-read and "
-       "snoop-read-exclusive"},
+       "t.table:13: nobody asks for the line in a snoop-upgrade, supply belongs to snoop-read, "
+       "snoop-read-exclusive and snoop-io-read, or with write-memory to snoop-io-write"},
       {0, "S snoop-update | take | S",
        "t.table:14: take belongs to the update family, this table is `family invalidate`"},
       {10, "M snoop-read shared | supply | S",
@@ -285,7 +285,7 @@ TEST_CASE("an action or condition that does not fit its event is refused", "[pro
        "t.table:9: alone is what other caches answer to the transaction of a read or write\n"
        "t.table:9: row for M replace alone without one for shared"},
       {10, "M snoop-read below | supply | S",
-       "t.table:10: below belongs to snoop-update and snoop-write-through\n"
+       "t.table:10: below belongs to snoop-update, snoop-write-through and snoop-io-write\n"
        "t.table:10: row for M snoop-read below without one for at-limit"},
   };
   check_each(invalidate, in_invalidate);
