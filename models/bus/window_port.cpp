@@ -45,6 +45,10 @@ void WindowPort::send(WindowAccess& access) {
 }
 
 void WindowPort::send_next() {
+  if (listener_.on_backward_path) {
+    if (!busy_ && !queue_.empty()) agenda_.at<&WindowPort::send_later>(now_ps(), this, this);
+    return;
+  }
   while (!busy_ && !queue_.empty()) {
     WindowAccess& access = *queue_.front();
     queue_.pop_front();
@@ -124,7 +128,16 @@ void WindowPort::end_response(WindowAccess* access) {
 tlm::tlm_sync_enum WindowPort::nb_transport_bw(tlm::tlm_generic_payload& payload, tlm::tlm_phase& phase,
                                                sc_core::sc_time& time) {
   if (phase > tlm::END_RESP) return tlm::TLM_ACCEPTED;  // an ignorable phase of somebody's own (15.2.5)
-  const Picoseconds when = now_ps() + to_ps(time);
+  struct Path {  // also if a report throws
+    bool& taken;
+    ~Path() { taken = false; }
+  } path{listener_.on_backward_path};
+  path.taken = true;
+  return target_says(payload, phase, now_ps() + to_ps(time));
+}
+
+tlm::tlm_sync_enum WindowPort::target_says(tlm::tlm_generic_payload& payload, const tlm::tlm_phase& phase,
+                                           Picoseconds when) {
   if (phase == tlm::END_REQ) {
     WindowAccess& access = known(payload, "END_REQ");
     if (!access.requesting) misuse("sends END_REQ twice for one access");

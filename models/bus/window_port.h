@@ -61,6 +61,9 @@ class WindowPort : public sc_core::sc_module, private tlm::tlm_bw_transport_if<>
     // The target's answer is known: access.ended says when it is there, now or later.
     virtual void answered(WindowAccess& access) = 0;
     virtual void direct_memory_ended(std::uint64_t first, std::uint64_t last) = 0;  // bus addresses
+    // A target's nb_transport_bw is under way: no target is called with nb_transport_fw from within it (IEEE
+    // 1666-2011, 11.1.2.4).
+    bool on_backward_path = false;
   };
 
   WindowPort(sc_core::sc_module_name name, const Window& window, Listener& listener);
@@ -85,6 +88,8 @@ class WindowPort : public sc_core::sc_module, private tlm::tlm_bw_transport_if<>
   void begin(WindowAccess& access);
   void end_request(WindowAccess& access, Picoseconds when);
   void next_request(WindowAccess* access);
+  void send_later(WindowPort*) { send_next(); }
+  tlm::tlm_sync_enum target_says(tlm::tlm_generic_payload& payload, const tlm::tlm_phase& phase, Picoseconds when);
   bool at_target(const WindowAccess& access) const;
   void respond(WindowAccess& access, Picoseconds when);
   void end_response(WindowAccess* access);

@@ -83,6 +83,8 @@ tlm::tlm_sync_enum CoherentCache::Arbitrated::forward(tlm::tlm_generic_payload& 
     if (responding_ == nullptr || responding_->payload != &payload || response_ending_)
       return misuse("END_RESP for an access that has no BEGIN_RESP outstanding");
     end_response(time);
+    // Not from within this call (11.1.2.4: a call on one path never leads to one on the other).
+    if (!responses_.empty()) agenda_.at<&Arbitrated::next_response>(now_ps(), this, this);
     return tlm::TLM_COMPLETED;
   }
   std::ostringstream text;
@@ -191,12 +193,16 @@ void CoherentCache::Arbitrated::complete(Access& access) {
   access.done = true;
   if (!access.blocking) {
     responses_.push_back(&access);
-    if (responding_ == nullptr) send_response();
+    next_response(this);
   } else if (access.payload == nullptr) {
     recycle(access);
   } else {
     done_.notify();
   }
+}
+
+void CoherentCache::Arbitrated::next_response(Arbitrated*) {
+  if (responding_ == nullptr && !responses_.empty()) send_response();
 }
 
 void CoherentCache::Arbitrated::send_response() {
@@ -217,6 +223,7 @@ void CoherentCache::Arbitrated::send_response() {
     return;
   }
   end_response(time);
+  next_response(this);
 }
 
 void CoherentCache::Arbitrated::end_response(const sc_core::sc_time& time) {
@@ -224,7 +231,12 @@ void CoherentCache::Arbitrated::end_response(const sc_core::sc_time& time) {
   if (time == sc_core::SC_ZERO_TIME)
     response_ended(responding_);
   else
-    agenda_.at<&Arbitrated::response_ended>(now_ps() + to_ps(time), this, responding_);
+    agenda_.at<&Arbitrated::response_ended_later>(now_ps() + to_ps(time), this, responding_);
+}
+
+void CoherentCache::Arbitrated::response_ended_later(Access* access) {
+  response_ended(access);
+  next_response(this);
 }
 
 void CoherentCache::Arbitrated::response_ended(Access* access) {
@@ -236,7 +248,6 @@ void CoherentCache::Arbitrated::response_ended(Access* access) {
   response_ending_ = false;
   recycle(*access);
   if (payload.has_mm()) payload.release();
-  if (responding_ == nullptr && !responses_.empty()) send_response();
 }
 
 // The access has its place, in its last line: the initiator may send the next one, which cannot pass it.

@@ -100,9 +100,11 @@ class CoherentCache::Arbitrated {
   void next_piece(Access& access);
   void complete(Access& access);
   void recycle(Access& access);
+  void next_response(Arbitrated*);
   void send_response();
   void end_response(const sc_core::sc_time& time);
   void response_ended(Access* access);
+  void response_ended_later(Access* access);
   void end_request(Access& access);
   tlm::tlm_sync_enum misuse(const std::string& what) const;
 
