@@ -1,8 +1,9 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// A BaseProtocolObserver stands between an initiator socket and a target socket, passes every call on unchanged and at
-// once, and has BaseProtocolRules judge it. Any width. Whoever holds it asks rules() at the end.
+// A BaseProtocolObserver stands between an initiator socket and a target socket, passes every call on
+// unchanged and at once, and has BaseProtocolRules judge it. Any width. Whoever holds it asks rules() at the
+// end.
 #pragma once
 
 #include <functional>
@@ -39,7 +40,8 @@ class BaseProtocolObserver : public sc_core::sc_module,
 
   // Keeps a payload alive until its call has been judged.
   struct Held {
-    explicit Held(tlm::tlm_generic_payload& held) : payload(held), counted(held.has_mm() && held.get_ref_count() > 0) {
+    explicit Held(tlm::tlm_generic_payload& held)
+        : payload(held), counted(held.has_mm() && held.get_ref_count() > 0) {
       if (counted) payload.acquire();
     }
     ~Held() {
@@ -78,9 +80,16 @@ class BaseProtocolObserver : public sc_core::sc_module,
     const bool request = phase == tlm::BEGIN_REQ;
     if (request) tell(payload, true);
     const auto call = rules_.forward(payload, phase, instant(time));
-    const tlm::tlm_sync_enum status = initiator_socket->nb_transport_fw(payload, phase, time);
+    tlm::tlm_sync_enum status = tlm::TLM_ACCEPTED;
+    try {
+      status = initiator_socket->nb_transport_fw(payload, phase, time);
+    } catch (...) {
+      BaseProtocolRules::forward_thrown();
+      throw;
+    }
     rules_.forward_returns(call, payload, status, phase, instant(time));
-    const bool answered = status == tlm::TLM_COMPLETED || (status == tlm::TLM_UPDATED && phase == tlm::BEGIN_RESP);
+    const bool answered =
+        status == tlm::TLM_COMPLETED || (status == tlm::TLM_UPDATED && phase == tlm::BEGIN_RESP);
     if (request && answered) tell(payload, false);
     return status;
   }
@@ -90,7 +99,13 @@ class BaseProtocolObserver : public sc_core::sc_module,
     const Held held(payload);
     if (phase == tlm::BEGIN_RESP) tell(payload, false);
     const auto call = rules_.backward(payload, phase, instant(time));
-    const tlm::tlm_sync_enum status = target_socket->nb_transport_bw(payload, phase, time);
+    tlm::tlm_sync_enum status = tlm::TLM_ACCEPTED;
+    try {
+      status = target_socket->nb_transport_bw(payload, phase, time);
+    } catch (...) {
+      BaseProtocolRules::backward_thrown();
+      throw;
+    }
     rules_.backward_returns(call, payload, status, phase, instant(time));
     return status;
   }

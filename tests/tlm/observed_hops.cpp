@@ -1,8 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// The observer as a module: it passes everything on, at every width, and what it says of a target that breaks a rule
-// reaches the test.
+// The observer as a module: it passes everything on, at every width, and what it says of a target that breaks
+// a rule reaches the test.
 #include <catch2/catch.hpp>
 
 #include "simulated.h"
@@ -92,6 +92,12 @@ void pass_everything_on() {
 
 }  // namespace
 
-TEST_CASE("an observer on a 32-bit hop passes everything on and tells what is broken") { pass_everything_on<32>(); }
-TEST_CASE("an observer on a 64-bit hop passes everything on and tells what is broken") { pass_everything_on<64>(); }
-TEST_CASE("an observer on a 128-bit hop passes everything on and tells what is broken") { pass_everything_on<128>(); }
+TEST_CASE("an observer on a 32-bit hop passes everything on and tells what is broken") {
+  pass_everything_on<32>();
+}
+TEST_CASE("an observer on a 64-bit hop passes everything on and tells what is broken") {
+  pass_everything_on<64>();
+}
+TEST_CASE("an observer on a 128-bit hop passes everything on and tells what is broken") {
+  pass_everything_on<128>();
+}

@@ -1,8 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// Every rule of the base-protocol observer, kept and broken: what keeps the rules is met with silence, and each rule
-// has a case that breaks it and nothing else.
+// Every rule of the base-protocol observer, kept and broken: what keeps the rules is met with silence, and
+// each rule has a case that breaks it and nothing else.
 #include <array>
 #include <catch2/catch.hpp>
 #include <set>
@@ -49,12 +49,14 @@ struct Hop {
 
   void forward(Payload& payload, tlm::tlm_phase phase, tlm::tlm_sync_enum status = tlm::TLM_ACCEPTED) {
     const auto call = book.forward(payload, phase, at);
-    book.forward_returns(call, payload, status, answer == tlm::UNINITIALIZED_PHASE ? phase : answer, returned);
+    book.forward_returns(call, payload, status, answer == tlm::UNINITIALIZED_PHASE ? phase : answer,
+                         returned);
   }
   void backward(Payload& payload, tlm::tlm_phase phase, tlm::tlm_sync_enum status = tlm::TLM_ACCEPTED) {
     if (phase == tlm::BEGIN_RESP) payload.set_response_status(tlm::TLM_OK_RESPONSE);
     const auto call = book.backward(payload, phase, at);
-    book.backward_returns(call, payload, status, answer == tlm::UNINITIALIZED_PHASE ? phase : answer, returned);
+    book.backward_returns(call, payload, status, answer == tlm::UNINITIALIZED_PHASE ? phase : answer,
+                          returned);
   }
   void blocking(Payload& payload, tlm::tlm_response_status status = tlm::TLM_OK_RESPONSE) {
     const auto call = book.blocking(payload, at);
@@ -64,8 +66,8 @@ struct Hop {
   // Exactly this, once.
   bool only(Rule rule, Side by) const {
     for (const auto& broken : book.broken()) UNSCOPED_INFO(broken.text);
-    return book.broken().size() == 1 && book.broken().front().rule == rule && book.broken().front().by == by &&
-           book.count(rule, by) == 1;
+    return book.broken().size() == 1 && book.broken().front().rule == rule &&
+           book.broken().front().by == by && book.count(rule, by) == 1;
   }
   bool silent() const {
     for (const auto& broken : book.broken()) UNSCOPED_INFO(broken.text);
@@ -143,9 +145,11 @@ TEST_CASE("the observer is silent about everything the base protocol allows") {
     dmi.set_start_address(0);
     dmi.set_end_address(0xff);
     dmi.allow_read_write();
-    hop.book.direct_memory_returns(hop.book.direct_memory(hop.read, hop.at), hop.read, true, dmi, hop.returned);
+    hop.book.direct_memory_returns(hop.book.direct_memory(hop.read, hop.at), hop.read, true, dmi,
+                                   hop.returned);
     dmi.init();
-    hop.book.direct_memory_returns(hop.book.direct_memory(hop.write, hop.at), hop.write, false, dmi, hop.returned);
+    hop.book.direct_memory_returns(hop.book.direct_memory(hop.write, hop.at), hop.write, false, dmi,
+                                   hop.returned);
     hop.book.invalidation(0x10, 0x10);
     hop.book.debug_returns(hop.book.debug(hop.write, hop.at), hop.write, 8, hop.returned);
   }
@@ -260,7 +264,9 @@ TEST_CASE("the observer sees a payload used again too early") {
     hop.backward(hop.read, tlm::END_REQ);
     hop.forward(hop.read, tlm::BEGIN_REQ);
   }
-  SECTION("by b_transport") { hop.blocking(hop.read); }
+  SECTION("by b_transport") {
+    hop.blocking(hop.read);
+  }
   CHECK(hop.only(Rule::payload_in_use, Side::initiator));
 }
 
@@ -278,6 +284,15 @@ TEST_CASE("the observer sees a call on the other path from within a call") {
     hop.book.forward_returns(call, hop.read, tlm::TLM_ACCEPTED, tlm::BEGIN_REQ, hop.returned);
     CHECK(hop.only(Rule::nested_paths, Side::target));
   }
+  SECTION("backward within forward of another hop") {
+    Hop upstream;
+    hop.forward(hop.read, tlm::BEGIN_REQ);
+    const auto call = upstream.book.forward(upstream.read, tlm::BEGIN_REQ, hop.at);
+    hop.backward(hop.read, tlm::END_REQ);
+    upstream.book.forward_returns(call, upstream.read, tlm::TLM_ACCEPTED, tlm::BEGIN_REQ, hop.returned);
+    CHECK(upstream.silent());
+    CHECK(hop.only(Rule::nested_paths, Side::target));
+  }
   SECTION("forward within backward") {
     hop.forward(hop.read, tlm::BEGIN_REQ);
     const auto call = hop.book.backward(hop.read, tlm::END_REQ, hop.at);
@@ -290,12 +305,15 @@ TEST_CASE("the observer sees a call on the other path from within a call") {
 TEST_CASE("the observer sees a wait where none may be") {
   Hop hop;
   hop.returned.delta = 8;
-  SECTION("in nb_transport_fw") { hop.forward(hop.read, tlm::BEGIN_REQ); }
+  SECTION("in nb_transport_fw") {
+    hop.forward(hop.read, tlm::BEGIN_REQ);
+  }
   SECTION("in transport_dbg") {
     hop.book.debug_returns(hop.book.debug(hop.write, hop.at), hop.write, 8, hop.returned);
   }
   SECTION("in get_direct_mem_ptr") {
-    hop.book.direct_memory_returns(hop.book.direct_memory(hop.write, hop.at), hop.write, false, {}, hop.returned);
+    hop.book.direct_memory_returns(hop.book.direct_memory(hop.write, hop.at), hop.write, false, {},
+                                   hop.returned);
   }
   CHECK(hop.only(Rule::non_blocking_waits, Side::target));
 }
@@ -316,12 +334,24 @@ TEST_CASE("the observer sees a target that changes what is the initiator's") {
   Hop hop;
   const auto call = hop.book.blocking(hop.read, hop.at);
   hop.read.set_response_status(tlm::TLM_OK_RESPONSE);
-  SECTION("the command") { hop.read.set_command(tlm::TLM_WRITE_COMMAND); }
-  SECTION("the data pointer") { hop.read.set_data_ptr(hop.write.data.data()); }
-  SECTION("the data length") { hop.read.set_data_length(4); }
-  SECTION("the byte enable pointer") { hop.read.set_byte_enable_ptr(hop.read.enables.data()); }
-  SECTION("the byte enable length") { hop.read.set_byte_enable_length(3); }
-  SECTION("the streaming width") { hop.read.set_streaming_width(4); }
+  SECTION("the command") {
+    hop.read.set_command(tlm::TLM_WRITE_COMMAND);
+  }
+  SECTION("the data pointer") {
+    hop.read.set_data_ptr(hop.write.data.data());
+  }
+  SECTION("the data length") {
+    hop.read.set_data_length(4);
+  }
+  SECTION("the byte enable pointer") {
+    hop.read.set_byte_enable_ptr(hop.read.enables.data());
+  }
+  SECTION("the byte enable length") {
+    hop.read.set_byte_enable_length(3);
+  }
+  SECTION("the streaming width") {
+    hop.read.set_streaming_width(4);
+  }
   hop.book.blocking_returns(call, hop.read, hop.returned);
   CHECK(hop.only(Rule::attributes, Side::target));
 }
@@ -371,10 +401,18 @@ TEST_CASE("the observer sees a response status at the wrong time") {
 
 TEST_CASE("the observer sees a malformed payload") {
   Hop hop;
-  SECTION("no data") { hop.read.set_data_ptr(nullptr); }
-  SECTION("no length") { hop.read.set_data_length(0); }
-  SECTION("a streaming width of 0") { hop.read.set_streaming_width(0); }
-  SECTION("a byte enable length of 0") { hop.read.set_byte_enable_ptr(hop.read.enables.data()); }
+  SECTION("no data") {
+    hop.read.set_data_ptr(nullptr);
+  }
+  SECTION("no length") {
+    hop.read.set_data_length(0);
+  }
+  SECTION("a streaming width of 0") {
+    hop.read.set_streaming_width(0);
+  }
+  SECTION("a byte enable length of 0") {
+    hop.read.set_byte_enable_ptr(hop.read.enables.data());
+  }
   hop.blocking(hop.read);
   CHECK(hop.only(Rule::malformed, Side::initiator));
 }
@@ -436,11 +474,13 @@ TEST_CASE("the observer sees direct memory granted or taken back wrongly") {
   dmi.allow_read();
   SECTION("of another region") {
     dmi.set_end_address(0x3f);
-    hop.book.direct_memory_returns(hop.book.direct_memory(hop.read, hop.at), hop.read, true, dmi, hop.returned);
+    hop.book.direct_memory_returns(hop.book.direct_memory(hop.read, hop.at), hop.read, true, dmi,
+                                   hop.returned);
     CHECK(hop.only(Rule::dmi_region, Side::target));
   }
   SECTION("for the other command") {
-    hop.book.direct_memory_returns(hop.book.direct_memory(hop.write, hop.at), hop.write, true, dmi, hop.returned);
+    hop.book.direct_memory_returns(hop.book.direct_memory(hop.write, hop.at), hop.write, true, dmi,
+                                   hop.returned);
     CHECK(hop.only(Rule::dmi_region, Side::target));
   }
   SECTION("taken back from the end to the begin") {
@@ -460,7 +500,8 @@ TEST_CASE("what the observer says names rule, clause, hop and address") {
   hop.backward(hop.read, tlm::BEGIN_RESP);
   REQUIRE(hop.book.broken().size() == 1);
   CHECK(hop.book.broken().front().text ==
-        "cpu0: the target breaks unknown-payload (IEEE 1666-2011, 15.2.4), read at 0x40: BEGIN_RESP of no transaction");
+        "cpu0: the target breaks unknown-payload (IEEE 1666-2011, 15.2.4), read at 0x40: BEGIN_RESP of no "
+        "transaction");
   std::set<std::string> names;
   for (int i = 0; i < rules; ++i) names.insert(earshot::test::name_of(static_cast<Rule>(i)));
   CHECK(names.size() == rules);
