@@ -7,7 +7,8 @@
 //   stress --accesses N [--seed S] [--runs R]     R runs from seed S on, each of N accesses, each in a process of its own
 //
 // A run's seed decides everything about it; a failure prints it and the command that repeats it. What is checked: the
-// monitor on every access; that the values an initiator receives from a word with one writer never go back; that
+// monitor on every access; the rules of the base protocol on every hop, from an initiator to its cache and from the bus
+// to a target; that the values an initiator receives from a word with one writer never go back; that
 // everything ends; Little's law and the other self-checks; memory after a flush.
 #define SC_INCLUDE_DYNAMIC_PROCESSES
 #include <sys/wait.h>
@@ -33,6 +34,7 @@
 #include "earshot/observe/coherence_monitor.h"
 #include "earshot/timing/agenda.h"
 #include "stress_memory.h"
+#include "tlm/base_protocol_observer.h"
 
 namespace earshot::test {
 namespace {
@@ -298,9 +300,15 @@ void run(Plan plan, std::uint64_t accesses) {
   bus_config.supply_cycles = static_cast<unsigned>(plan.random() % 3);
   SnoopingBus bus("bus", bus_config);
   StressMemory memory(plan.memory, plan.random());
-  bus.window_socket("memory").bind(memory.socket());
   PlainMemory device("device", {});
-  bus.window_socket("device").bind(device.target_socket);
+  std::vector<std::unique_ptr<BaseProtocolObserver<>>> hops;
+  const auto watch = [&](const std::string& name, auto& from, auto& to) {
+    hops.push_back(std::make_unique<BaseProtocolObserver<>>(("hop_of_" + name).c_str(), name));
+    from.bind(hops.back()->target_socket);
+    hops.back()->initiator_socket.bind(to);
+  };
+  watch("memory", bus.window_socket("memory"), memory.socket());
+  watch("device", bus.window_socket("device"), device.target_socket);
 
   CoherenceMonitor monitor(32, [&](std::uint64_t address, std::uint8_t* to, std::size_t length) {
     memory.peek(address, to, length);
@@ -322,7 +330,7 @@ void run(Plan plan, std::uint64_t accesses) {
     caches.back()->set_observer(&monitor);
     initiators.push_back(std::make_unique<Initiator>(("initiator" + std::to_string(i)).c_str(), plan, i,
                                                      accesses / static_cast<unsigned>(plan.caches), *caches.back()));
-    initiators.back()->socket.bind(caches.back()->cpu_socket);
+    watch("initiator" + std::to_string(i), initiators.back()->socket, caches.back()->cpu_socket);
   }
   bool flushed = false;
   sc_core::sc_event flush;
@@ -349,6 +357,10 @@ void run(Plan plan, std::uint64_t accesses) {
     for (const std::string& law : cache->broken_laws()) fail(law);
     const CacheTotals totals = cache->totals();
     if (totals.parts.total() != totals.latency().sum()) fail("the parts of the latencies are not their sum");
+  }
+  for (const auto& hop : hops) {
+    for (const BrokenRule& broken : hop->rules().broken()) fail(broken.text);
+    if (hop->rules().in_flight() != 0) fail("a transaction over " + std::string(hop->name()) + " has not ended");
   }
   memory.check();
 }

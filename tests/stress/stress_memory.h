@@ -80,9 +80,9 @@ class MoodyMemory : public sc_core::sc_module, private tlm::tlm_fw_transport_if<
   }
   void end_request(tlm::tlm_generic_payload* payload) {
     requesting_ = nullptr;
-    later(*payload, 0);
     tlm::tlm_phase phase = tlm::END_REQ;
     sc_core::sc_time time = from_ps(random_() % 2 * 1234);
+    later(*payload, to_ps(time));
     target_socket->nb_transport_bw(*payload, phase, time);
   }
   void respond(tlm::tlm_generic_payload* payload) {
