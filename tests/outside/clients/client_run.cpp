@@ -155,7 +155,7 @@ void choose(int argc, char* argv[]) {
               : place == "instead" ? ClientRun::Place::instead
                                    : ClientRun::Place::uncached;
   run.protocol = argv[2];
-  run.bus.timing = std::string(argv[3]) == "arbitrated" ? BusTiming::arbitrated : BusTiming::annotated;
+  run.timing = std::string(argv[3]) == "arbitrated" ? BusTiming::arbitrated : BusTiming::annotated;
   run.monitor = std::make_unique<CoherenceMonitor>(
       CacheConfig{}.geometry.line_bytes, [](std::uint64_t address, std::uint8_t* to, std::size_t length) {
         for (std::size_t i = 0; i < length; ++i) {

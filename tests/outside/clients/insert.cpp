@@ -1,8 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
 //
-// The insertion itself: what an engineer adds to a platform's top. A test counts the lines between the two
-// marks.
+// The insertion itself: what an engineer adds to a platform's top. A test counts the lines between the marks.
+// Outside of them is what only the test needs: its choice of timing and kind of cache, and the monitor.
 #include "outside/clients/insertion.h"
 // insertion begins
 #include "earshot/bus/snooping_bus.h"
@@ -12,10 +12,6 @@
 
 namespace earshot::test {
 namespace {
-
-std::string window(std::size_t target) {
-  return "target" + std::to_string(target);
-}
 
 std::unique_ptr<CoherentCache> make_cache(std::size_t number, const CacheConfig& config) {
   const std::string name = "cache" + std::to_string(number);
@@ -27,20 +23,27 @@ std::unique_ptr<CoherentCache> make_cache(std::size_t number, const CacheConfig&
 
 void ClientRun::insert(const std::vector<tlm::tlm_initiator_socket<>*>& initiators,
                        const std::vector<tlm::tlm_target_socket<>*>& targets, unsigned shift) {
+  const auto window = [&](std::uint64_t j) {
+    const bool cached = place != Place::uncached;
+    return Window{"target" + std::to_string(j), j << shift, std::uint64_t{1} << shift, cached, 0};
+  };
   // insertion goes on
-  for (std::uint64_t j = 0; j < targets.size(); ++j)
-    bus.windows.push_back({window(j), j << shift, std::uint64_t{1} << shift, place != Place::uncached, 0});
-  snooping_bus = std::make_unique<SnoopingBus>("snooping_bus", bus);
-  for (std::size_t j = 0; j < targets.size(); ++j) snooping_bus->window_socket(window(j)).bind(*targets[j]);
-  CacheConfig cache;
-  cache.table = std::make_shared<const Table>(load_table(protocol));
+  SnoopingBusConfig bus_config;
+  for (std::size_t j = 0; j < targets.size(); ++j) bus_config.windows.push_back(window(j));
+  // insertion pauses
+  bus_config.timing = timing;
+  // insertion goes on
+  SnoopingBus& bus = *(snooping_bus = std::make_unique<SnoopingBus>("snooping_bus", bus_config));
+  for (std::size_t j = 0; j < targets.size(); ++j) bus.window_socket(window(j).name).bind(*targets[j]);
+  CacheConfig cache_config;
+  cache_config.table = std::make_shared<const Table>(load_table(protocol));
   for (std::size_t i = 0; i < initiators.size(); ++i) {
-    caches.push_back(make_cache(i, cache));
-    caches[i]->bus_socket.bind(snooping_bus->cache_socket);
-    initiators[i]->bind(caches[i]->cpu_socket);
+    CoherentCache& cache = *caches.emplace_back(make_cache(i, cache_config));
+    cache.bus_socket.bind(bus.cache_socket);
+    initiators[i]->bind(cache.cpu_socket);
   }
   // insertion ends
-  for (const auto& each : caches) each->set_observer(monitor.get());
+  for (const auto& cache : caches) cache->set_observer(monitor.get());
 }
 
 }  // namespace earshot::test

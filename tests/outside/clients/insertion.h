@@ -25,7 +25,7 @@ namespace earshot::test {
 struct ClientRun {
   enum class Place { original, instead, before, uncached } place = Place::original;
   std::string protocol;
-  SnoopingBusConfig bus;  // timing
+  BusTiming timing = BusTiming::annotated;
 
   std::unique_ptr<SnoopingBus> snooping_bus;
   std::vector<std::unique_ptr<CoherentCache>> caches;
