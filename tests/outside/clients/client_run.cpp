@@ -42,8 +42,12 @@ std::string read_text(std::uint64_t address, const std::uint8_t* data, unsigned 
   return text.str();
 }
 
-// A read by direct memory passes no hop; dmi_memory.cpp reports it.
-void hear_direct_read(const std::string& text) {
+unsigned direct_accesses = 0;
+
+// An access by direct memory passes no hop; dmi_memory.cpp reports it.
+void hear_direct_access(const std::string& text) {
+  if (text.find("COMMAND:") == std::string::npos) return;
+  ++direct_accesses;
   unsigned initiator = 0, data = 0;
   unsigned long long address = 0;
   if (std::sscanf(text.c_str(), "%*[^I]ID: %u COMMAND: READ Length: 04 Addr: 0x%llx Data: 0x%x", &initiator,
@@ -60,7 +64,7 @@ void hear(const sc_core::sc_report& report, const sc_core::sc_actions& actions) 
   if (report.get_severity() == sc_core::SC_INFO) {
     if (text.find("####") != std::string::npos)
       client_run().verdicts.push_back(one_line(text.substr(text.find('\n') + 1)));
-    if (std::string(report.get_msg_type()) == "dmi_memory.cpp") hear_direct_read(one_line(text));
+    if (std::string(report.get_msg_type()) == "dmi_memory.cpp") hear_direct_access(one_line(text));
     return;
   }
   client_run().verdicts.push_back(std::string("severity ") + std::to_string(report.get_severity()) + ": " +
@@ -128,6 +132,7 @@ void ClientRun::print() const {
                 << name_of(broken.rule) << ": " << broken.text << '\n';
     if (hop->rules().in_flight() != 0) std::cout << "@unfinished " << hop->name() << '\n';
   }
+  std::cout << "@direct " << direct_accesses << '\n';
   if (monitor == nullptr || caches.empty()) return;
   CacheTotals totals;
   for (const auto& cache : caches) {

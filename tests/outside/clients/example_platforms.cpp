@@ -118,6 +118,11 @@ void nothing_changes_with_caches(const Example& example) {
   CHECK(begun(outcome.lines, "@monitored").size() == 1);
   CHECK(begun(outcome.lines, "@monitored 0").empty() == (place != "uncached"));
 
+  // Direct memory: refused by caches, granted where there are none, for the same accesses or not.
+  const bool direct = begun(original.lines, "@direct 0").empty();
+  CHECK(direct == (std::string(example.name) == "lt_dmi"));
+  CHECK(begun(outcome.lines, "@direct 0").empty() == (direct && place == "uncached"));
+
   // By us: as the target of an initiator, as the initiator of a target or of their interconnect.
   std::vector<std::string> ours = begun(outcome.lines, "@target initiator");
   for (const char* const hop : {"@initiator target", "@initiator their-bus"}) {
