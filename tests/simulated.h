@@ -16,6 +16,7 @@
 #include <tlm_utils/simple_target_socket.h>
 #include <vector>
 
+#include "earshot/bus/io_port.h"
 #include "earshot/bus/snooping_bus.h"
 #include "earshot/cache/invalidating_cache.h"
 #include "earshot/cache/updating_cache.h"
@@ -105,6 +106,7 @@ struct SystemOptions {
   bool watched = true;
   SnoopingBusConfig bus{};   // but for the windows
   CacheConfig cache{};       // but for geometry and table
+  int io_ports = 0;
 };
 
 // Caches on a bus, a PlainMemory behind every window, a driver before every cache, the monitor watching.
@@ -131,14 +133,23 @@ class System {
       drivers.push_back(std::make_unique<Driver>(("driver" + number).c_str()));
       drivers.back()->socket.bind(caches.back()->cpu_socket);
     }
+    for (int i = 0; i < options.io_ports; ++i) {
+      const std::string number = std::to_string(i);
+      io_ports.push_back(std::make_unique<IoPort>(("io" + number).c_str()));
+      io_ports.back()->bus_socket.bind(bus->cache_socket);
+      devices.push_back(std::make_unique<Driver>(("device" + number).c_str()));
+      devices.back()->socket.bind(io_ports.back()->io_socket);
+    }
     if (!options.watched) return;
     monitor = std::make_unique<CoherenceMonitor>(
         options.geometry.line_bytes, [this](std::uint64_t address, std::uint8_t* to, std::size_t length) {
           memories[static_cast<std::size_t>(bus->address_map().find(address, length))]->peek(address, to, length);
         });
     for (const auto& cache : caches) cache->set_observer(monitor.get());
+    for (const auto& port : io_ports) port->set_observer(monitor.get());
   }
 
+  Driver& device(int i) { return *devices[static_cast<std::size_t>(i)]; }
   Driver& cpu(int i) { return *drivers[static_cast<std::size_t>(i)]; }
   CoherentCache& cache(int i) { return *caches[static_cast<std::size_t>(i)]; }
   std::uint32_t in_memory(std::uint64_t address) const {
@@ -157,6 +168,8 @@ class System {
   std::vector<std::unique_ptr<PlainMemory>> memories;
   std::vector<std::unique_ptr<CoherentCache>> caches;
   std::vector<std::unique_ptr<Driver>> drivers;
+  std::vector<std::unique_ptr<IoPort>> io_ports;
+  std::vector<std::unique_ptr<Driver>> devices;  // before the I/O ports
   std::unique_ptr<CoherenceMonitor> monitor;
 };
 

@@ -3,8 +3,11 @@
 //
 // Annotated timing of the SnoopingBus.
 #include <algorithm>
+#include <array>
 #include <cstring>
 
+#include "earshot/bus/access_request.h"
+#include "earshot/bus/copy_bytes.h"
 #include "earshot/bus/line_times.h"
 #include "earshot/bus/snooping_bus.h"
 
@@ -112,8 +115,11 @@ bool SnoopingBus::memory_phase(BusTransaction& transaction, Snoop& snoop, const 
       if (transaction.status == tlm::TLM_OK_RESPONSE) ++totals_.block_writes;
       break;
     case BusKind::io_read:
+      io_read(transaction, snoop, hold, time);
+      break;
     case BusKind::io_write:
-      break;  // never here: pass_through()
+      io_write(transaction, snoop, hold, time);
+      break;
   }
   return transaction.status == tlm::TLM_OK_RESPONSE;
 }
@@ -156,6 +162,54 @@ void SnoopingBus::fetch_line(BusTransaction& transaction, Snoop& snoop, const Ho
   }
 }
 
+// An I/O port's read: the bytes alone, from the owner or else from memory.
+void SnoopingBus::io_read(BusTransaction& transaction, Snoop& snoop, const Hold& hold, Picoseconds& time) {
+  if (snoop.supplied == nullptr) {
+    access_memory(tlm::TLM_READ_COMMAND, transaction.line + transaction.offset, transaction.line_data, transaction.length,
+                  transaction.byte_enable, time, transaction.parts, transaction.status);
+    if (transaction.status != tlm::TLM_OK_RESPONSE) {
+      let_go(hold, time);
+      return;
+    }
+    count_memory(transaction, transaction.length == line_bytes_);
+    snoop = ask_others(transaction);  // if memory waited, a copy may have been written silently
+  } else {
+    time += cycles(config_.supply_cycles);
+    transaction.parts[LatencyPart::owner_supply] += cycles(config_.supply_cycles);
+  }
+  if (snoop.supplied != nullptr)
+    copy_enabled(transaction.line_data, snoop.supplied + transaction.offset, transaction.length, transaction.byte_enable);
+  data_phase(transaction.kind, transaction.length, hold, time, transaction.parts);
+}
+
+// An I/O port's write: to memory, and commit_others() gives it to the copies or ends them. If memory waits, a copy that
+// ends may be written silently meanwhile: then memory takes the line once more.
+void SnoopingBus::io_write(BusTransaction& transaction, Snoop& snoop, const Hold& hold, Picoseconds& time) {
+  std::array<std::uint8_t, 256> line, newer;
+  bool whole = merged(transaction, snoop, line.data());
+  if (whole) {
+    time += cycles(config_.supply_cycles);
+    transaction.parts[LatencyPart::owner_supply] += cycles(config_.supply_cycles);
+  }
+  data_phase(transaction.kind, whole ? line_bytes_ : transaction.length, hold, time, transaction.parts);
+  for (;;) {
+    if (whole)
+      access_memory(tlm::TLM_WRITE_COMMAND, transaction.line, line.data(), line_bytes_, nullptr, time, transaction.parts,
+                    transaction.status);
+    else
+      access_memory(tlm::TLM_WRITE_COMMAND, transaction.line + transaction.offset,
+                    const_cast<std::uint8_t*>(transaction.word), transaction.length, transaction.byte_enable, time,
+                    transaction.parts, transaction.status);
+    if (transaction.status != tlm::TLM_OK_RESPONSE) return;
+    count_memory(transaction, whole || transaction.length == line_bytes_);
+    snoop = ask_others(transaction);
+    if (!merged(transaction, snoop, newer.data())) return;
+    if (whole && std::memcmp(line.data(), newer.data(), line_bytes_) == 0) return;
+    whole = true;
+    line = newer;
+  }
+}
+
 // The least time the bus is needed: what a gap of a connected bus must have room for. How long memory will take is not
 // known before it is asked.
 unsigned SnoopingBus::data_bytes(const BusTransaction& transaction) const {
@@ -164,6 +218,8 @@ unsigned SnoopingBus::data_bytes(const BusTransaction& transaction) const {
       return 0;
     case BusKind::update:
     case BusKind::write_through:
+    case BusKind::io_read:
+    case BusKind::io_write:
       return transaction.length;
     default:
       return line_bytes_;
@@ -266,7 +322,7 @@ void SnoopingBus::pass_through(tlm::tlm_generic_payload& payload, sc_core::sc_ti
 
   const Hold hold = address_phase(kind, payload.get_data_length(), nullptr, time, parts);
   const int window =
-      map_.find(payload.get_address(), std::min(payload.get_data_length(), payload.get_streaming_width()));
+      map_.find(payload.get_address(), extent_of(payload));
   if (kind == BusKind::io_write) data_phase(kind, payload.get_data_length(), hold, time, parts);
   access_target(window, payload, time, parts);
   if (kind == BusKind::io_read) data_phase(kind, payload.get_data_length(), hold, time, parts);

@@ -1,6 +1,8 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
+#include "earshot/bus/access_request.h"
 #include "earshot/bus/arbitrated_bus.h"
+#include "earshot/bus/copy_bytes.h"
 
 #include <algorithm>
 #include <cstring>
@@ -94,6 +96,7 @@ bool SnoopingBus::Arbitrated::grant(const RequestQueue::Request& request) {
   active.transaction = &transaction;
   active.kind = transaction.kind;
   active.line = transaction.line;
+  active.uncached = transaction.io != nullptr;
   active.port = port;
   active.granted = now;
   requests_.lock(transaction);
@@ -138,20 +141,13 @@ void SnoopingBus::Arbitrated::enter(Active& active, Stage stage) {
 
 void SnoopingBus::Arbitrated::begin(Active& active) {
   BusTransaction& transaction = *active.transaction;
-  switch (active.kind) {
-    case BusKind::io_read:
-      need_memory(active, tlm::TLM_READ_COMMAND, nullptr, 0, transaction.timeline.end());
-      return;
-    case BusKind::io_write:
-      active.bytes = transaction.io->get_data_length();
-      need_data_bus(active, transaction.timeline.end());
-      return;
-    case BusKind::write_back:
-      active.bytes = bus_.line_bytes_;
-      need_data_bus(active, transaction.timeline.end());
-      return;
-    default:
-      snoop(active);
+  if (active.kind == BusKind::write_back || (active.uncached && active.kind == BusKind::io_write)) {
+    active.bytes = active.uncached ? transaction.io->get_data_length() : bus_.line_bytes_;
+    need_data_bus(active, transaction.timeline.end());
+  } else if (active.uncached) {
+    need_memory(active, tlm::TLM_READ_COMMAND, nullptr, 0, transaction.timeline.end());
+  } else {
+    snoop(active);
   }
 }
 
@@ -168,6 +164,10 @@ void SnoopingBus::Arbitrated::snoop(Active& active) {
     return;
   }
   const Snoop snoop = bus_.ask_others(transaction);
+  if (active.kind == BusKind::io_read || active.kind == BusKind::io_write) {
+    active.kind == BusKind::io_read ? io_read(active, snoop) : io_write(active, snoop);
+    return;
+  }
   const bool fetch = active.kind == BusKind::read || active.kind == BusKind::read_exclusive;
   if (fetch) {
     active.bytes = bus_.line_bytes_;
@@ -196,6 +196,40 @@ void SnoopingBus::Arbitrated::snoop(Active& active) {
   } else {
     agenda_.at<&Arbitrated::snoop_ended>(snooped, this, &active);
   }
+}
+
+// An I/O port's read: the bytes alone, from the owner or else from memory.
+void SnoopingBus::Arbitrated::io_read(Active& active, const Snoop& snoop) {
+  BusTransaction& transaction = *active.transaction;
+  Timeline& timeline = transaction.timeline;
+  active.bytes = transaction.length;
+  if (snoop.supplied == nullptr) {
+    commit(active, snoop);
+    need_memory(active, tlm::TLM_READ_COMMAND, transaction.line_data, transaction.length, timeline.end());
+    return;
+  }
+  copy_enabled(transaction.line_data, snoop.supplied + transaction.offset, transaction.length, transaction.byte_enable);
+  commit(active, snoop);
+  active.effected = true;
+  bus_.caches_[static_cast<std::size_t>(active.port)]->effected(transaction);
+  timeline.spend(LatencyPart::owner_supply, timeline.end() + bus_.cycles(bus_.config_.supply_cycles));
+  need_data_bus(active, timeline.end());
+}
+
+// An I/O port's write: memory takes the word, or the line of an owner that goes with the word in it.
+void SnoopingBus::Arbitrated::io_write(Active& active, const Snoop& snoop) {
+  BusTransaction& transaction = *active.transaction;
+  Timeline& timeline = transaction.timeline;
+  active.memory_takes_line = bus_.merged(transaction, snoop, active.buffer.data());
+  if (active.memory_takes_line)
+    timeline.spend(LatencyPart::owner_supply, timeline.end() + bus_.cycles(bus_.config_.supply_cycles));
+  else
+    std::memcpy(active.buffer.data(), transaction.word, transaction.length);
+  active.bytes = active.memory_takes_line ? bus_.line_bytes_ : transaction.length;
+  commit(active, snoop);
+  active.effected = true;
+  bus_.caches_[static_cast<std::size_t>(active.port)]->effected(transaction);
+  need_data_bus(active, timeline.end());
 }
 
 void SnoopingBus::Arbitrated::commit(Active& active, const Snoop& snoop) {
@@ -258,9 +292,15 @@ void SnoopingBus::Arbitrated::transferred(Active* active) {
       need_memory(*active, tlm::TLM_WRITE_COMMAND, transaction.line_data, bus_.line_bytes_, now);
       return;
     case BusKind::io_write:
-      need_memory(*active, tlm::TLM_WRITE_COMMAND, nullptr, 0, now);
+      need_memory(*active, tlm::TLM_WRITE_COMMAND, active->buffer.data(), active->bytes, now);
       return;
     case BusKind::io_read:
+      if (!active->uncached && !active->effected) {  // a copy may have been written silently since the grant
+        if (const Snoop snoop = bus_.ask_others(transaction); snoop.supplied != nullptr)
+          copy_enabled(transaction.line_data, snoop.supplied + transaction.offset, transaction.length,
+                       transaction.byte_enable);
+        bus_.caches_[static_cast<std::size_t>(active->port)]->effected(transaction);
+      }
       finish(*active, transaction.status);
       settle(*active);
       return;
@@ -322,7 +362,8 @@ void SnoopingBus::Arbitrated::need_memory(Active& active, tlm::tlm_command comma
       if (io.get_extension(i) != nullptr && access.get_extension(i) == nullptr)
         access.set_extension(i, io.get_extension(i));
   } else {
-    const bool word = active.kind == BusKind::write_through;
+    const bool word = active.kind == BusKind::write_through || active.kind == BusKind::io_read ||
+                      (active.kind == BusKind::io_write && !active.memory_takes_line);
     access.set_address(active.line + (word ? transaction->offset : 0));
     access.set_data_ptr(data);
     access.set_data_length(length);
@@ -332,8 +373,7 @@ void SnoopingBus::Arbitrated::need_memory(Active& active, tlm::tlm_command comma
     access.set_byte_enable_length(enable == nullptr ? 0 : length);
   }
   enter(active, active.transaction == nullptr ? Stage::memory_write : Stage::memory);
-  const int window = bus_.map_.find(access.get_address(), std::min(access.get_data_length(),
-                                                                   access.get_streaming_width()));
+  const int window = bus_.map_.find(access.get_address(), extent_of(access));
   bus_.targets_[static_cast<std::size_t>(window)]->send(access);
 }
 
@@ -388,9 +428,17 @@ void SnoopingBus::Arbitrated::memory_done(Active* active) {
       break;
     case BusKind::io_read:
       transaction->status = status;
-      active->bytes = transaction->io->get_data_length();
-      need_data_bus(*active, access.ended);
-      return;
+      if (active->uncached) active->bytes = transaction->io->get_data_length();
+      if (active->uncached || accepted) {
+        if (!active->uncached) bus_.count_memory(*transaction, active->bytes == bus_.line_bytes_);
+        need_data_bus(*active, access.ended);
+        return;
+      }
+      let_go(*active);
+      break;
+    case BusKind::io_write:
+      if (!active->uncached && accepted) bus_.count_memory(*transaction, active->bytes == bus_.line_bytes_);
+      break;
     case BusKind::write_through:
       if (!accepted) break;
       ++bus_.totals_.word_writes;
@@ -429,7 +477,7 @@ void SnoopingBus::Arbitrated::finish(Active& active, tlm::tlm_response_status st
 
 // Memory has all that belongs to the transaction: the next one for its line may be granted.
 void SnoopingBus::Arbitrated::settle(Active& active) {
-  if (active.kind < BusKind::io_read) {
+  if (!active.uncached) {
     requests_.unlock(active.line);
     bus_.caches_[static_cast<std::size_t>(active.port)]->settled(active.line);
   } else {
@@ -446,7 +494,7 @@ void SnoopingBus::Arbitrated::settle(Active& active) {
 PresenceIndex::Mask SnoopingBus::Arbitrated::requesters(std::uint64_t line) const {
   PresenceIndex::Mask ports = 0;
   for (const Active* active : active_)
-    if (active->line == line && active->kind < BusKind::io_read) ports |= PresenceIndex::Mask{1} << active->port;
+    if (active->line == line && !active->uncached) ports |= PresenceIndex::Mask{1} << active->port;
   return ports;
 }
 
@@ -454,15 +502,18 @@ void SnoopingBus::Arbitrated::debug(bool write, std::uint64_t address, std::uint
   for (Active* active : active_) {
     std::uint64_t first = active->line;
     std::uint64_t size = 0;
+    const std::uint8_t* enable = nullptr;
+    const bool io = active->kind == BusKind::io_write && !active->uncached;
     if (active->memory_takes_line) {
       size = bus_.line_bytes_;
-    } else if (write && active->kind == BusKind::write_through && active->transaction != nullptr) {
+    } else if (active->transaction != nullptr && (io || (write && active->kind == BusKind::write_through))) {
       first += active->transaction->offset;
       size = active->transaction->length;
+      enable = active->transaction->byte_enable;
     }
     for (std::uint64_t i = 0; i < size; ++i) {
       const std::uint64_t at = first + i - address;
-      if (at >= length) continue;
+      if (at >= length || (enable != nullptr && enable[i] != TLM_BYTE_ENABLED)) continue;
       if (write)
         active->buffer[i] = bytes[at];
       else

@@ -49,6 +49,7 @@ class SnoopingBus::Arbitrated {
     BusKind kind = BusKind::read;           // of it, and
     std::uint64_t line = 0;
     int port = 0;
+    bool uncached = false;                  // of a window without caching: it has no line
     bool effected = false;
     bool memory_takes_line = false;
     Stage stage = Stage::snoop;
@@ -72,6 +73,8 @@ class SnoopingBus::Arbitrated {
   void plan_transfer();
   void transferred(Active* active);
   void need_memory(Active& active, tlm::tlm_command command, std::uint8_t* data, unsigned length, Picoseconds ready);
+  void io_read(Active& active, const Snoop& snoop);
+  void io_write(Active& active, const Snoop& snoop);
   void memory_done(Active* active);
   void finish(Active& active, tlm::tlm_response_status status);
   void settle(Active& active);

@@ -6,6 +6,7 @@
 #include <cstring>
 
 #include "earshot/bus/arbitrated_bus.h"
+#include "earshot/bus/copy_bytes.h"
 #include "earshot/bus/line_times.h"
 #include "earshot/timing/kernel.h"
 #include "earshot/version_check.h"
@@ -74,14 +75,28 @@ void SnoopingBus::end_of_elaboration() {
                     "; the models need 1 ps, the default");
   if (cache_socket.size() > 64)
     found.push_back(std::to_string(cache_socket.size()) + " caches are bound; one bus takes at most 64");
+  int io_port = -1, first_cache = -1;
   for (int port = 0; port < cache_socket.size() && found.empty(); ++port) {
     caches_.push_back(cache_socket[port]);
     const unsigned line = caches_.back()->attached(port, map_, config_.timing);
-    if (port == 0) line_bytes_ = line;
+    if (line == 0) {
+      io_port = port;
+      continue;
+    }
+    if (line_bytes_ == 0) {
+      line_bytes_ = line;
+      first_cache = port;
+    }
     if (line != line_bytes_)
       found.push_back("the cache at port " + std::to_string(port) + " has lines of " + std::to_string(line) +
-                      " bytes, the one at port 0 of " + std::to_string(line_bytes_) + ": one bus, one line size");
+                      " bytes, the one at port " + std::to_string(first_cache) + " of " + std::to_string(line_bytes_) +
+                      ": one bus, one line size");
   }
+  if (line_bytes_ == 0 && found.empty()) found.push_back("only I/O ports are bound; a bus needs at least one cache");
+  for (std::size_t port = 0; io_port >= 0 && port < caches_.size(); ++port)
+    if (!caches_[port]->serves_io())
+      found.push_back("an I/O port is bound (port " + std::to_string(io_port) + "), but the protocol of the cache at port " +
+                      std::to_string(port) + " has no rows for snoop-io-read and snoop-io-write");
   for (const std::string& problem : map_.problems(line_bytes_)) found.push_back(problem);
   if (arbitrated_ != nullptr && !config_.make_arbiter)
     for (const std::string& problem : config_.arbiter.problems(cache_socket.size())) found.push_back(problem);
@@ -153,6 +168,20 @@ void SnoopingBus::count_supply(const BusTransaction& transaction) {
     case Supplier::sharer: ++totals_.supplied_by_sharer; return;
     default: ++totals_.supplied_by_memory;
   }
+}
+
+void SnoopingBus::count_memory(const BusTransaction& transaction, bool whole_line) {
+  if (transaction.kind == BusKind::io_read)
+    ++(whole_line ? totals_.block_reads : totals_.word_reads);
+  else
+    ++(whole_line ? totals_.block_writes : totals_.word_writes);
+}
+
+bool SnoopingBus::merged(const BusTransaction& transaction, const Snoop& snoop, std::uint8_t* line) const {
+  if (!snoop.write_memory || (transaction.length == line_bytes_ && transaction.byte_enable == nullptr)) return false;
+  std::memcpy(line, snoop.supplied, line_bytes_);
+  copy_enabled(line + transaction.offset, transaction.word, transaction.length, transaction.byte_enable);
+  return true;
 }
 
 SnoopingBus::Snoop SnoopingBus::ask_others(const BusTransaction& transaction) {

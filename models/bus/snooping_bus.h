@@ -103,7 +103,8 @@ struct SnoopingBusTotals {
   std::uint64_t supplied_by_memory = 0;
   std::uint64_t block_reads = 0;     // lines read from memory
   std::uint64_t block_writes = 0;    // lines written to memory: write-backs, and supplies memory takes too
-  std::uint64_t word_writes = 0;     // write-throughs
+  std::uint64_t word_reads = 0;      // I/O ports' reads of less than a line that memory answered
+  std::uint64_t word_writes = 0;     // write-throughs, and I/O ports' writes of less than a line
   Picoseconds address_busy = 0;      // connected: held, from grant to last beat
   Picoseconds data_busy = 0;         // turnaround included
   std::vector<BusPortTotals> ports;
@@ -159,6 +160,7 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface, private
   void request(BusTransaction& transaction) override;
   bool in_flight(std::uint64_t line) const override;
   const std::uint8_t* copy_before_loss(int requester, std::uint64_t line, Picoseconds time) const override;
+  unsigned line_bytes() const override { return line_bytes_; }
   void dropped(int requester, std::uint64_t line) override { presence_.remove(line, requester); }
   unsigned debug(tlm::tlm_generic_payload& payload) override;
   bool direct_memory(tlm::tlm_generic_payload& payload, tlm::tlm_dmi& dmi) override;
@@ -173,6 +175,10 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface, private
   };
   void count(BusKind kind, Picoseconds requested, Picoseconds completed, Picoseconds wait);
   void count_supply(const BusTransaction& transaction);
+  void count_memory(const BusTransaction& transaction, bool whole_line);
+  // An I/O write ends a copy that memory is older than: the line goes to memory with the word in it. Makes it in `line`.
+  // False: the word alone goes.
+  bool merged(const BusTransaction& transaction, const Snoop& snoop, std::uint8_t* line) const;
   Picoseconds cycles(std::uint64_t count) const { return count * period_; }
   std::uint64_t beats(std::uint64_t bytes) const { return (bytes + config_.width_bytes - 1) >> width_shift_; }
   Snoop ask_others(const BusTransaction& transaction);
@@ -185,6 +191,8 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface, private
   };
   bool memory_phase(BusTransaction& transaction, Snoop& snoop, const Hold& hold, Picoseconds& time);
   void fetch_line(BusTransaction& transaction, Snoop& snoop, const Hold& hold, Picoseconds& time);
+  void io_read(BusTransaction& transaction, Snoop& snoop, const Hold& hold, Picoseconds& time);
+  void io_write(BusTransaction& transaction, Snoop& snoop, const Hold& hold, Picoseconds& time);
   unsigned data_bytes(const BusTransaction& transaction) const;
   // Books the address phase / `bytes` of data at or after `time`, and moves `time` to its end.
   Hold address_phase(BusKind kind, unsigned bytes, const Calendar* line, Picoseconds& time, LatencyParts& parts);

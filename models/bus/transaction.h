@@ -35,14 +35,16 @@ struct BusTransaction {
   int requester = 0;               // the port given by SnoopInterface::attached()
   std::uint64_t line = 0;          // the line's address
   std::uint8_t* line_data = nullptr;   // read, read_exclusive: receives the line; write_back: is the line
-  std::uint32_t offset = 0;        // update, write_through: the written bytes are [offset, offset + length) of the line
+  // update, write_through, I/O port's: the bytes in question are [offset, offset + length) of the line. An I/O port's
+  // io_read receives them, alone, in line_data.
+  std::uint32_t offset = 0;
   std::uint32_t length = 0;
-  const std::uint8_t* word = nullptr;          // those bytes
+  const std::uint8_t* word = nullptr;          // those bytes, written
   const std::uint8_t* byte_enable = nullptr;   // null, or one flag a byte: TLM_BYTE_ENABLED or not
   // Arbitrated only: the access's second transaction, asked for before the first one of the line is settled. No other
   // requester's transaction for the line comes between: else two could take the line from each other for ever.
   bool follows_up = false;
-  tlm::tlm_generic_payload* io = nullptr;      // io_read, io_write (arbitrated only): what is passed on
+  tlm::tlm_generic_payload* io = nullptr;      // of an uncached window (arbitrated only): what is passed on
 
   // Set by the bus.
   bool shared = false;             // another cache still holds the line
@@ -87,8 +89,9 @@ class RequestInterface : public virtual sc_core::sc_interface {
 
   // Arbitrated timing: queues the transaction and returns. The requester then hears, never from within this call,
   //   granted()   at its grant, with the bus its own: say what is needed now, or that nothing is;
-  //   effected()  unless it fails, when it takes effect: at the grant, if no memory is asked for data; a fetch from
-  //               memory, when its last beat has come; a write_through, when memory has taken the word;
+  //   effected()  unless it fails, when it takes effect: at the grant, if no memory is asked for data; a fetch or an I/O
+  //               read from memory, when its last beat has come; a write_through, when memory has taken the word. An I/O
+  //               write always at its grant, and it may fail after that;
   //   finished()  when it has its last beat, or memory has the written data;
   //   settled()   when memory has all that belongs to the line and the next transaction for the line may be granted.
   // A requester has at most one transaction for a line queued or under way.
@@ -96,6 +99,8 @@ class RequestInterface : public virtual sc_core::sc_interface {
   // Whether a transaction for the line is under way: granted, not yet settled().
   virtual bool in_flight(std::uint64_t line) const = 0;
 
+  // The line of the caches on the bus. From the bus's end of elaboration on.
+  virtual unsigned line_bytes() const = 0;
   // The cache dropped its copy without a transaction (host bookkeeping; no modelled signal).
   virtual void dropped(int requester, std::uint64_t line) = 0;
   // Coherent debug access, no time, no state change: the owner's bytes, else memory's; writes reach every copy
@@ -110,8 +115,10 @@ class SnoopInterface : public virtual sc_core::sc_interface {
  public:
   using protocol_types = SnoopingBusTypes;
 
-  // Once, at the bus's end of elaboration. `map` lives as long as the bus. Returns the cache's line in bytes.
+  // Once, at the bus's end of elaboration. `map` lives as long as the bus. Returns the cache's line in bytes; 0
+  // from an I/O port, which has none.
   virtual unsigned attached(int port, const AddressMap& map, BusTiming timing) = 0;
+  virtual bool serves_io() const = 0;  // whether its protocol knows of I/O ports
   virtual SnoopAnswer ask(const BusTransaction& transaction) = 0;
   // Changes state as the protocol says and takes the broadcast bytes. Returns whether the copy survives.
   virtual bool commit(const BusTransaction& transaction) = 0;

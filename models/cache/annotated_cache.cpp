@@ -5,26 +5,13 @@
 #include <algorithm>
 #include <cstring>
 
+#include "earshot/bus/held_bus.h"
 #include "earshot/cache/coherent_cache.h"
 
 namespace earshot {
 namespace {
 
 constexpr const char* memory_id = "/earshot/cache/memory";
-
-// Holds the bus for as long as one line's access takes effect.
-class Grant {
- public:
-  explicit Grant(RequestInterface& bus) : bus_(bus), waited_(bus_.acquire()) {}
-  ~Grant() { bus_.release(); }
-  Grant(const Grant&) = delete;
-  Grant& operator=(const Grant&) = delete;
-  bool waited() const { return waited_; }
-
- private:
-  RequestInterface& bus_;
-  bool waited_;
-};
 
 }  // namespace
 
@@ -65,22 +52,22 @@ void CoherentCache::access(tlm::tlm_generic_payload& payload, sc_core::sc_time& 
   payload.set_dmi_allowed(false);
   Progress progress;
   progress.delay = delay;
-  switch (request_of(payload)) {
-    case Request::nothing:
+  switch (request_of(payload, *map_)) {
+    case AccessRequest::nothing:
       payload.set_response_status(tlm::TLM_OK_RESPONSE);
       return;
-    case Request::uncached:
+    case AccessRequest::uncached:
       bus_socket->pass_through(payload, delay, progress.parts);
       ++(payload.is_response_ok() ? totals_.uncached : totals_.errors);
       return;
-    case Request::no_data:
+    case AccessRequest::no_data:
       progress.status = tlm::TLM_BURST_ERROR_RESPONSE;
       break;
-    case Request::no_window:
+    case AccessRequest::no_window:
       progress.status = tlm::TLM_ADDRESS_ERROR_RESPONSE;
       break;
-    case Request::cached: {
-      Pieces pieces(payload, store_.line_bytes());
+    case AccessRequest::cached: {
+      Pieces pieces = pieces_of(payload);
       for (Piece piece; progress.status == tlm::TLM_OK_RESPONSE && pieces.next(piece);) access_line(piece, progress);
       delay = progress.delay;
     }
@@ -93,13 +80,7 @@ void CoherentCache::access_line(const Piece& piece, Progress& progress) {
   progress.delay += hit_time_;
   progress.parts[LatencyPart::hit] += hit_ps_;
 
-  const sc_core::sc_time before = sc_core::sc_time_stamp();
-  Grant grant(*bus_socket.operator->());
-  if (grant.waited()) {  // somebody else held the bus, perhaps past our local time
-    const sc_core::sc_time passed = sc_core::sc_time_stamp() - before;
-    if (passed > progress.delay) progress.parts[LatencyPart::wait_for_grant] += to_ps(passed - progress.delay);
-    progress.delay = passed > progress.delay ? sc_core::SC_ZERO_TIME : progress.delay - passed;
-  }
+  const HeldBus held(*bus_socket.operator->(), progress.delay, progress.parts[LatencyPart::wait_for_grant]);
   if (!hit_before_loss(piece, progress)) judge(piece, progress);
   last_end_ = now_ps() + to_ps(progress.delay);
   if (observer_ != nullptr) observer_->settled(piece.line);
@@ -245,17 +226,17 @@ tlm::tlm_response_status CoherentCache::give_up(Slot& slot, sc_core::sc_time& de
 }
 
 tlm::tlm_response_status CoherentCache::replace_now(std::uint64_t address, const sc_core::sc_time& delay) {
-  const sc_core::sc_time before = sc_core::sc_time_stamp();
-  Grant grant(*bus_socket.operator->());
+  sc_core::sc_time unattended = delay;
+  Picoseconds wait = 0;
+  const HeldBus held(*bus_socket.operator->(), unattended, wait);
   Slot* const slot = store_.find(store_.line_of(address));
-  const sc_core::sc_time passed = sc_core::sc_time_stamp() - before;
-  sc_core::sc_time unattended = passed > delay ? sc_core::SC_ZERO_TIME : delay - passed;
   return slot == nullptr ? tlm::TLM_OK_RESPONSE : give_up(*slot, unattended);
 }
 
 std::uint64_t CoherentCache::flush_now(sc_core::sc_time& delay) {
   std::uint64_t refused = 0;
-  Grant grant(*bus_socket.operator->());
+  Picoseconds wait = 0;
+  const HeldBus held(*bus_socket.operator->(), delay, wait);
   for (Slot& slot : store_.slots()) {
     if (slot.state == absent) continue;
     if (give_up(slot, delay) != tlm::TLM_OK_RESPONSE) ++refused;

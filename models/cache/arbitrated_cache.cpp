@@ -29,7 +29,7 @@ CoherentCache::Arbitrated::Arbitrated(CoherentCache& cache) : cache_(cache), age
 // ---- Accesses and their phases
 
 CoherentCache::Arbitrated::Access& CoherentCache::Arbitrated::start(tlm::tlm_generic_payload& payload, bool blocking,
-                                                                    Request request, Picoseconds when) {
+                                                                    AccessRequest request, Picoseconds when) {
   if (unused_accesses_.empty()) {
     accesses_.push_back(std::make_unique<Access>());
     unused_accesses_.push_back(accesses_.back().get());
@@ -49,7 +49,7 @@ CoherentCache::Arbitrated::Access& CoherentCache::Arbitrated::start(tlm::tlm_gen
 
 void CoherentCache::Arbitrated::recycle(Access& access) { unused_accesses_.push_back(&access); }
 
-void CoherentCache::Arbitrated::block(tlm::tlm_generic_payload& payload, Request request) {
+void CoherentCache::Arbitrated::block(tlm::tlm_generic_payload& payload, AccessRequest request) {
   // A killed process takes its payload with it: what is under way for it goes on without.
   struct Caller {
     Arbitrated& engine;
@@ -73,7 +73,7 @@ tlm::tlm_sync_enum CoherentCache::Arbitrated::forward(tlm::tlm_generic_payload& 
     if (payload.has_mm()) payload.acquire();
     non_blocking_.push_back(&payload);
     const Picoseconds when = now_ps() + to_ps(time);
-    const Request request = cache_.request_of(payload);
+    const AccessRequest request = request_of(payload, *cache_.map_);
     Access& access = start(payload, false, request, when);
     requesting_ = &access;
     agenda_.at<&Arbitrated::look_up>(when + lookup_time(request), this, &access);
@@ -114,22 +114,22 @@ void CoherentCache::Arbitrated::begin(Access& access) {
   tlm::tlm_generic_payload& payload = *access.payload;
   payload.set_dmi_allowed(false);
   switch (access.request) {
-    case Request::nothing:
+    case AccessRequest::nothing:
       complete(access);
       return;
-    case Request::no_data:
+    case AccessRequest::no_data:
       access.progress.status = tlm::TLM_BURST_ERROR_RESPONSE;
       complete(access);
       return;
-    case Request::no_window:
+    case AccessRequest::no_window:
       access.progress.status = tlm::TLM_ADDRESS_ERROR_RESPONSE;
       complete(access);
       return;
-    case Request::uncached:
+    case AccessRequest::uncached:
       begin_uncached(access);
       return;
-    case Request::cached:
-      access.pieces = Pieces(payload, cache_.store_.line_bytes());
+    case AccessRequest::cached:
+      access.pieces = cache_.pieces_of(payload);
       if (access.pieces.next(access.piece))
         settle_in(access);
       else
@@ -185,9 +185,9 @@ void CoherentCache::Arbitrated::next_piece(Access& access) {
 void CoherentCache::Arbitrated::complete(Access& access) {
   access.piece.length = 0;
   if (access.progress.parts.total() != now_ps() - access.start) ++parts_wrong_;
-  if (access.request == Request::uncached)
+  if (access.request == AccessRequest::uncached)
     ++(access.progress.status == tlm::TLM_OK_RESPONSE ? cache_.totals_.uncached : cache_.totals_.errors);
-  else if (access.request != Request::nothing)
+  else if (access.request != AccessRequest::nothing)
     cache_.count(access.write, access.progress);
   if (access.payload != nullptr) access.payload->set_response_status(access.progress.status);
   access.done = true;

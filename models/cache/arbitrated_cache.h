@@ -24,7 +24,7 @@ class CoherentCache::Arbitrated {
   explicit Arbitrated(CoherentCache& cache);
 
   // CPU side. block(): the access has been looked up already, if it is to be; waits until it is done.
-  void block(tlm::tlm_generic_payload& payload, Request request);
+  void block(tlm::tlm_generic_payload& payload, AccessRequest request);
   tlm::tlm_sync_enum forward(tlm::tlm_generic_payload& payload, tlm::tlm_phase& phase, sc_core::sc_time& time);
   // No earlier access to the line is under way.
   bool idle_for(std::uint64_t line) const { return waiting_.empty() && (in_use_.empty() || find_miss(line) == nullptr); }
@@ -55,7 +55,7 @@ class CoherentCache::Arbitrated {
     bool blocking = false;
     bool done = false;
     bool write = false;
-    Request request = Request::nothing;
+    AccessRequest request = AccessRequest::nothing;
     Pieces pieces;
     Piece piece;                  // the one under way
     Picoseconds start = 0;
@@ -91,8 +91,8 @@ class CoherentCache::Arbitrated {
   };
 
   // CPU side.
-  Access& start(tlm::tlm_generic_payload& payload, bool blocking, Request request, Picoseconds when);
-  Picoseconds lookup_time(Request request) const { return request == Request::cached ? cache_.hit_ps_ : 0; }
+  Access& start(tlm::tlm_generic_payload& payload, bool blocking, AccessRequest request, Picoseconds when);
+  Picoseconds lookup_time(AccessRequest request) const { return request == AccessRequest::cached ? cache_.hit_ps_ : 0; }
   void look_up(Access* access);
   void begin(Access& access);
   void begin_uncached(Access& access);

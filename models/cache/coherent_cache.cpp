@@ -6,7 +6,8 @@
 #include <sstream>
 
 #include "earshot/cache/arbitrated_cache.h"
-#include "earshot/cache/copy_bytes.h"
+#include "earshot/cache/socket_peer.h"
+#include "earshot/bus/copy_bytes.h"
 #include "earshot/timing/kernel.h"
 #include "earshot/version_check.h"
 
@@ -127,11 +128,11 @@ inline bool CoherentCache::hit_quickly(tlm::tlm_generic_payload& payload) {
 
 void CoherentCache::b_transport(tlm::tlm_generic_payload& payload, sc_core::sc_time& delay) {
   if (arbitrated_ != nullptr) {
-    const Request request = request_of(payload);
-    if (request == Request::cached) delay += hit_time_;
+    const AccessRequest request = request_of(payload, *map_);
+    if (request == AccessRequest::cached) delay += hit_time_;
     if (delay != sc_core::SC_ZERO_TIME) sc_core::wait(delay);
     delay = sc_core::SC_ZERO_TIME;
-    if (request != Request::cached || !arbitrated_->idle_for(store_.line_of(payload.get_address())) ||
+    if (request != AccessRequest::cached || !arbitrated_->idle_for(store_.line_of(payload.get_address())) ||
         !hit_quickly(payload))
       arbitrated_->block(payload, request);
   } else if (hit_quickly(payload)) {
@@ -155,13 +156,12 @@ tlm::tlm_sync_enum CoherentCache::nb_transport_fw(tlm::tlm_generic_payload& payl
   return tlm::TLM_COMPLETED;
 }
 
-CoherentCache::Request CoherentCache::request_of(const tlm::tlm_generic_payload& payload) const {
-  if (payload.get_command() == tlm::TLM_IGNORE_COMMAND) return Request::nothing;
-  const unsigned extent = std::min(payload.get_data_length(), payload.get_streaming_width());
-  if (extent == 0 || payload.get_data_ptr() == nullptr) return Request::no_data;
-  const int window = map_->find(payload.get_address(), extent);
-  if (window < 0) return Request::no_window;
-  return map_->window(window).cached ? Request::cached : Request::uncached;
+// REQUIRES: there is data.
+Pieces CoherentCache::pieces_of(const tlm::tlm_generic_payload& payload) {
+  if (payload.get_streaming_width() == 0)
+    oddities_.remark(Oddity::streaming_width_0, std::string(name()) + ": initiator " + initiators_of(cpu_socket),
+                     "sends a streaming width of 0: taken as the data length");
+  return Pieces(payload, store_.line_bytes());
 }
 
 // A cached access is done.
@@ -319,16 +319,10 @@ void CoherentCache::no_row(StateId state, Event event, std::uint64_t line) const
 
 // Tells the observer of each run of enabled bytes.
 void CoherentCache::tell_access(const Piece& piece, const std::uint8_t* line_bytes) {
-  const auto enabled = [&](std::uint32_t i) {
-    return piece.byte_enable == nullptr || piece.byte_enable[i] == TLM_BYTE_ENABLED;
-  };
-  for (std::uint32_t i = 0; i < piece.length;) {
-    std::uint32_t end = i;
-    while (end < piece.length && enabled(end)) ++end;
-    if (end > i)
-      observer_->accessed(port_, piece.write, piece.line + piece.offset + i, line_bytes + piece.offset + i, end - i);
-    i = end + 1;
-  }
+  for_enabled_runs(piece.length, piece.byte_enable, [&](std::uint32_t first, std::uint32_t count) {
+    const std::uint32_t at = piece.offset + first;
+    observer_->accessed(port_, piece.write, piece.line + at, line_bytes + at, count);
+  });
 }
 
 }  // namespace earshot

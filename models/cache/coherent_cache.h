@@ -21,8 +21,7 @@
 //   DMI             is refused for cached windows, passed on for uncached ones.
 // An access that crosses lines is split; each part is coherent, the whole is not one atom. Byte enables and
 // streaming width are honoured. TLM_IGNORE_COMMAND succeeds and does nothing. Errors: an address in no window,
-// or an access that leaves its window, TLM_ADDRESS_ERROR_RESPONSE; no data, or a streaming width of 0,
-// TLM_BURST_ERROR_RESPONSE; what memory refuses is passed back as memory said it, with nothing cached for it.
+// or an access that leaves its window, TLM_ADDRESS_ERROR_RESPONSE; no data, TLM_BURST_ERROR_RESPONSE; what memory refuses is passed back as memory said it, with nothing cached for it.
 // Arbitrated, a write-back that memory refuses belongs to no access: the line stays, snooped, in its write-back slot
 // and is reported (SC_REPORT_ERROR "/earshot/cache/memory").
 //
@@ -41,11 +40,13 @@
 #include <tlm>
 #include <vector>
 
+#include "earshot/bus/access_request.h"
+#include "earshot/bus/oddities.h"
+#include "earshot/bus/pieces.h"
 #include "earshot/bus/transaction.h"
 #include "earshot/cache/access_kind.h"
 #include "earshot/cache/geometry.h"
 #include "earshot/cache/line_store.h"
-#include "earshot/cache/pieces.h"
 #include "earshot/observe/histogram.h"
 #include "earshot/observe/observer.h"
 #include "earshot/protocol/table.h"
@@ -140,6 +141,7 @@ class CoherentCache : public sc_core::sc_module,
 
   // SnoopInterface
   unsigned attached(int port, const AddressMap& map, BusTiming timing) override;
+  bool serves_io() const override { return table_->serves_io(); }
   SnoopAnswer ask(const BusTransaction& transaction) override;
   bool commit(const BusTransaction& transaction) override;
   std::uint8_t* copy_of(std::uint64_t line, bool& owner) override;
@@ -158,11 +160,8 @@ class CoherentCache : public sc_core::sc_module,
     AccessKind kind = AccessKind::read_hit;
     tlm::tlm_response_status status = tlm::TLM_OK_RESPONSE;
   };
-  // What an access asks for before any line is looked up.
-  enum class Request { nothing, cached, uncached, no_data, no_window };
-
   bool hit_quickly(tlm::tlm_generic_payload& payload);
-  Request request_of(const tlm::tlm_generic_payload& payload) const;
+  Pieces pieces_of(const tlm::tlm_generic_payload& payload);
   void count(bool write, const Progress& progress);
   void perform(const Piece& piece, std::uint8_t* line_bytes);
 
@@ -204,6 +203,7 @@ class CoherentCache : public sc_core::sc_module,
   std::uint64_t incoming_line_ = ~std::uint64_t{0};
   std::vector<std::uint8_t> incoming_;  // a line being fetched
 
+  Oddities oddities_;
   Picoseconds last_end_ = 0;           // of the last access that needed a table walk
 
   std::uint64_t fast_reads_ = 0;       // hits that took the short path: all cost hit_ps_

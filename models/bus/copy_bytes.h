@@ -33,4 +33,16 @@ inline void copy_enabled(std::uint8_t* to, const std::uint8_t* from, std::size_t
     if (enable[i] == TLM_BYTE_ENABLED) to[i] = from[i];
 }
 
+// Calls `tell(first, count)` for each run of enabled bytes among `length`.
+template <typename Tell>
+void for_enabled_runs(std::uint32_t length, const std::uint8_t* enable, Tell tell) {
+  const auto enabled = [&](std::uint32_t i) { return enable == nullptr || enable[i] == TLM_BYTE_ENABLED; };
+  for (std::uint32_t i = 0; i < length;) {
+    std::uint32_t end = i;
+    while (end < length && enabled(end)) ++end;
+    if (end > i) tell(i, end - i);
+    i = end + 1;
+  }
+}
+
 }  // namespace earshot

@@ -1,8 +1,10 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
-#include "earshot/cache/pieces.h"
+#include "earshot/bus/pieces.h"
 
 #include <algorithm>
+
+#include "earshot/bus/access_request.h"
 
 namespace earshot {
 
@@ -10,7 +12,7 @@ Pieces::Pieces(const tlm::tlm_generic_payload& payload, unsigned line_bytes)
     : address_(payload.get_address()),
       data_(payload.get_data_ptr()),
       length_(payload.get_data_length()),
-      width_(std::min(payload.get_streaming_width(), length_)),
+      width_(extent_of(payload)),
       line_bytes_(line_bytes),
       write_(payload.is_write()) {
   if (payload.get_byte_enable_ptr() == nullptr || payload.get_byte_enable_length() == 0) return;

@@ -24,7 +24,7 @@ struct Piece {
 class Pieces {
  public:
   Pieces() = default;
-  // REQUIRES: data, length and streaming width are not 0, and `payload` outlives this.
+  // REQUIRES: there is data, and `payload` outlives this.
   Pieces(const tlm::tlm_generic_payload& payload, unsigned line_bytes);
 
   bool next(Piece& piece);  // false: no more

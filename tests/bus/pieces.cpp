@@ -1,6 +1,6 @@
 // Copyright the Earshot authors.
 // SPDX-License-Identifier: Apache-2.0
-#include "earshot/cache/pieces.h"
+#include "earshot/bus/pieces.h"
 
 #include <array>
 #include <catch2/catch.hpp>
