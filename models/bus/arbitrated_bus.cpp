@@ -502,22 +502,26 @@ void SnoopingBus::Arbitrated::debug(bool write, std::uint64_t address, std::uint
   for (Active* active : active_) {
     std::uint64_t first = active->line;
     std::uint64_t size = 0;
+    std::uint8_t* held = active->buffer.data();
     const std::uint8_t* enable = nullptr;
-    const bool io = active->kind == BusKind::io_write && !active->uncached;
+    const BusTransaction* const transaction = active->transaction;
     if (active->memory_takes_line) {
       size = bus_.line_bytes_;
-    } else if (active->transaction != nullptr && (io || (write && active->kind == BusKind::write_through))) {
-      first += active->transaction->offset;
-      size = active->transaction->length;
-      enable = active->transaction->byte_enable;
+    } else if (transaction != nullptr && !active->uncached &&
+               (active->kind == BusKind::io_write ||
+                (write && (active->kind == BusKind::write_through || active->kind == BusKind::io_read)))) {
+      first += transaction->offset;
+      size = transaction->length;
+      enable = transaction->byte_enable;
+      if (active->kind == BusKind::io_read) held = transaction->line_data;  // perhaps read from memory already
     }
     for (std::uint64_t i = 0; i < size; ++i) {
       const std::uint64_t at = first + i - address;
       if (at >= length || (enable != nullptr && enable[i] != TLM_BYTE_ENABLED)) continue;
       if (write)
-        active->buffer[i] = bytes[at];
+        held[i] = bytes[at];
       else
-        bytes[at] = active->buffer[i];
+        bytes[at] = held[i];
     }
   }
 }

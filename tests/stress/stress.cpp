@@ -27,6 +27,7 @@
 #include <tlm_utils/simple_initiator_socket.h>
 #include <vector>
 
+#include "earshot/bus/io_port.h"
 #include "earshot/bus/snooping_bus.h"
 #include "earshot/cache/invalidating_cache.h"
 #include "earshot/cache/updating_cache.h"
@@ -64,13 +65,14 @@ struct Plan {
     misses = 1 + static_cast<unsigned>(random() % 4);
     write_back_slots = 1 + static_cast<unsigned>(random() % 2);
     replacement = static_cast<Replacement>(random() % 4);
+    devices = static_cast<int>(random() % 3);
   }
   std::string text() const {
     return protocol + (structure == BusStructure::split ? ", split" : ", connected") +
            (non_blocking ? ", nb_transport" : ", b_transport") + ", arbiter " +
            std::to_string(static_cast<int>(arbitration)) + ", memory " + std::to_string(static_cast<int>(memory)) +
            ", " + std::to_string(caches) + " caches of " + std::to_string(sets) + " x " + std::to_string(ways) +
-           " lines";
+           " lines, " + std::to_string(devices) + " I/O ports";
   }
   std::uint64_t seed;
   Random random;
@@ -82,6 +84,7 @@ struct Plan {
   int caches;
   unsigned ways, sets, lines, misses, write_back_slots;
   Replacement replacement;
+  int devices;
 };
 
 [[noreturn]] void fail(const std::string& text) { throw std::runtime_error(text); }
@@ -94,12 +97,12 @@ struct Step : tlm::tlm_generic_payload {
 };
 
 // Draws accesses. Word w of every line is written by initiator w modulo the number of initiators only, with rising
-// values, except the upper half of the line, which everybody writes.
+// values, except the upper half of the line, which everybody writes. `cache` is null before an I/O port.
 class Initiator : public sc_core::sc_module, private tlm::tlm_mm_interface {
  public:
   tlm_utils::simple_initiator_socket<Initiator> socket{"socket"};
 
-  Initiator(sc_core::sc_module_name name, Plan& plan, int number, std::uint64_t accesses, CoherentCache& cache)
+  Initiator(sc_core::sc_module_name name, Plan& plan, int number, std::uint64_t accesses, CoherentCache* cache)
       : sc_module(name), plan_(plan), number_(number), left_(accesses), random_(plan.random()), cache_(cache) {
     socket.register_nb_transport_bw(this, &Initiator::backward);
     SC_HAS_PROCESS(Initiator);
@@ -129,7 +132,7 @@ class Initiator : public sc_core::sc_module, private tlm::tlm_mm_interface {
     unsigned offset = static_cast<unsigned>(random_() % 8 * 4);
     const bool write = random_() % 2 == 0;
     if (write && offset < 16) offset = static_cast<unsigned>(number_ % 4 * 4);
-    const bool mine = !write || offset >= 16 || plan_.caches <= 4 || number_ < 4;
+    const bool mine = !write || offset >= 16 || (number_ < 4 && cache_ != nullptr);
     if (!mine) offset += 16;
     const unsigned odd = static_cast<unsigned>(random_() % 32);
     if (write && offset >= 16) {
@@ -194,7 +197,7 @@ class Initiator : public sc_core::sc_module, private tlm::tlm_mm_interface {
     for (; left_ > 0; --left_) {
       wait(from_ps(random_() % 8 == 0 ? random_() % 200000 : random_() % 3000));
       aside();
-      if (random_() % 32 == 0) cache_.replace(random_() % plan_.lines * 32, sc_core::SC_ZERO_TIME);
+      if (cache_ != nullptr && random_() % 32 == 0) cache_->replace(random_() % plan_.lines * 32, sc_core::SC_ZERO_TIME);
       draw(step);
       sc_core::sc_time delay = from_ps(random_() % 3 * 1000);
       socket->b_transport(step, delay);
@@ -271,7 +274,7 @@ class Initiator : public sc_core::sc_module, private tlm::tlm_mm_interface {
   int number_;
   std::uint64_t left_;
   Random random_;
-  CoherentCache& cache_;
+  CoherentCache* cache_;
   std::uint32_t written_ = 0;
   std::uint64_t done_ = 0;
   std::array<std::uint32_t, 512> seen_{};
@@ -300,7 +303,7 @@ void run(Plan plan, std::uint64_t accesses) {
   bus_config.supply_cycles = static_cast<unsigned>(plan.random() % 3);
   SnoopingBus bus("bus", bus_config);
   StressMemory memory(plan.memory, plan.random());
-  PlainMemory device("device", {});
+  PlainMemory device("registers", {});
   std::vector<std::unique_ptr<BaseProtocolObserver<>>> hops;
   const auto watch = [&](const std::string& name, auto& from, auto& to) {
     hops.push_back(std::make_unique<BaseProtocolObserver<>>(("hop_of_" + name).c_str(), name));
@@ -308,13 +311,14 @@ void run(Plan plan, std::uint64_t accesses) {
     hops.back()->initiator_socket.bind(to);
   };
   watch("memory", bus.window_socket("memory"), memory.socket());
-  watch("device", bus.window_socket("device"), device.target_socket);
+  watch("registers", bus.window_socket("device"), device.target_socket);
 
   CoherenceMonitor monitor(32, [&](std::uint64_t address, std::uint8_t* to, std::size_t length) {
     memory.peek(address, to, length);
   });
   std::vector<std::unique_ptr<CoherentCache>> caches;
   std::vector<std::unique_ptr<Initiator>> initiators;
+  const std::uint64_t share = accesses / static_cast<unsigned>(plan.caches + plan.devices);
   CacheConfig config;
   config.geometry = {std::uint64_t{32} * plan.ways * plan.sets, plan.ways, 32, plan.replacement, plan.seed};
   config.table = std::make_shared<const Table>(table);
@@ -329,8 +333,17 @@ void run(Plan plan, std::uint64_t accesses) {
     caches.back()->bus_socket.bind(bus.cache_socket);
     caches.back()->set_observer(&monitor);
     initiators.push_back(std::make_unique<Initiator>(("initiator" + std::to_string(i)).c_str(), plan, i,
-                                                     accesses / static_cast<unsigned>(plan.caches), *caches.back()));
+                                                     share, caches.back().get()));
     watch("initiator" + std::to_string(i), initiators.back()->socket, caches.back()->cpu_socket);
+  }
+  std::vector<std::unique_ptr<IoPort>> ports;
+  for (int i = 0; i < plan.devices; ++i) {
+    const std::string number = std::to_string(i);
+    ports.push_back(std::make_unique<IoPort>(("port" + number).c_str()));
+    ports.back()->bus_socket.bind(bus.cache_socket);
+    ports.back()->set_observer(&monitor);
+    initiators.push_back(std::make_unique<Initiator>(("device" + number).c_str(), plan, plan.caches + i, share, nullptr));
+    watch("device" + number, initiators.back()->socket, ports.back()->io_socket);
   }
   bool flushed = false;
   sc_core::sc_event flush;
