@@ -126,3 +126,50 @@ TEST_CASE("busy times are the cycles the totals count", "[bus]") {
       CHECK(system.cache(i).totals().parts.total() == system.cache(i).totals().latency().sum());
   });
 }
+
+TEST_CASE("a split bus has one transaction of a line under way at a time, annotated as arbitrated", "[bus]") {
+  SystemOptions options;
+  options.caches = 4;
+  System system(load_table("dirty-owner-update"), options);
+  simulate([&] {
+    for (int i = 0; i < 4; ++i) system.cpu(i).read(i == 2 ? 0x200 : 0x100);
+    sc_core::wait(sc_core::sc_time(1, sc_core::SC_US));
+    // Lookup to 1 ns, the next edge is 5, arbitration to 10; then address, snoop and one beat, 5 ns each.
+    system.cpu(0).write(0x100, 1);
+    CHECK(system.cpu(0).delay == sc_core::sc_time(25, sc_core::SC_NS));
+    system.cpu(1).write(0x100, 2);  // waits for the end of the first
+    CHECK(system.cpu(1).delay == sc_core::sc_time(40, sc_core::SC_NS));
+    system.cpu(2).write(0x200, 3);  // waits for the address bus only, 15 to 20
+    CHECK(system.cpu(2).delay == sc_core::sc_time(30, sc_core::SC_NS));
+  });
+}
+
+TEST_CASE("a read before the grant of the write that takes its copy is a hit", "[bus]") {
+  System system(load_table("mesi"));
+  simulate([&] {
+    system.cpu(0).read(0x100);
+    system.cpu(1).read(0x100);
+    sc_core::wait(sc_core::sc_time(1, sc_core::SC_US));
+    system.cpu(0).write(0x100, 7);  // granted at 10 ns
+    const std::string states = system.states(0x100);
+    CHECK(system.cpu(1).read(0x100) == 7);
+    CHECK(system.cpu(1).delay == sc_core::sc_time(1, sc_core::SC_NS));
+    CHECK(system.states(0x100) == states);
+    CHECK(system.cache(1).totals().hits == 1);
+    sc_core::wait(sc_core::sc_time(10, sc_core::SC_NS));
+    CHECK(system.cpu(1).read(0x100) == 7);
+    CHECK(system.cpu(1).delay > sc_core::sc_time(20, sc_core::SC_NS));
+    CHECK(system.cache(1).totals().hits == 1);
+  });
+}
+
+TEST_CASE("for an initiator that lets no time pass what is lost is lost", "[bus]") {
+  System system(load_table("mesi"));
+  simulate([&] {
+    for (int i = 0; i < 5; ++i) {
+      system.cpu(1).read(0x100);
+      system.cpu(0).write(0x100, 7);
+    }
+  });
+  CHECK(system.cache(1).totals().hits == 0);
+}
