@@ -31,6 +31,9 @@ std::vector<std::string> AddressMap::problems(unsigned line_bytes) const {
     if (window.cached && !whole_lines)
       found.push_back(text_of(window) + " is cached, so its base and size must be multiples of the line, " +
                       std::to_string(line_bytes) + " bytes");
+    if (window.max_burst > 256 || (window.max_burst & (window.max_burst - 1)) != 0)
+      found.push_back(text_of(window) + " has a max_burst of " + std::to_string(window.max_burst) +
+                      " bytes; expected a power of two from 1 to 256, or 0 for no limit");
     for (std::size_t j = 0; j < i; ++j) {
       if (window.name == windows_[j].name) found.push_back("two windows are named '" + window.name + "'");
       if (window.base <= windows_[j].last() && windows_[j].base <= window.last())

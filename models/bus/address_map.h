@@ -18,6 +18,13 @@ struct Window {
   std::uint64_t size = 0;        // bytes
   bool cached = true;            // false: every access passes through to the target
   std::uint64_t target_base = 0; // the address the target sees for `base`
+  // Bytes the target takes in one access, a power of two from 1 to 256; 0: any number. What is longer (a fill, a
+  // write-back, a write-through, an uncached access) is sent to it in several accesses, one after another in address
+  // order; the first that it refuses is the answer to all, and nothing of it is cached.
+  unsigned max_burst = 0;
+  // The target never sets a response status (leaves TLM_INCOMPLETE_RESPONSE), and means that all went well. Without
+  // this such an answer is an error to whoever asked.
+  bool no_status_is_ok = false;
 
   std::uint64_t last() const { return size == 0 ? ~std::uint64_t{0} : base + (size - 1); }
   bool holds(std::uint64_t address) const { return address >= base && address <= last(); }
@@ -28,7 +35,7 @@ class AddressMap {
   explicit AddressMap(std::vector<Window> windows) : windows_(std::move(windows)) {}
 
   // Every problem of the map, one a line; empty if it is sound: overlapping windows, a window that runs past the
-  // end of the address space, names that are empty or used twice. `line_bytes` > 0 also checks that cached
+  // end of the address space, names that are empty or used twice, an impossible max_burst. `line_bytes` > 0 also checks that cached
   // windows begin and end on a line.
   std::vector<std::string> problems(unsigned line_bytes = 0) const;
 

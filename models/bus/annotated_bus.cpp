@@ -5,6 +5,7 @@
 #include <algorithm>
 #include <array>
 #include <cstring>
+#include <utility>
 
 #include "earshot/bus/access_request.h"
 #include "earshot/bus/copy_bytes.h"
@@ -278,17 +279,32 @@ const std::uint8_t* SnoopingBus::copy_before_loss(int requester, std::uint64_t l
 
 void SnoopingBus::access_target(int window, tlm::tlm_generic_payload& payload, Picoseconds& time,
                                 LatencyParts& parts) {
-  const Window& where = map_.window(window);
-  const std::uint64_t address = payload.get_address();
-  payload.set_address(address - where.base + where.target_base);
+  WindowPort& target = *targets_[static_cast<std::size_t>(window)];
+  struct Kept {  // also if the process is killed while the target waits
+    tlm::tlm_generic_payload& payload;
+    AccessPieces pieces{};
+    ~Kept() { pieces.restore(payload); }
+  } kept{payload};
+  kept.pieces.start(target.window(), payload);
+  payload.set_response_status(tlm::TLM_OK_RESPONSE);  // perhaps no byte is enabled
+  while (payload.is_response_ok() && !kept.pieces.done()) {
+    kept.pieces.next(payload);
+    access_target_once(target, payload, time, parts);
+    target.judge(payload, kept.pieces);
+  }
+}
+
+void SnoopingBus::access_target_once(WindowPort& target, tlm::tlm_generic_payload& payload, Picoseconds& time,
+                                     LatencyParts& parts) {
+  auto* const times = payload.get_extension<MemoryTimes>();
+  const Picoseconds queue_before = times == nullptr ? 0 : std::exchange(times->queue, 0);
   const Picoseconds now = now_ps();
   sc_core::sc_time delay = from_ps(time > now ? time - now : 0);
-  targets_[static_cast<std::size_t>(window)]->socket->b_transport(payload, delay);
-  payload.set_address(address);
+  target.socket->b_transport(payload, delay);
 
   const Picoseconds end = std::max(time, now_ps() + to_ps(delay));
-  const auto* times = payload.get_extension<MemoryTimes>();
   const Picoseconds queue = times == nullptr ? 0 : std::min(times->queue, end - time);
+  if (times != nullptr) times->queue += queue_before;
   parts[LatencyPart::memory_queue] += queue;
   parts[LatencyPart::memory_array] += end - time - queue;
   time = end;

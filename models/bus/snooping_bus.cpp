@@ -213,9 +213,12 @@ unsigned SnoopingBus::debug(tlm::tlm_generic_payload& payload) {
   if (window_index < 0) return 0;
   const Window& window = map_.window(window_index);
 
+  AccessPieces said;
+  said.start(window, payload);
   payload.set_address(address - window.base + window.target_base);
-  const unsigned done = targets_[static_cast<std::size_t>(window_index)]->socket->transport_dbg(payload);
-  payload.set_address(address);
+  const unsigned done =
+      std::min(targets_[static_cast<std::size_t>(window_index)]->socket->transport_dbg(payload), length);
+  said.restore(payload);
   if (!window.cached) return done;
 
   // Memory's bytes are in place; now the copies: an owner's win on a read, all are overwritten by a write.
@@ -254,12 +257,14 @@ bool SnoopingBus::direct_memory(tlm::tlm_generic_payload& payload, tlm::tlm_dmi&
     dmi.set_end_address(window.last());
     return false;
   }
+  AccessPieces said;
+  said.start(window, payload);
   payload.set_address(address - window.base + window.target_base);
   dmi.init();
   dmi.set_start_address(payload.get_address());  // for a target that refuses and says no more
   dmi.set_end_address(payload.get_address());
   const bool granted = targets_[static_cast<std::size_t>(index)]->socket->get_direct_mem_ptr(payload, dmi);
-  payload.set_address(address);
+  said.restore(payload);
 
   // Back to this side's addresses, clipped to the window.
   const std::uint64_t first = std::max<std::uint64_t>(dmi.get_start_address(), window.target_base);

@@ -198,8 +198,10 @@ class SnoopingBus : public sc_core::sc_module, private RequestInterface, private
   Hold address_phase(BusKind kind, unsigned bytes, const Calendar* line, Picoseconds& time, LatencyParts& parts);
   void data_phase(BusKind kind, unsigned bytes, const Hold& hold, Picoseconds& time, LatencyParts& parts);
   void let_go(const Hold& hold, Picoseconds time);
-  // One access to a window's target, starting at `time`, which moves to its end.
+  // One access to a window's target, starting at `time`, which moves to its end: one call of the target, or several.
   void access_target(int window, tlm::tlm_generic_payload& payload, Picoseconds& time, LatencyParts& parts);
+  void access_target_once(WindowPort& target, tlm::tlm_generic_payload& payload, Picoseconds& time,
+                          LatencyParts& parts);
   void access_memory(tlm::tlm_command command, std::uint64_t address, std::uint8_t* data, unsigned length,
                      const std::uint8_t* byte_enable, Picoseconds& time, LatencyParts& parts,
                      tlm::tlm_response_status& status);

@@ -8,6 +8,19 @@
 #include "earshot/timing/kernel.h"
 
 namespace earshot {
+namespace {
+
+// Extensions are lent to a piece; what it has itself stays.
+void lend_extensions(const tlm::tlm_generic_payload& whole, tlm::tlm_generic_payload& piece) {
+  for (unsigned i = 0; i < tlm::max_num_extensions(); ++i)
+    if (piece.get_extension(i) == nullptr) piece.set_extension(i, whole.get_extension(i));
+}
+void take_extensions_back(const tlm::tlm_generic_payload& whole, tlm::tlm_generic_payload& piece) {
+  for (unsigned i = 0; i < tlm::max_num_extensions(); ++i)
+    if (piece.get_extension(i) == whole.get_extension(i)) piece.set_extension(i, nullptr);
+}
+
+}  // namespace
 
 WindowAccess& WindowAccessPool::acquire() {
   if (unused_.empty()) {
@@ -38,6 +51,47 @@ WindowPort::WindowPort(sc_core::sc_module_name name, const Window& window, Liste
 }
 
 void WindowPort::send(WindowAccess& access) {
+  access.whole = nullptr;
+  access.answered = false;
+  access.pieces.start(window_, access);
+  if (access.pieces.done()) {  // no byte is enabled
+    access.sent = access.ended = std::max(now_ps(), access.ready);
+    access.set_response_status(tlm::TLM_OK_RESPONSE);
+    listener_.answered(access);
+  } else if (access.pieces.as_it_is()) {
+    access.pieces.next(access);
+    enqueue(access);
+  } else {
+    send_piece(&access);
+  }
+}
+
+void WindowPort::send_piece(WindowAccess* whole) {
+  WindowAccess& piece = pieces_.acquire();
+  piece.whole = whole;
+  piece.ready = whole->ready;
+  whole->pieces.next(piece);
+  lend_extensions(*whole, piece);
+  enqueue(piece);
+}
+
+// The next is sent when this one's answer is there. What the later ones wait for the target is its queue, too.
+void WindowPort::piece_answered(WindowAccess& piece, WindowAccess& whole) {
+  if (!whole.answered) whole.sent = whole.ended = piece.sent;
+  whole.answered = true;
+  whole.times.queue += piece.sent - whole.ended + std::min(piece.times.queue, piece.ended - piece.sent);
+  whole.ended = piece.ended;
+  whole.set_response_status(piece.get_response_status());
+  whole.set_dmi_allowed(piece.is_dmi_allowed());
+  take_extensions_back(whole, piece);
+  piece.release();
+  if (whole.is_response_ok() && !whole.pieces.done())
+    agenda_.at<&WindowPort::send_piece>(whole.ended, this, &whole);
+  else
+    listener_.answered(whole);
+}
+
+void WindowPort::enqueue(WindowAccess& access) {
   access.asked = now_ps();
   queue_.push_back(&access);
   queue_meter_.enter(access.asked);
@@ -66,7 +120,6 @@ void WindowPort::begin(WindowAccess& access) {
   access.answered = false;
   busy_ = true;
   at_target_.push_back(&access);
-  access.set_address(access.get_address() - window_.base + window_.target_base);
 
   tlm::tlm_phase phase = tlm::BEGIN_REQ;
   sc_core::sc_time time = from_ps(access.sent - now);
@@ -113,8 +166,39 @@ void WindowPort::respond(WindowAccess& access, Picoseconds when) {
   const Picoseconds now = now_ps();
   target_meter_.leave(now, access.asked);
   at_target_.erase(std::find(at_target_.begin(), at_target_.end(), &access));
-  access.set_address(access.get_address() - window_.target_base + window_.base);
-  listener_.answered(access);
+  judge(access, access.whole == nullptr ? access.pieces : access.whole->pieces);
+  if (access.whole == nullptr)
+    listener_.answered(access);
+  else
+    piece_answered(access, *access.whole);
+}
+
+void WindowPort::judge(tlm::tlm_generic_payload& payload, const AccessPieces& piece) {
+  if (payload.get_response_status() == tlm::TLM_INCOMPLETE_RESPONSE) {
+    if (!window_.no_status_is_ok) {
+      warn_once(warned_no_status_, "sets no response status: an error to whoever asked; if it means that all went "
+                                   "well, set Window::no_status_is_ok");
+      return;
+    }
+    payload.set_response_status(tlm::TLM_OK_RESPONSE);
+  }
+  // Some say in this way how much they did (IEEE 1666-2011, 14.13, forbids it).
+  const bool short_of_data = payload.get_data_length() < piece.length();
+  if (short_of_data && payload.is_response_ok()) payload.set_response_status(tlm::TLM_BURST_ERROR_RESPONSE);
+  if (payload.is_response_ok() || (!window_.cached && !short_of_data)) return;
+  std::ostringstream text;
+  text << "does not do a " << (payload.is_write() ? "write" : "read") << " of " << piece.length() << " bytes at 0x"
+       << std::hex << piece.address() << std::dec << ", its address (" << payload.get_response_string()
+       << "): an error to whoever asked; if it takes fewer bytes at a time, set Window::max_burst";
+  warn_once(warned_refusal_, text.str());
+}
+
+void WindowPort::warn_once(bool& warned, const std::string& what) const {
+  if (warned) return;
+  warned = true;
+  SC_REPORT_WARNING("/earshot/bus/target", (std::string(name()) + ": the target of window '" + window_.name + "' " +
+                                            what + "; told once")
+                                               .c_str());
 }
 
 // BEGIN_RESP came on the return path: END_RESP has to be sent.

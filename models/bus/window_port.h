@@ -5,7 +5,8 @@
 // target with b_transport through `socket`. Arbitrated timing sends accesses with nb_transport: one request phase at
 // a time (IEEE 1666-2011, 15.2.6.2, the request exclusion rule), later accesses queue here; responses may come in any
 // order and are taken at once (END_RESP by early completion). Phases out of order from a target are reported
-// (SC_REPORT_ERROR, id "/earshot/bus/protocol").
+// (SC_REPORT_ERROR, id "/earshot/bus/protocol"). The first answer without a response status, and a cached window's
+// first refusal, are told (SC_REPORT_WARNING, id "/earshot/bus/target").
 #pragma once
 
 #include <deque>
@@ -16,6 +17,7 @@
 #include <tlm>
 #include <vector>
 
+#include "earshot/bus/access_pieces.h"
 #include "earshot/bus/address_map.h"
 #include "earshot/timing/agenda.h"
 #include "earshot/timing/latency.h"
@@ -38,7 +40,9 @@ struct WindowAccess : tlm::tlm_generic_payload {
   Picoseconds sent = 0;           // the begin of its request phase, at or after `ready`
   Picoseconds ended = 0;          // when the target was done
   bool requesting = false;        // its request phase has not ended
-  bool answered = false;          // the target has sent its response
+  bool answered = false;          // the target has sent its response, of several its first
+  AccessPieces pieces;            // what is sent to the target for it
+  WindowAccess* whole = nullptr;  // if it is one of several: of what
 };
 
 // Accesses by the handful, reused when everybody who has acquired one has released it.
@@ -72,6 +76,10 @@ class WindowPort : public sc_core::sc_module, private tlm::tlm_bw_transport_if<>
   // Sends the access, at its bus address, when the target can take it, not before access.ready. Arbitrated timing.
   void send(WindowAccess& access);
 
+  // To be asked of every answer of the target, of either timing: takes its response status for what the window says
+  // of its target, and reports. `piece` has been sent.
+  void judge(tlm::tlm_generic_payload& payload, const AccessPieces& piece);
+
   const Window& window() const { return window_; }
   const QueueMeter& queue() const { return queue_meter_; }     // from send() to the begin of the request phase
   const QueueMeter& target() const { return target_meter_; }   // from there to the target's answer being known
@@ -84,6 +92,10 @@ class WindowPort : public sc_core::sc_module, private tlm::tlm_bw_transport_if<>
   void invalidate_direct_mem_ptr(sc_dt::uint64 first, sc_dt::uint64 last) override;
 
   void work() { agenda_.run(); }
+  void enqueue(WindowAccess& access);
+  void send_piece(WindowAccess* whole);
+  void piece_answered(WindowAccess& piece, WindowAccess& whole);
+  void warn_once(bool& warned, const std::string& what) const;
   void send_next();
   void begin(WindowAccess& access);
   void end_request(WindowAccess& access, Picoseconds when);
@@ -102,6 +114,8 @@ class WindowPort : public sc_core::sc_module, private tlm::tlm_bw_transport_if<>
   bool busy_ = false;                      // a request phase is under way
   std::deque<WindowAccess*> queue_;
   std::vector<WindowAccess*> at_target_;
+  WindowAccessPool pieces_;
+  bool warned_no_status_ = false, warned_refusal_ = false;
   QueueMeter queue_meter_;
   QueueMeter target_meter_;
 };

@@ -37,3 +37,13 @@ TEST_CASE("every problem of a map is reported", "[bus]") {
         Problems{"window 'a' [0x10, 0x100f] is cached, so its base and size must be multiples of the line, 32 bytes"});
   CHECK(AddressMap({{"a", 0x10, 0x1000, false, 0}}).problems(32).empty());
 }
+
+TEST_CASE("a window's max_burst is a power of two to 256, or none", "[bus]") {
+  using Problems = std::vector<std::string>;
+  for (const unsigned possible : {0u, 1u, 2u, 64u, 256u})
+    CHECK(AddressMap({{"a", 0, 0x1000, true, 0, possible}}).problems(32).empty());
+  for (const unsigned impossible : {3u, 48u, 257u, 512u})
+    CHECK(AddressMap({{"a", 0, 0x1000, true, 0, impossible}}).problems() ==
+          Problems{"window 'a' [0x0, 0xfff] has a max_burst of " + std::to_string(impossible) +
+                   " bytes; expected a power of two from 1 to 256, or 0 for no limit"});
+}
