@@ -33,18 +33,21 @@ std::string apply_seed(const std::string& text, Settings& settings) {
   return parse_number(text, settings.geometry.seed) ? "" : "a whole number";
 }
 
-// "ram 0x0..0x7fffffff cached, uart 0x80000000..0x80000fff uncached"
+// "ram 0x0..0x7fffffff cached, uart 0x80000000..0x80000fff uncached max-burst 4"
 std::string apply_windows(const std::string& text, Settings& settings) {
   const std::string expected =
-      "windows as NAME FIRST..LAST cached|uncached, separated by commas, names of letters, digits and _";
+      "windows as NAME FIRST..LAST cached|uncached [max-burst BYTES], separated by commas, names of letters, "
+      "digits and _, bytes 0 for any or a power of two to 256";
   std::vector<Window> windows;
   std::istringstream all(text);
   for (std::string one; std::getline(all, one, ',');) {
     std::istringstream words(one);
-    std::string range, kind, rest;
+    std::string range, kind, limit, bytes, rest;
     Window window;
-    std::uint64_t last = 0;
-    words >> window.name >> range >> kind;
+    std::uint64_t last = 0, burst = 0;
+    words >> window.name >> range >> kind >> limit >> bytes;
+    if (!limit.empty() && (limit != "max-burst" || !parse_number(bytes, burst) || burst > 256)) return expected;
+    window.max_burst = static_cast<unsigned>(burst);
     const std::size_t dots = range.find("..");
     const bool named = std::all_of(window.name.begin(), window.name.end(), [](unsigned char c) {
       return std::isalnum(c) != 0 || c == '_';
@@ -129,7 +132,8 @@ std::vector<Key> bus_keys() {
       {"bus.longest-wait", "0ns", "an initiator waits longer for a grant: a finding; 0ns: no limit",
        time(at(&S::longest_wait), 0), {arbitrated}},
       {"bus.windows", "memory 0x0..0xffffffffffffffff cached",
-       "the address map: NAME FIRST..LAST cached|uncached, ... (dram, not given: what it holds)", apply_windows},
+       "the address map: NAME FIRST..LAST cached|uncached [max-burst BYTES], ... (dram, not given: what it holds)",
+       apply_windows},
   };
 }
 

@@ -206,6 +206,14 @@ TEST_CASE("unusable configurations are refused with file, line and key", "[comma
   refuse("[bus]\nwindows = ram 0x0..0xffff cached, rom 0x8000..0x1ffff uncached\n" + playing,
          "p.ini:2: bus.windows: window 'rom' [0x8000, 0x1ffff] overlaps window 'ram' [0x0, 0xffff]: windows must be "
          "disjoint");
+  refuse("[bus]\nwindows = ram 0x0..0xffff cached max-burst 12\n" + playing,
+         "p.ini:2: bus.windows: window 'ram' [0x0, 0xffff] has a max_burst of 12 bytes; expected a power of two from 1 "
+         "to 256, or 0 for no limit");
+  for (const std::string wrong : {"max-burst", "max-burst 512", "max-burst x", "max-burst 4 4", "burst 4"})
+    refuse("[bus]\nwindows = ram 0x0..0xffff cached " + wrong + '\n' + playing,
+           "p.ini:2: bus.windows = 'ram 0x0..0xffff cached " + wrong +
+               "'; expected windows as NAME FIRST..LAST cached|uncached [max-burst BYTES], separated by commas, names "
+               "of letters, digits and _, bytes 0 for any or a power of two to 256");
   refuse("[caches]\ncount = none\nsize = big\n" + playing,
          "p.ini:2: caches.count = 'none'; expected a whole number from 1 to 64\n"
          "p.ini:3: caches.size = 'big'; expected a size in bytes: 16384, 16KiB, 1MiB");
@@ -318,6 +326,19 @@ TEST_CASE("keys may be given as two words, and times in bus cycles wherever they
   INFO(outcome.out);
   CHECK(outcome.status == 0);
   CHECK(outcome.out.find("2 caches of") != std::string::npos);
+}
+
+TEST_CASE("a window's max-burst sends a line to its memory in pieces", "[command]") {
+  const Folder folder;
+  const std::string recording = folder.write("two.csv", two_writers);  // two fills from memory, five accesses
+  const auto memory_ns = [&](const std::string& words) {
+    REQUIRE(earshot("simulate --quiet --baseline=off --caches.count=2 --memory.read-latency=40ns \"--bus.windows=ram "
+                    "0x0..0xffff cached" + words + "\" --workload.recording=" + recording + " --json " +
+                    (folder / "out.json"))
+                .status == 0);
+    return Json::parse(file_text(folder / "out.json"))["latency"]["parts-ns"]["memory-array"].get<double>();
+  };
+  CHECK(memory_ns(" max-burst 8") - memory_ns("") == Approx(2 * 3 * 40 / 5.0));
 }
 
 TEST_CASE("a platform of two windows is built without a word from the kernel", "[command]") {
