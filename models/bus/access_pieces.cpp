@@ -4,6 +4,8 @@
 
 #include <algorithm>
 
+#include "earshot/bus/access_request.h"
+
 namespace earshot {
 
 void AccessPieces::start(const Window& window, const tlm::tlm_generic_payload& whole) {
@@ -13,6 +15,7 @@ void AccessPieces::start(const Window& window, const tlm::tlm_generic_payload& w
   data_ = whole.get_data_ptr();
   length_ = whole.get_data_length();
   width_ = whole.get_streaming_width();
+  extent_ = extent_of(whole);
   enable_ = whole.get_byte_enable_ptr();
   enable_length_ = whole.get_byte_enable_length();
 
@@ -31,12 +34,13 @@ void AccessPieces::skip_disabled() {
 void AccessPieces::next(tlm::tlm_generic_payload& piece) {
   restore(piece);
   piece.set_response_status(tlm::TLM_INCOMPLETE_RESPONSE);
+  if (width_ == 0) piece.set_streaming_width(length_);
   const unsigned first = at_;
   unsigned size = length_ - first;
   piece_address_ = address_ - window_->base + window_->target_base;
   if (!as_it_is_) {
-    size = std::min(size, width_ - first % width_);
-    piece_address_ += first % width_;
+    size = std::min(size, extent_ - first % extent_);
+    piece_address_ += first % extent_;
     if (in_runs_) {
       unsigned run = 1;
       while (run < size && enabled(first + run)) ++run;

@@ -45,7 +45,7 @@ class AccessPieces {
   tlm::tlm_command command_ = tlm::TLM_IGNORE_COMMAND;
   std::uint64_t address_ = 0;
   std::uint8_t* data_ = nullptr;
-  unsigned length_ = 0, width_ = 0;
+  unsigned length_ = 0, width_ = 0, extent_ = 0;
   std::uint8_t* enable_ = nullptr;
   unsigned enable_length_ = 0;
 

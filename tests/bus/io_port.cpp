@@ -192,7 +192,9 @@ TEST_CASE("an I/O port of nb_transport keeps the four phases", "[bus]") {
 }
 
 TEST_CASE("a streaming width of 0 means the data length, and is remarked on once", "[bus]") {
-  System system(load_table("dirty-owner-update"), with_device(BusTiming::annotated));
+  SystemOptions options = with_device(BusTiming::annotated);
+  options.windows = {{"memory", 0, 0x1000, true, 0}, {"registers", 0x1000, 0x1000, false, 0, 2}};
+  System system(load_table("dirty-owner-update"), options);
   static int remarks = 0;
   sc_core::sc_report_handler::set_handler([](const sc_core::sc_report& report, const sc_core::sc_actions& actions) {
     if (report.get_severity() == sc_core::SC_INFO)
@@ -208,6 +210,10 @@ TEST_CASE("a streaming width of 0 means the data length, and is remarked on once
         CHECK(driver->transport(tlm::TLM_WRITE_COMMAND, 0x200, bytes, 4, 0) == tlm::TLM_OK_RESPONSE);
         CHECK(driver->transport(tlm::TLM_READ_COMMAND, 0x200, bytes, 4, 0) == tlm::TLM_OK_RESPONSE);
       }
+      CHECK(value == 0x12345678);
+      CHECK(driver->transport(tlm::TLM_WRITE_COMMAND, 0x1000, bytes, 4, 0) == tlm::TLM_OK_RESPONSE);
+      value = 0;
+      CHECK(driver->transport(tlm::TLM_READ_COMMAND, 0x1000, bytes, 4, 0) == tlm::TLM_OK_RESPONSE);
       CHECK(value == 0x12345678);
     }
   });
