@@ -30,7 +30,8 @@ class AccessPieces {
   bool done() const { return at_ == length_; }
   // Makes the payload the next one, with its address at the target, not answered yet. REQUIRES: !done().
   void next(tlm::tlm_generic_payload& piece);
-  // Of the last next(): the address at the target.
+  // Of the last next(); the address is the target's.
+  bool is_write() const { return command_ == tlm::TLM_WRITE_COMMAND; }
   std::uint64_t address() const { return piece_address_; }
   unsigned length() const { return piece_length_; }
 

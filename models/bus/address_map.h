@@ -20,7 +20,8 @@ struct Window {
   std::uint64_t target_base = 0; // the address the target sees for `base`
   // Bytes the target takes in one access, a power of two from 1 to 256; 0: any number. What is longer (a fill, a
   // write-back, a write-through, an uncached access) is sent to it in several accesses, one after another in address
-  // order; the first that it refuses is the answer to all, and nothing of it is cached.
+  // order; the first that it refuses is the answer to all, and nothing of it is cached. (A target that refuses whatever ends
+  // at its last byte refuses its last line so or so: end the cached window before that line.)
   unsigned max_burst = 0;
   // The target never sets a response status (leaves TLM_INCOMPLETE_RESPONSE), and means that all went well. Without
   // this such an answer is an error to whoever asked.

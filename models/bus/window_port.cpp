@@ -187,7 +187,7 @@ void WindowPort::judge(tlm::tlm_generic_payload& payload, const AccessPieces& pi
   if (short_of_data && payload.is_response_ok()) payload.set_response_status(tlm::TLM_BURST_ERROR_RESPONSE);
   if (payload.is_response_ok() || (!window_.cached && !short_of_data)) return;
   std::ostringstream text;
-  text << "does not do a " << (payload.is_write() ? "write" : "read") << " of " << piece.length() << " bytes at 0x"
+  text << "does not do a " << (piece.is_write() ? "write" : "read") << " of " << piece.length() << " bytes at 0x"
        << std::hex << piece.address() << std::dec << ", its address (" << payload.get_response_string()
        << "): an error to whoever asked; if it takes fewer bytes at a time, set Window::max_burst";
   warn_once(warned_refusal_, text.str());

@@ -67,6 +67,7 @@ class Awkward : public sc_core::sc_module, private tlm::tlm_fw_transport_if<> {
                         : std::vector<std::uint8_t>(enable, enable + payload.get_byte_enable_length()),
                     payload.get_response_status() == tlm::TLM_INCOMPLETE_RESPONSE});
     if (refuses(payload)) {
+      if (overwrites) overwrite(payload);
       payload.set_response_status(tlm::TLM_BURST_ERROR_RESPONSE);
       return;
     }

@@ -66,6 +66,7 @@ TEST_CASE("the first piece that a target refuses is the answer, the window is na
   Beds beds("msi", 8);
   beds.each([](Bed& bed) {
     bed.ram.refuses = [](const Payload& payload) { return payload.get_address() == 0x50; };
+    bed.ram.overwrites = true;
     bed.read(0x40);
     CHECK(bed.cpu.status == tlm::TLM_BURST_ERROR_RESPONSE);
     CHECK(bed.ram.places() == "0x40+8 0x48+8 0x50+8");
