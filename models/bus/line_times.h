@@ -19,24 +19,23 @@ class LineTimes {
  public:
   struct Line {
     Calendar under_way;
-    PresenceIndex::Mask losers = 0;       // the ports that lost their copy
-    std::array<Picoseconds, 64> lost_at;  // for each of them, the grant that took it
+    PresenceIndex::Mask losers = 0;  // the ports that lost their copy to one transaction, the last that took any,
+    Picoseconds lost_at = 0;         // and its grant
 
     void lose(PresenceIndex::Mask ports, Picoseconds grant) {
-      losers |= ports;
-      for (; ports != 0; ports &= ports - 1) lost_at[static_cast<std::size_t>(__builtin_ctzll(ports))] = grant;
+      if (ports == 0) return;
+      losers = ports;
+      lost_at = grant;
     }
     void gain(int port) { losers &= ~(PresenceIndex::Mask{1} << port); }
-    bool still_had_it(int port, Picoseconds time) const {
-      return (losers >> port & 1) != 0 && time < lost_at[static_cast<std::size_t>(port)];
-    }
+    bool still_had_it(int port, Picoseconds time) const { return (losers >> port & 1) != 0 && time < lost_at; }
   };
 
   Line& of(std::uint64_t line) {
     Place& place = places_[place_of(line)];
     if (place.line == line) return place;
     place.line = line;
-    place.under_way = Calendar();
+    place.under_way.clear();
     place.losers = 0;
     return place;
   }

@@ -27,6 +27,13 @@ class Calendar {
   // Marks [start, end) as busy, whatever of it is busy already: a booking whose end was not known at its start.
   void occupy(Picoseconds start, Picoseconds end);
 
+  // Forgets every booking, but not the room for them.
+  void clear() {
+    busy_.clear();
+    first_ = 0;
+    busy_time_ = last_end_ = 0;
+  }
+
   // No request will ever be ready before `time`: what ends at or before it may be forgotten.
   void forget_before(Picoseconds time) {
     while (first_ < busy_.size() && busy_[first_].end <= time) ++first_;
