@@ -39,10 +39,10 @@ void check_lost_copy(const std::string& protocol) {
 
 }  // namespace
 
-TEST_CASE("a write whose copy was lost before its grant counts as the miss that it became: msi", "[cache]") {
+TEST_CASE("a write that lost its copy before its grant counts as a miss, msi", "[cache]") {
   check_lost_copy("msi");
 }
-TEST_CASE("a write whose copy was lost before its grant counts as the miss that it became: moesi", "[cache]") {
+TEST_CASE("a write that lost its copy before its grant counts as a miss, moesi", "[cache]") {
   check_lost_copy("moesi");
 }
 

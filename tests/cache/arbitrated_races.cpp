@@ -96,7 +96,7 @@ TEST_CASE("an owner's upgrade that loses the line becomes a read-exclusive too",
   });
 }
 
-TEST_CASE("a write-through whose copy is lost before its grant becomes a read-exclusive: write-once",
+TEST_CASE("a write-through whose copy is lost before its grant turns into a read-exclusive, write-once",
           "[cache]") {
   Bench bench(load_table("write-once"));
   simulate([&] {

@@ -255,7 +255,7 @@ TEST_CASE("Patterson and Hennessy's processor with CPI 2 has 5.44 with its misse
 TEST_CASE("CPI 1.5, 2 % and 5 % misses, 20 % loads and stores, penalty 100: CPI 4.5", "[outside]") {
   check(Instructions{20, 200, 10, 1000, 1000, 100, 1.5, 4.5});
 }
-TEST_CASE("CPI 1.4, 1 % and 3 % misses, 30 % loads and stores, penalty 50 ns at 2.5 GHz: CPI 3.775",
+TEST_CASE("CPI 1.4, 1 % and 3 % misses, 30 % loads and stores, penalty 50 ns at 2.5 GHz give CPI 3.775",
           "[outside]") {
   check(Instructions{10, 300, 9, 1000, 400, 125, 1.4, 3.775});
 }
